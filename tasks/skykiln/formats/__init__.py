@@ -1,0 +1,1 @@
+"""Bytes <-> arrays: one module per container or pixel coding."""

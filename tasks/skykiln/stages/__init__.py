@@ -1,0 +1,1 @@
+"""The Luigi tasks of a bake."""
