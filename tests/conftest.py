@@ -1,6 +1,5 @@
 """Shared pytest set-up: the `--long` switch for the full counts."""
 
-import pytest
 
 
 def pytest_addoption(parser):
