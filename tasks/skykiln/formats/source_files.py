@@ -1,0 +1,74 @@
+"""Which reader a source file goes to: decided by its first bytes, never by its suffix."""
+
+import stat
+from pathlib import Path
+
+from skykiln.errors import FileError
+from skykiln.formats.image import MAX_PIXELS, Image
+from skykiln.formats.openexr import read_openexr
+from skykiln.formats.radiance_hdr import read_radiance_hdr
+
+
+def _read_radiance(path: Path, max_pixels: int) -> Image:
+    # Run lengths can at most double a pixel's four bytes.
+    if path.stat().st_size > 8 * max_pixels + (1 << 20):
+        raise FileError(f"{path}: larger than any picture of {max_pixels} pixels; scale the picture down")
+    return read_radiance_hdr(path.read_bytes(), str(path), max_pixels)
+
+
+READERS = {
+    b"\x76\x2f\x31\x01": read_openexr,  # OpenEXR, "OpenEXR File Layout": magic number
+    b"#?": _read_radiance,  # Radiance, "Picture File Format": first line of the header
+}
+
+# Pictures that people do try, so that the message can say more than 'unknown'.
+_REFUSED = {
+    b"\x89PNG": "a PNG picture",
+    b"\xff\xd8\xff": "a JPEG picture",
+    b"II*\0": "a TIFF picture",
+    b"MM\0*": "a TIFF picture",
+    b"PF\n": "a PFM picture",
+    b"\xabKTX": "a KTX texture",
+    b"DDS ": "a DDS texture",
+    b"ENVI": "an ENVI remote-sensing header",
+}
+
+
+def read_source(path: Path, max_pixels: int = MAX_PIXELS) -> Image:
+    """Read a source picture of any known format.
+
+    Raises: FileError naming the file, what is wrong with it and what to do.
+    """
+    _check_kind(path)
+    try:
+        with path.open("rb") as file:
+            start = file.read(16)
+        return _reader(path, start)(path, max_pixels)
+    except OSError as error:
+        raise FileError(f"{path}: can't be read ({error.strerror}); check the file and its rights") from error
+    except MemoryError as error:
+        raise FileError(f"{path}: not enough memory to read it; scale the picture down") from error
+
+
+def _check_kind(path: Path) -> None:
+    """Stat before opening: opening a FIFO would wait for ever."""
+    try:
+        status = path.stat()
+    except OSError as error:
+        if path.is_symlink():
+            raise FileError(f"{path}: a link that leads nowhere; mend or remove it") from error
+        raise FileError(f"{path}: {error.strerror}; check the path in the pipeline file") from error
+    if stat.S_ISDIR(status.st_mode):
+        raise FileError(f"{path}: a directory; name one picture file")
+    if not stat.S_ISREG(status.st_mode):
+        raise FileError(f"{path}: a pipe, socket or device, not a file; copy the picture into a file")
+    if status.st_size == 0:
+        raise FileError(f"{path}: the file is empty; export it again")
+
+
+def _reader(path: Path, start: bytes):
+    for magic, reader in READERS.items():
+        if start.startswith(magic):
+            return reader
+    found = next((what for magic, what in _REFUSED.items() if start.startswith(magic)), "neither")
+    raise FileError(f"{path}: {found}, where OpenEXR or Radiance .hdr is read; convert it to one of them")
