@@ -1,0 +1,239 @@
+"""What pipeline.yaml may hold, as pydantic models: their JSON Schema is what editors complete from.
+
+A value that is not listed here is an error. Descriptions are written for the person who types the file.
+"""
+
+import math
+from typing import Annotated, Any, Literal
+
+from pydantic import (
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    PlainValidator,
+    StringConstraints,
+    WithJsonSchema,
+)
+from pydantic_core import PydanticCustomError
+
+CubeAxes = Literal["negate_x", "negate_z", "direct"]
+FaceSize = Literal["auto", 1, 2, 4, 8, 16, 32, 64, 128, 256, 512, 1024, 2048, 4096]
+SmallFaceSize = Literal[1, 2, 4, 8, 16, 32, 64, 128, 256]
+
+ROUGHNESS_SCHEMA = {
+    "anyOf": [
+        {"const": "linear"},
+        {"type": "array", "items": {"type": "number", "minimum": 0, "maximum": 1}, "minItems": 1},
+    ]
+}
+
+
+def _whole(value):
+    """The value, unless it is a boolean or a float, which Python takes for equal to 0 or 1."""
+    if isinstance(value, bool | float):
+        raise PydanticCustomError("not_whole", "not a whole number")
+    return value
+
+
+def _roughness(value):
+    """`linear` or a list of numbers; whether they rise is judged beside the number of levels."""
+    if value == "linear":
+        return value
+    numbers = isinstance(value, list) and all(type(item) in (int, float) for item in value)
+    if not numbers or not value:
+        raise PydanticCustomError("roughness", "neither 'linear' nor a list of numbers")
+    return [float(item) for item in value]
+
+
+def _finite(value):
+    """The value, unless a number anywhere in it has no JSON form."""
+    if isinstance(value, float) and not math.isfinite(value):
+        raise PydanticCustomError("no_json", "holds a number that is not finite; JSON has no such value")
+    children = value.values() if isinstance(value, dict) else value if isinstance(value, list) else ()
+    for child in children:
+        _finite(child)
+    return value
+
+
+Roughness = Annotated[Any, PlainValidator(_roughness), WithJsonSchema(ROUGHNESS_SCHEMA)]
+Extra = Annotated[dict[str, Any], BeforeValidator(_finite)]
+Path = Annotated[str, StringConstraints(min_length=1)]
+
+
+class Section(BaseModel):
+    model_config = ConfigDict(
+        extra="forbid", frozen=True, strict=True, allow_inf_nan=False, use_attribute_docstrings=False
+    )
+
+
+class Colour(Section):
+    """Colour of the baked values."""
+
+    working: Literal["rec709"] = Field("rec709", description="Primaries that the light is baked in.")
+
+
+class Sun(Section):
+    """What becomes of the sun."""
+
+    action: Literal["keep"] = Field("keep", description="keep: the sun stays in the sky.")
+
+
+class Specular(Section):
+    """The chain of GGX-filtered mip levels."""
+
+    levels: int = Field(
+        8, ge=1, le=13, description="Number of mip levels; level 0 is the unfiltered mirror."
+    )
+    roughness: Roughness = Field(
+        "linear",
+        description="Roughness of each level: linear (level k of n has k/(n-1)), or a list with one "
+        "number per level that starts with 0 and rises to at most 1.",
+    )
+    tolerance: float = Field(
+        0.005,
+        gt=0.0001,
+        lt=0.5,
+        description="Largest relative error of a texel against exact quadrature over the source.",
+    )
+
+
+class Irradiance(Section):
+    """Diffuse light: a small cube of irradiance and its spherical harmonics."""
+
+    face_size: Annotated[SmallFaceSize, BeforeValidator(_whole)] = Field(
+        32, description="Edge of a face of the irradiance cube in texels."
+    )
+    sh_order: Annotated[Literal[2], BeforeValidator(_whole)] = Field(
+        2, description="Order of the spherical harmonics in probe.json; 2 gives nine rows."
+    )
+    pixels: Literal["rgba16f"] = Field("rgba16f", description="Pixel coding of the irradiance cube.")
+
+
+class PackEntry(Section):
+    """One pair of container and pixel coding that a probe is packed to."""
+
+    container: Literal["ktx2"] = Field(description="Texture container.")
+    pixels: Literal["rgba16f"] = Field(description="Pixel coding of the specular chain.")
+    cube_axes: CubeAxes | None = Field(
+        None, description="Overrides the cube_axes at the top of the file for this pack; null does not."
+    )
+    name: Annotated[str, StringConstraints(pattern=r"^[A-Za-z0-9_-]{1,64}$")] | None = Field(
+        None,
+        description="Takes the place of <pixels> in the file name specular.<pixels>.<container>; "
+        "needed when a recipe lists the same pair twice. Letters, digits, _ and -.",
+    )
+
+
+class Recipe(Section):
+    """A named set of parameters that sources are baked with."""
+
+    face_size: Annotated[FaceSize, BeforeValidator(_whole)] = Field(
+        "auto",
+        description="Edge of a face of level 0 in texels, a power of two; "
+        "auto: the largest power of two that is at most a quarter of the panorama's width.",
+    )
+    colour: Colour = Field(Colour(), description="Colour of the baked values.")
+    sun: Sun = Field(Sun(), description="What becomes of the sun.")
+    specular: Specular = Field(Specular(), description="The chain of GGX-filtered mip levels.")
+    irradiance: Irradiance = Field(Irradiance(), description="Diffuse light.")
+    pack: list[PackEntry] = Field(
+        [PackEntry(container="ktx2", pixels="rgba16f")],
+        min_length=1,
+        description="What files a probe is packed to, one entry each.",
+    )
+
+
+class SourceSettings(Section):
+    """What may be said about a source besides where it lies."""
+
+    layout: Literal["auto", "equirect"] = Field(
+        "auto", description="How the image covers the sphere; auto: as the file says, else equirect."
+    )
+    yaw_deg: float = Field(
+        0.0, ge=-360, le=360, description="Turn about the vertical; positive takes +z towards +x."
+    )
+    exposure_ev: float = Field(
+        0.0, ge=-32, le=32, description="Stops by which the source is brightened."
+    )
+    horizontal_lux: Annotated[float, Field(gt=0, le=1e7)] | None = Field(
+        None,
+        description="Measured illuminance on a level surface in lux: the source is scaled to it, "
+        "its values are then cd/m2. null: the source stays relative.",
+    )
+    extra: Extra = Field(
+        {}, description="Copied unread into probe.json: position, influence box, whatever you need."
+    )
+
+
+class FileSource(SourceSettings):
+    """One file: one probe, named as the entry."""
+
+    file: Path = Field(description="The image file; relative to the pipeline file.")
+    recipe: str = Field(description="Name of the recipe that bakes it.")
+
+
+class EachOverride(SourceSettings):
+    """Settings of one file of a glob that differ from those of its entry."""
+
+    recipe: str | None = Field(None, description="Another recipe for this file; null: the entry's.")
+
+
+class GlobSource(SourceSettings):
+    """Many files: one probe each, named <entry>/<path below the glob's fixed part, without suffix>."""
+
+    files: Path = Field(
+        description="Glob of image files, ** crosses folders; relative to the pipeline file. "
+        "Files below build_dir are never taken."
+    )
+    recipe: str = Field(description="Name of the recipe that bakes them.")
+    each: dict[str, EachOverride] = Field(
+        {},
+        description="Settings of single files by their path below the glob's fixed part, without suffix. "
+        "Keys of extra are laid over the entry's.",
+    )
+
+
+class Brdf(Section):
+    """The BRDF table."""
+
+    size: int = Field(128, ge=4, le=1024, description="Edge of the BRDF table in texels.")
+
+
+class Gates(Section):
+    """Limits; a probe that crosses one is held."""
+
+
+class PipelineHead(Section):
+    """The pipeline file without its recipes and sources."""
+
+    skykiln: Annotated[Literal[1], BeforeValidator(_whole)] = Field(
+        description="Version of this schema: 1."
+    )
+    build_dir: Path = Field(
+        "build", description="Folder for all that a bake leaves; relative to the pipeline file."
+    )
+    cube_axes: CubeAxes = Field(
+        "negate_x",
+        description="How a renderer samples the packed cubes: negate_x with (-x, y, z), "
+        "negate_z with (x, y, -z), direct with (x, y, z) and face images mirrored.",
+    )
+    brdf: Brdf = Field(Brdf(), description="The BRDF table, shared by all probes.")
+    gates: Gates = Field(Gates(), description="Limits; a probe that crosses one is held.")
+
+
+class PipelineFile(PipelineHead):
+    """skykiln's pipeline file: what is baked, from which sources, to which files."""
+
+    recipes: dict[str, Recipe] = Field(
+        min_length=1, description="Named sets of parameters that sources are baked with."
+    )
+    sources: dict[str, FileSource | GlobSource] = Field(
+        min_length=1, description="What is baked: the name of a probe, or of a group of them, and its entry."
+    )
+
+
+def pipeline_schema() -> dict:
+    """JSON Schema (draft 2020-12) of the pipeline file."""
+    schema = PipelineFile.model_json_schema()
+    return {"$schema": "https://json-schema.org/draft/2020-12/schema", **schema}
