@@ -103,4 +103,4 @@ def test_mended_values_lie_between_the_valid_ones(pixels):
     for channel in range(3):
         known = pixels[..., channel][valid[..., channel]]
         assert mended[..., channel].min() >= known.min()
-        assert mended[..., channel].max() <= known.max() * (1 + 1e-6)
+        assert mended[..., channel].max() <= float(known.max()) * (1 + 1e-6)
