@@ -1,0 +1,35 @@
+"""Half floats (IEEE 754 binary16): four channels with an alpha of 1, or two."""
+
+import numpy as np
+
+LARGEST = 65504.0
+
+
+def nearest_half(values) -> np.ndarray:
+    """float32 -> little-endian float16, rounded to nearest even; never NaN, negative or infinite."""
+    # fmax takes the number where the other is NaN; adding 0 turns -0 into 0. NumPy rounds to nearest
+    # even, but makes infinity of what is too large, so that is cut off before.
+    return (np.fmin(np.fmax(values, np.float32(0)), np.float32(LARGEST)) + np.float32(0)).astype("<f2")
+
+
+def encode_rgba(colours) -> np.ndarray:
+    """(..., 3) float32 -> (..., 4) float16 with alpha 1.0."""
+    texels = np.ones((*colours.shape[:-1], 4), "<f2")
+    texels[..., :3] = nearest_half(colours)
+    return texels
+
+
+def decode_rgba(blocks: bytes, shape) -> np.ndarray:
+    """Bytes of texels -> (*shape, 3) float32; alpha is left out."""
+    texels = np.frombuffer(blocks, "<f2").reshape(*shape, 4)
+    return texels[..., :3].astype(np.float32)
+
+
+def encode_rg(values) -> np.ndarray:
+    """(..., 2) float32 -> (..., 2) float16."""
+    return nearest_half(values)
+
+
+def decode_rg(blocks: bytes, shape) -> np.ndarray:
+    """Bytes of texels -> (*shape, 2) float32."""
+    return np.frombuffer(blocks, "<f2").reshape(*shape, 2).astype(np.float32)

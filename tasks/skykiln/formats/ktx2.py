@@ -1,0 +1,89 @@
+"""KTX2 textures: cube maps with mip levels, and 2-D tables (Khronos KTX 2.0 specification)."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from skykiln.errors import FileError
+from skykiln.formats.dfd import write_dfd
+from skykiln.formats.key_values import read_key_values, write_key_values
+from skykiln.formats.ktx2_layout import (
+    Header,
+    LevelPlace,
+    coding_name,
+    index_end,
+    level_alignment,
+    level_size,
+    place_levels,
+    read_header,
+    read_index,
+    write_header,
+    write_index,
+)
+from skykiln.formats.ktx2_rules import broken_ktx2_rules
+from skykiln.formats.pixels import PIXELS
+
+
+@dataclass(frozen=True, eq=False)
+class Ktx2Texture:
+    """A cube map (six faces) or a 2-D table (one face).
+
+    pixels : a coding of `pixels.PIXELS`
+    levels : one (faces, height, width, channels) float32 per mip level, the largest first; level p is
+        max(1, size >> p) wide. Faces in the order +X -X +Y -Y +Z -Z of cube space, row 0 is t = 0.
+    metadata : keys and values, text or bytes. KTXorientation is the writer's own and need not be given.
+    """
+
+    pixels: str
+    levels: tuple[np.ndarray, ...]
+    metadata: Mapping[str, str | bytes] = field(default_factory=dict)
+
+
+def write_ktx2(texture: Ktx2Texture) -> bytes:
+    """The file's bytes: the same for the same texture, always."""
+    coding = PIXELS[texture.pixels]
+    faces, height, width, _ = _check_shapes(texture.levels, coding.channels)
+    levels = [coding.encode(level).tobytes() for level in texture.levels]
+    dfd = write_dfd(coding)
+    pairs = write_key_values({**texture.metadata, "KTXorientation": "rd"})
+    start = index_end(len(levels))
+    header = Header(
+        coding.vk_format, coding.type_size, width, height, 0, 0, faces, len(levels), 0,
+        start, len(dfd), start + len(dfd), len(pairs), 0, 0,
+    )  # fmt: skip
+    lengths = [len(level) for level in levels]
+    offsets = place_levels(start + len(dfd) + len(pairs), lengths, level_alignment(coding))
+    index = [LevelPlace(o, n, n) for o, n in zip(offsets, lengths, strict=True)]
+    out = bytearray(write_header(header) + write_index(index) + dfd + pairs)
+    for offset, level in zip(offsets[::-1], levels[::-1], strict=True):
+        out += bytes(offset - len(out)) + level
+    return bytes(out)
+
+
+def read_ktx2(data: bytes, name: str) -> Ktx2Texture:
+    """Read a texture of one of our codings; nothing is allocated beyond what the file's size bears out.
+
+    Raises: FileError with the file's name and the first rule that is broken.
+    """
+    for rule in broken_ktx2_rules(data):
+        raise FileError(f"{name}: not a sound KTX2 texture: {rule}; bake it again")
+    header = read_header(data)
+    pixels = coding_name(header.vkFormat)
+    levels = []
+    for level, place in enumerate(read_index(data, header.levelCount)):
+        width, height = level_size(header.pixelWidth, header.pixelHeight, level)
+        blocks = data[place.byteOffset : place.byteOffset + place.byteLength]
+        levels.append(PIXELS[pixels].decode(blocks, (header.faceCount, height, width)))
+    pairs = data[header.kvdByteOffset : header.kvdByteOffset + header.kvdByteLength]
+    return Ktx2Texture(pixels, tuple(levels), read_key_values(pairs))
+
+
+def _check_shapes(levels, channels: int) -> tuple[int, int, int, int]:
+    """The base level's shape; raises ValueError where the levels are no chain of mip levels."""
+    faces, height, width, _ = base = levels[0].shape
+    for p, level in enumerate(levels):
+        expected = (faces, *level_size(width, height, p)[::-1], channels)
+        if level.shape != expected:
+            raise ValueError(f"level {p} has the shape {level.shape}, not {expected}")
+    return base

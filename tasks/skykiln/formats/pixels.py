@@ -1,0 +1,68 @@
+"""Pixel codings by name: what one block of a texture is in memory, and how it is told to a loader.
+
+Every encoder takes radiance as float32 and keeps what it can: NaN and negative values become 0, too
+large ones the coding's largest finite value, all others are rounded to nearest. The sources are the
+Khronos Data Format specification 1.4 ("KDF") and the Vulkan format list.
+"""
+
+from collections.abc import Callable
+from typing import NamedTuple
+
+from skykiln.formats import half
+
+MODEL_RGBSDA = 1  # KDF 5.6, KHR_DF_MODEL_RGBSDA
+_RED, _GREEN, _BLUE, _ALPHA = 0, 1, 2, 15  # KDF, channels of RGBSDA
+_SIGNED_FLOAT = 0xC0  # KDF 5.15, qualifiers FLOAT | SIGNED
+_ONE, _MINUS_ONE = 0x3F800000, 0xBF800000  # float32 bits
+
+
+class Sample(NamedTuple):
+    """One sample of a data format descriptor, as its bytes are (KDF 5.12 - 5.17)."""
+
+    bit_offset: int
+    bit_length: int  # minus one
+    channel: int  # channel id and qualifiers
+    lower: int
+    upper: int
+
+
+class Coding(NamedTuple):
+    """A pixel coding.
+
+    encode : (..., h, w, channels) float32 -> array whose bytes are the blocks, row by row
+    decode : (blocks: bytes, shape (..., h, w)) -> (..., h, w, channels) float32
+    """
+
+    channels: int
+    block_side: int  # texels
+    block_bytes: int
+    type_size: int  # of KTX2's header
+    vk_format: int
+    model: int
+    samples: tuple[Sample, ...]
+    encode: Callable
+    decode: Callable
+
+    def level_bytes(self, faces: int, height: int, width: int) -> int:
+        """Bytes of one mip level of `faces` faces: partial blocks are stored whole."""
+        side = self.block_side
+        return faces * -(-height // side) * -(-width // side) * self.block_bytes
+
+
+def _half_samples(*channels):
+    return tuple(
+        Sample(16 * i, 15, _SIGNED_FLOAT | channel, _MINUS_ONE, _ONE) for i, channel in enumerate(channels)
+    )
+
+
+PIXELS = {
+    "rgba16f": Coding(
+        channels=3, block_side=1, block_bytes=8, type_size=2, vk_format=97, model=MODEL_RGBSDA,
+        samples=_half_samples(_RED, _GREEN, _BLUE, _ALPHA),
+        encode=half.encode_rgba, decode=half.decode_rgba,
+    ),
+    "rg16f": Coding(
+        channels=2, block_side=1, block_bytes=4, type_size=2, vk_format=83, model=MODEL_RGBSDA,
+        samples=_half_samples(_RED, _GREEN), encode=half.encode_rg, decode=half.decode_rg,
+    ),
+}  # fmt: skip

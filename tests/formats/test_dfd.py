@@ -1,0 +1,42 @@
+"""Data format descriptors, byte for byte as the Khronos Data Format specification 1.4 has them."""
+
+import pytest
+
+from skykiln.formats.dfd import broken_dfd_rules, write_dfd
+from skykiln.formats.pixels import PIXELS
+
+# Total size; vendor and type 0; version 2, block size; model, BT.709, linear, flags; block dimensions
+# minus one; bytes of plane 0 and of the seven others. KDF 1.4, chapters 4 and 5.
+# Samples: bit offset, bit length minus one, channel and qualifiers, position, lower, upper.
+KNOWN = {
+    "rgba16f": """
+        5c000000 00000000 0200 5800 01 01 01 00 00000000 08 00000000000000
+        0000 0f c0 00000000 000080bf 0000803f
+        1000 0f c1 00000000 000080bf 0000803f
+        2000 0f c2 00000000 000080bf 0000803f
+        3000 0f cf 00000000 000080bf 0000803f""",
+    "rg16f": """
+        3c000000 00000000 0200 3800 01 01 01 00 00000000 04 00000000000000
+        0000 0f c0 00000000 000080bf 0000803f
+        1000 0f c1 00000000 000080bf 0000803f""",
+}
+
+
+@pytest.mark.parametrize("name", PIXELS)
+def test_descriptor_has_these_bytes(name):
+    assert write_dfd(PIXELS[name]).hex() == "".join(KNOWN[name].split())
+
+
+@pytest.mark.parametrize("name", PIXELS)
+def test_every_change_of_a_byte_is_named(name):
+    data = write_dfd(PIXELS[name])
+    assert list(broken_dfd_rules(data, PIXELS[name])) == []
+    for i in range(len(data)):
+        changed = data[:i] + bytes([data[i] ^ 1]) + data[i + 1 :]
+        assert len(list(broken_dfd_rules(changed, PIXELS[name]))) == 1
+
+
+def test_field_is_named_with_its_bytes():
+    data = bytearray(write_dfd(PIXELS["rg16f"]))
+    data[14] = 2  # transfer function: sRGB
+    assert list(broken_dfd_rules(bytes(data), PIXELS["rg16f"])) == ["DFD transferFunction is 02, not 01"]
