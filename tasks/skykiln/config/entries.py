@@ -31,7 +31,10 @@ def valid_sources(entries, recipe_names, report):
         source = _source(entry, path, report)
         if source is not None:
             sources[name] = source
-            _check_recipe_names(source, path, recipe_names, report)
+        for steps, recipe in _asked_recipes(entry):
+            if isinstance(recipe, str) and recipe not in recipe_names:
+                text = f"no recipe is called {shown(recipe)}; {nearest(recipe, recipe_names)}"
+                report((*path, *steps), text)
     return sources
 
 
@@ -95,11 +98,12 @@ def _source(entry, path, report):
     return _judged(GlobSource if globbed else FileSource, entry, path, report)[0]
 
 
-def _check_recipe_names(source, path, known, report):
-    asked = {("recipe",): source.recipe}
-    for short, changes in getattr(source, "each", {}).items():
-        if changes.recipe is not None:
-            asked["each", short, "recipe"] = changes.recipe
-    for steps, name in asked.items():
-        if name not in known:
-            report((*path, *steps), f"no recipe is called {shown(name)}; {nearest(name, known)}")
+def _asked_recipes(entry):
+    """(steps, value) of every `recipe` of an entry, which may be wrong in other ways."""
+    if not isinstance(entry, dict):
+        return
+    yield ("recipe",), entry.get("recipe")
+    each = entry.get("each")
+    for short, changes in each.items() if isinstance(each, dict) else ():
+        if isinstance(changes, dict):
+            yield ("each", short, "recipe"), changes.get("recipe")

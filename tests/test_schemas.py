@@ -1,0 +1,186 @@
+"""The shipped JSON Schemas: valid, described throughout, equal to what the models say, strict."""
+
+import copy
+import json
+
+import jsonschema
+import pytest
+import yaml
+
+from skykiln.config import pipeline_schema
+from skykiln.schemas import NAMES, shipped_schema
+
+DIGEST = "0123456789abcdef" * 4
+RGB = [1.0, 0.5, 0.25]
+PACKED = {
+    "file": "specular.rgba16f.ktx2",
+    "container": "ktx2",
+    "pixels": "rgba16f",
+    "cube_axes": "negate_x",
+    "bytes": 1000,
+    "digest": DIGEST,
+}
+PROBE = {
+    "schema": 1,
+    "name": "concourse/stair_02",
+    "source": {
+        "file": "sample_assets/concourse/stair_02.exr",
+        "digest": DIGEST,
+        "layout": "equirect",
+        "width": 256,
+        "height": 128,
+        "header": {"format": "openexr", "pixel_type": "half"},
+        "repaired": {"nan": 0, "inf": 0, "negative": 2},
+        "yaw_deg": 0.0,
+        "scale": 1.0,
+    },
+    "recipe": "interior",
+    "extra": {"position": [1, 2, 3]},
+    "cube_axes": "negate_x",
+    "units": "relative",
+    "storage_ev": 0,
+    "specular": {
+        "levels": [
+            {"level": 0, "roughness": 0.0, "face_size": 64},
+            {"level": 1, "roughness": 1.0, "face_size": 32},
+        ],
+        "files": [PACKED],
+    },
+    "irradiance": {
+        "face_size": 32,
+        "files": [{**PACKED, "file": "irradiance.rgba16f.ktx2"}],
+        "sh": [RGB] * 9,
+        "sh_smallest": -0.01,
+    },
+    "sun": None,
+    "energy": {
+        "mean_radiance": RGB,
+        "level_irradiance": RGB,
+        "horizontal_illuminance": 2.0,
+        "lost_to_clamping": 0.0,
+    },
+    "audit": None,
+}
+BRDF = {
+    "schema": 1,
+    "size": 4,
+    "file": "brdf.rg16f.ktx2",
+    "container": "ktx2",
+    "pixels": "rg16f",
+    "bytes": 300,
+    "digest": DIGEST,
+    "directional_albedo": [[1.0, 1.0, 1.0, 1.0]] * 4,
+    "average_albedo": [1.0, 0.9, 0.7, 0.5],
+}
+STAGE = {"stage": "specular level 3", "reason": "roughness was 0.4286, is 0.4", "seconds": 0.2}
+NIGHT = {
+    "schema": 1,
+    "skykiln": "0.1.0",
+    "started": "2031-05-01T02:00:00+02:00",
+    "seconds": 12.5,
+    "exit_status": 1,
+    "totals": {"probes": 3, "rebuilt": 1, "unchanged": 1, "failed": 1},
+    "stages_run": 1,
+    "probes": [
+        {"name": "ferry_noon", "state": "rebuilt", "stages": [STAGE], "failure": None},
+        {"name": "night_quay", "state": "unchanged", "stages": [], "failure": None},
+        {
+            "name": "overcast_quay",
+            "state": "failed",
+            "stages": [],
+            "failure": {"file": "overcast_quay.exr", "stage": "DecodeSource", "cause": "the file ends early"},
+        },
+    ],
+}
+PIPELINE = yaml.safe_load("""
+skykiln: 1
+brdf: {size: 128}
+recipes: {plain: {face_size: 64, specular: {levels: 3, roughness: [0, 0.5, 1]}}}
+sources:
+  sky: {file: sky.exr, recipe: plain, horizontal_lux: null}
+  rooms: {files: "*.exr", recipe: plain, each: {a: {exposure_ev: 1}}}
+gates: {}
+""")
+EXAMPLES = {"pipeline": PIPELINE, "probe": PROBE, "brdf": BRDF, "night": NIGHT}
+
+MISTAKES = [
+    ("pipeline", ("skykiln",), 2),
+    ("pipeline", ("recipes", "plain", "face_size"), 65),
+    ("pipeline", ("recipes", "plain", "specular", "level"), 3),
+    ("pipeline", ("recipes", "plain", "specular", "roughness"), "steep"),
+    ("pipeline", ("sources", "sky", "files"), "*.exr"),
+    ("pipeline", ("gates", "audit"), 1),
+    ("probe", ("schema",), 2),
+    ("probe", ("name",), "/etc"),
+    ("probe", ("source", "digest"), "0123"),
+    ("probe", ("source", "repaired", "negative"), -1),
+    ("probe", ("storage_ev",), 0.5),
+    ("probe", ("units",), "nits"),
+    ("probe", ("specular", "levels"), []),
+    ("probe", ("specular", "levels", 0, "roughness"), 1.5),
+    ("probe", ("specular", "files", 0, "file"), "../specular.rgba16f.ktx2"),
+    ("probe", ("irradiance", "sh"), [RGB] * 8),
+    ("probe", ("irradiance", "sh", 0), [1.0, 2.0]),
+    ("probe", ("energy", "mean_radiance"), [-1.0, 0.0, 0.0]),
+    ("probe", ("surprise",), 1),
+    ("brdf", ("pixels",), "rgba16f"),
+    ("brdf", ("directional_albedo", 0), [2.0] * 4),
+    ("night", ("exit_status",), 2),
+    ("night", ("started",), "yesterday"),
+    ("night", ("probes", 0, "failure"), NIGHT["probes"][2]["failure"]),
+    ("night", ("probes", 0, "stages"), []),
+    ("night", ("probes", 1, "stages"), [STAGE]),
+    ("night", ("probes", 2, "failure"), None),
+    ("night", ("probes", 0, "stages", 0, "seconds"), -1),
+]
+
+
+def checker(name):
+    return jsonschema.Draft202012Validator(shipped_schema(name))
+
+
+def test_shipped_pipeline_schema_is_the_models():
+    assert shipped_schema("pipeline") == json.loads(json.dumps(pipeline_schema()))
+
+
+@pytest.mark.parametrize("name", NAMES)
+def test_schema_is_valid_itself_and_accepts_its_example(name):
+    jsonschema.Draft202012Validator.check_schema(shipped_schema(name))
+    checker(name).validate(EXAMPLES[name])
+
+
+@pytest.mark.parametrize(("name", "path", "value"), MISTAKES)
+def test_schema_refuses_a_mistake(name, path, value):
+    example = copy.deepcopy(EXAMPLES[name])
+    parent = example
+    for step in path[:-1]:
+        parent = parent[step]
+    parent[path[-1]] = value
+    assert not checker(name).is_valid(example)
+
+
+@pytest.mark.parametrize("name", ["probe", "brdf"])
+def test_every_key_of_what_a_bake_leaves_is_needed(name):
+    for key in EXAMPLES[name]:
+        assert not checker(name).is_valid({k: v for k, v in EXAMPLES[name].items() if k != key})
+
+
+def properties(schema, whole):
+    """(name, schema) of every property anywhere in a schema."""
+    if isinstance(schema, dict):
+        found = schema.get("properties", {})
+        for key, value in found.items() if "required" in schema or "additionalProperties" in schema else ():
+            yield key, {**whole["$defs"].get(value.get("$ref", "").rpartition("/")[2], {}), **value}
+        for value in schema.values():
+            yield from properties(value, whole)
+    elif isinstance(schema, list):
+        for value in schema:
+            yield from properties(value, whole)
+
+
+@pytest.mark.parametrize("name", NAMES)
+def test_every_key_is_described(name):
+    whole = shipped_schema(name)
+    found = list(properties(whole, whole))
+    assert len(found) >= 9
+    assert [key for key, value in found if not value.get("description")] == []
