@@ -91,7 +91,8 @@ def test_json_is_read_as_an_independent_reader_reads_it(data):
 
 PIECES = [
     *("skykiln", "recipes", "sources", "a", "1", "*a", "&a ", ": ", ":\n", "\n", "  ", "- ", "[", "]"),
-    *("{", "}", ", ", "'", '"', "!t ", "!!int ", "| ", "> ", "#", "?", "<<", "---", "...", "%", "\t", "\x07", "é", "~"),
+    *("{", "}", ", ", "'", '"'),
+    *("!t ", "!!int ", "| ", "> ", "#", "?", "<<", "---", "...", "%", "\t", "\x07", "é", "~"),
     *(".nan", "1e400", "0x", "@", "`", "\\ud800"),
 ]
 TEXTS = st.lists(st.sampled_from(PIECES), max_size=30).map("".join) | st.text(max_size=60)
