@@ -175,6 +175,15 @@ def test_size_over_the_limit_is_refused_before_pixels_are_read(tmp_path):
     assert read(path, max_pixels=1152).pixels.shape == (24, 48, 3)
 
 
+def test_giant_tiles_are_refused_before_memory_is_taken_for_them(tmp_path):
+    path = write(tmp_path / "sky.exr", type=OpenEXR.tiledimage)
+    # The attribute "tiles" ("OpenEXR File Layout"): name, type, size of 9, x and y size, mode.
+    entry, giant = (b"tiles\0tiledesc\0" + struct.pack("<iII", 9, 32, high) for high in (32, 1 << 24))
+    assert path.read_bytes().count(entry) == 1
+    path.write_bytes(path.read_bytes().replace(entry, giant))
+    assert_refused(path, "tiles are far larger")
+
+
 @pytest.mark.parametrize("storage", ["scanlineimage", "tiledimage"])
 def test_every_truncation_is_an_error(tmp_path, storage, capsys):
     data = write(tmp_path / "whole.exr", type=getattr(OpenEXR, storage)).read_bytes()

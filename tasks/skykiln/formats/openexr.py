@@ -18,6 +18,8 @@ from skykiln.formats.image import Image, check_size
 
 _PIXEL_TYPES = {np.dtype("float16"), np.dtype("float32")}
 _ENVMAPS = {OpenEXR.ENVMAP_LATLONG: "latlong", OpenEXR.ENVMAP_CUBE: "cube"}
+# The package takes memory for whole tiles, so a damaged tile size is judged as the picture's is.
+_TILE_PIXELS = 1 << 20
 _WARNING = "Warning: Exception raised"
 # OpenEXR's own default, also what a file without the attribute means: ITU-R BT.709, D65.
 _REC709 = (0.64, 0.33, 0.30, 0.60, 0.15, 0.06, 0.3127, 0.3290)
@@ -48,6 +50,7 @@ class _Header(NamedTuple):
     channels: list[str]
     subsampled: bool
     storage: OpenEXR.Storage
+    tile_pixels: int  # 0 for scan lines
     compression: str
     envmap: str | None
     chromaticities: list[float] | None
@@ -71,6 +74,7 @@ def _read_header(name: str, header: dict) -> _Header:
             channels=sorted(channel.name for channel in channels),
             subsampled=any((channel.xSampling, channel.ySampling) != (1, 1) for channel in channels),
             storage=header["type"],
+            tile_pixels=header["tiles"].xSize * header["tiles"].ySize if "tiles" in header else 0,
             compression=header["compression"].name.removesuffix("_COMPRESSION").lower(),
             envmap=_ENVMAPS.get(header.get("envmap")),
             chromaticities=None if colour is None else [float(c) for c in colour],
@@ -110,6 +114,8 @@ def _open(name: str, header_only: bool):
 def _check_header(name: str, header: _Header, max_pixels: int) -> None:
     """Judge size and layout by the header alone."""
     check_size(name, header.width, header.height, max_pixels)
+    if header.tile_pixels > max(_TILE_PIXELS, header.width * header.height):
+        raise FileError(f"{name}: its tiles are far larger than the picture; export it again")
     if header.storage in (OpenEXR.deepscanline, OpenEXR.deeptile):
         raise FileError(f"{name}: a deep image; flatten it and export it again")
     if header.window != header.display:
