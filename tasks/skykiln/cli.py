@@ -1,0 +1,128 @@
+"""The command line. What a command needs is imported when it runs, so that --help is quick."""
+
+import argparse
+import json
+import sys
+
+from .errors import PipelineError, SkykilnError
+
+ALL_WELL, SOURCE_FAILED, WRONG = 0, 1, 2
+
+
+def main(arguments=None) -> int:
+    """Run a command. Returns: the exit status."""
+    options = _parser().parse_args(arguments)
+    try:
+        return options.run(options)
+    except PipelineError as error:
+        print(error, file=sys.stderr)
+        return WRONG
+    except SkykilnError as error:
+        print(error, file=sys.stderr)
+        return SOURCE_FAILED
+    except KeyboardInterrupt:
+        print("stopped; what is done is kept, bake again to go on", file=sys.stderr)
+        return 130
+    except BrokenPipeError:
+        sys.stderr.close()
+        return ALL_WELL
+
+
+def _bake(options):
+    from .stages.kernels import share_cores
+
+    share_cores(options.workers)
+    from .engine.progress import shown
+    from .stages.nights import bake
+
+    snapshot = _snapshot(options)
+    record = bake(snapshot, options.workers, options.again, options.verbose, shown)
+    _tell_night(record)
+    return record["exit_status"]
+
+
+def _tell_night(record):
+    for probe in record["probes"]:
+        if probe["failure"]:
+            print(f"probe '{probe['name']}': {probe['failure']['cause']}", file=sys.stderr)
+    totals = ", ".join(f"{count} {what}" for what, count in record["totals"].items())
+    print(f"{totals}; {record['stages_run']} stages ran in {record['seconds']:.1f} s")
+
+
+def _plan(options):
+    from .engine.chains import chain_of
+    from .engine.wording import plan_lines, plan_record
+
+    chains = [chain_of(target) for target in _snapshot(options).targets]
+    if options.json:
+        print(json.dumps({"chains": plan_record(chains)}, indent=1, ensure_ascii=False))
+    else:
+        print("\n".join(plan_lines(chains)))
+    return ALL_WELL
+
+
+def _why(options):
+    from .engine.chains import chain_of
+    from .engine.wording import why_lines
+
+    chains = [chain_of(target) for target in _snapshot(options).probes]
+    print("\n".join(why_lines(chains)))
+    return ALL_WELL
+
+
+def _schema(options):
+    from .config import pipeline_schema
+
+    print(json.dumps(pipeline_schema(), indent=1, ensure_ascii=False))
+    return ALL_WELL
+
+
+def _snapshot(options):
+    from .config import load_pipeline
+    from .stages.snapshot import Snapshot
+
+    return Snapshot(load_pipeline(options.file), options.names)
+
+
+def _parser():
+    parser = argparse.ArgumentParser(
+        prog="skykiln",
+        description="Bakes HDR skies and light probes into filtered cube maps for image-based lighting.",
+    )
+    commands = parser.add_subparsers(required=True, metavar="COMMAND")
+    bake = _command(commands, "bake", _bake, "bring probes up to date and publish them")
+    _names(bake, "*")
+    bake.add_argument("--again", action="store_true", help="run every stage, up to date or not")
+    bake.add_argument(
+        "--workers", type=_positive, default=1, metavar="N", help="processes that share the cores (1)"
+    )
+    bake.add_argument("-v", "--verbose", action="store_true", help="show what Luigi logs")
+    plan = _command(commands, "plan", _plan, "say which stages would run, and why")
+    _names(plan, "*")
+    plan.add_argument("--json", action="store_true", help="every stage and its state, as JSON")
+    why = _command(commands, "why", _why, "say why stages ran last, or would run next")
+    _names(why, "+")
+    _command(commands, "schema", _schema, "print the JSON Schema of pipeline.yaml", pipeline=False)
+    return parser
+
+
+def _command(commands, name, run, text, pipeline=True):
+    command = commands.add_parser(name, help=text, description=f"{text[0].upper()}{text[1:]}.")
+    command.set_defaults(run=run)
+    if pipeline:
+        command.add_argument(
+            "-f", "--file", default="pipeline.yaml", metavar="FILE", help="the pipeline file (pipeline.yaml)"
+        )
+    return command
+
+
+def _names(command, count):
+    text = "a probe, or a pattern such as 'concourse/*'"
+    command.add_argument("names", nargs=count, metavar="NAME", help=text)
+
+
+def _positive(text):
+    number = int(text)
+    if number < 1:
+        raise argparse.ArgumentTypeError(f"{number} is not 1 or more")
+    return number

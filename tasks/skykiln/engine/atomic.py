@@ -1,0 +1,110 @@
+"""Files that appear whole or not at all.
+
+A file is written beside its place under a name that holds host and process, brought to the disk
+(fsync), renamed into its place, and the rename brought to the disk (fsync of the folder). Whoever is
+killed on the way leaves a file that no reader looks at and that the next bake sweeps away.
+"""
+
+import os
+import socket
+from contextlib import contextmanager
+from pathlib import Path
+
+from ..errors import FileError
+
+SUFFIX = ".tmp"
+
+
+@contextmanager
+def told_as_file_error(path):
+    """Turn an OSError about writing `path` into the sentence the user needs."""
+    try:
+        yield
+    except OSError as error:
+        cause = error.strerror or str(error)
+        raise FileError(
+            f"{path}: can't be written: {cause}; make room or give write permission, then bake again"
+        ) from error
+
+
+def temporary_name(path: Path) -> Path:
+    """Where this process writes what will become `path`."""
+    return path.with_name(f".{path.name}.{_host()}.{os.getpid()}{SUFFIX}")
+
+
+def write_beside(path: Path, chunks) -> Path:
+    """Write chunks of bytes beside `path` and to the disk.
+
+    Returns: the temporary file
+    Raises:  FileError naming `path`; nothing is left then
+    """
+    beside = temporary_name(path)
+    with told_as_file_error(path):
+        path.parent.mkdir(parents=True, exist_ok=True)
+        try:
+            _write_to_disk(beside, chunks)
+        except BaseException:
+            beside.unlink(missing_ok=True)
+            raise
+    return beside
+
+
+def rename_into_place(beside: Path, path: Path):
+    """Let the finished file appear under its own name, and keep it there through a power cut."""
+    with told_as_file_error(path):
+        beside.replace(path)
+        sync_folder(path.parent)
+
+
+def write_atomically(path: Path, chunks):
+    """Write a file in one go."""
+    rename_into_place(write_beside(path, chunks), path)
+
+
+def remove(path: Path):
+    """Remove a file that may be missing."""
+    with told_as_file_error(path):
+        path.unlink(missing_ok=True)
+
+
+def sweep(folder: Path):
+    """Remove what killed processes of this host left in a folder."""
+    if not folder.is_dir():
+        return
+    for entry in os.scandir(folder):
+        if entry.name.startswith(".") and entry.name.endswith(SUFFIX) and _is_left_over(entry.name):
+            remove(Path(entry.path))
+
+
+def sync_folder(folder: Path):
+    """Bring a folder's names to the disk."""
+    handle = os.open(folder, os.O_RDONLY)
+    try:
+        os.fsync(handle)
+    finally:
+        os.close(handle)
+
+
+def _write_to_disk(path, chunks):
+    with path.open("wb") as file:
+        for chunk in chunks:
+            file.write(chunk)
+        file.flush()
+        os.fsync(file.fileno())
+
+
+def _host():
+    return socket.gethostname().replace(".", "-")
+
+
+def _is_left_over(name):
+    host, _, process = name.removesuffix(SUFFIX).rpartition(".")
+    if not host.endswith(f".{_host()}") or not process.isdecimal():
+        return False
+    try:
+        os.kill(int(process), 0)
+    except ProcessLookupError:
+        return True
+    except OSError:
+        return False
+    return int(process) == os.getpid()

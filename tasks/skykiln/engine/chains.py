@@ -1,0 +1,25 @@
+"""Chains: a target stage with all that it rests on, judged before and after a bake."""
+
+from typing import NamedTuple
+
+from .stage import Stage
+from .staleness import Verdict, staleness
+
+
+class Chain(NamedTuple):
+    """The verdicts of a target and of every stage below it; what is read comes before what reads it."""
+
+    target: Stage
+    verdicts: tuple[Verdict, ...]
+
+    @property
+    def stale(self) -> list[Verdict]:
+        """The stages that will or may run."""
+        return [verdict for verdict in self.verdicts if not verdict.up_to_date]
+
+
+def chain_of(target: Stage) -> Chain:
+    """Judge a target as it stands now."""
+    memo = {}
+    staleness(target, memo)
+    return Chain(target, tuple(memo.values()))

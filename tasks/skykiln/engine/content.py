@@ -1,0 +1,72 @@
+"""What stages hand to each other: arrays, JSON and bytes, as files with a digest.
+
+Arrays are .npy files that readers map into memory. What this process wrote or read lately is kept
+at hand too, so that the stages of a small probe don't open each other's files.
+"""
+
+import io
+import json
+from collections import OrderedDict
+from pathlib import Path
+from typing import NamedTuple
+
+from .digests import json_bytes
+
+AT_HAND_BYTES = 64 * 2**20
+
+_at_hand: OrderedDict = OrderedDict()
+
+
+def chunks_of(content) -> list:
+    """The bytes of a stage's output: an array as .npy, a dict as JSON, bytes as they are."""
+    if isinstance(content, dict):
+        return [json_bytes(content)]
+    if isinstance(content, bytes | bytearray | memoryview):
+        return [content]
+    return _npy_chunks(content)
+
+
+class Input(NamedTuple):
+    """A file that a stage reads, and the digest that its bytes have."""
+
+    path: Path
+    digest: str
+
+    def array(self):
+        """The array of a .npy file; don't write to it."""
+        if self in _at_hand:
+            _at_hand.move_to_end(self)
+            return _at_hand[self]
+        import numpy as np
+
+        # "c", copy on write: a read-only array would be another type to Numba, compiled anew.
+        array = np.load(self.path, mmap_mode="c").view(np.ndarray)
+        keep_at_hand(self, array)
+        return array
+
+    def json(self) -> dict:
+        """The values of a JSON file."""
+        return json.loads(self.path.read_bytes())
+
+    def bytes(self) -> bytes:
+        """All bytes of the file."""
+        return self.path.read_bytes()
+
+
+def keep_at_hand(file: Input, array):
+    """Remember an array for the stages that come next, the oldest ones making room."""
+    if array.nbytes > AT_HAND_BYTES // 8:
+        return
+    _at_hand[file] = array
+    total = sum(kept.nbytes for kept in _at_hand.values())
+    while total > AT_HAND_BYTES:
+        total -= _at_hand.popitem(last=False)[1].nbytes
+
+
+def _npy_chunks(array):
+    import numpy as np
+
+    array = np.ascontiguousarray(array)
+    header = io.BytesIO()
+    np.lib.format.write_array_header_1_0(header, np.lib.format.header_data_from_array_1_0(array))
+    return [header.getvalue(), memoryview(array).cast("B")]

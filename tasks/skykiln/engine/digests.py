@@ -1,0 +1,24 @@
+"""Digests of bytes: SHA-256 in hexadecimal, of what is about to be written or of a file that stands."""
+
+import hashlib
+import json
+from pathlib import Path
+
+
+def digest_chunks(chunks) -> str:
+    """Digest of the bytes that the chunks make when they stand one behind the other."""
+    digest = hashlib.sha256()
+    for chunk in chunks:
+        digest.update(chunk)
+    return digest.hexdigest()
+
+
+def digest_file(path: Path) -> str:
+    """Digest of a file's bytes. Raises OSError."""
+    with path.open("rb") as file:
+        return hashlib.file_digest(file, "sha256").hexdigest()
+
+
+def json_bytes(value) -> bytes:
+    """JSON to be read by people and programs: one text for equal values, keys in the order given."""
+    return (json.dumps(value, indent=1, ensure_ascii=False, allow_nan=False) + "\n").encode()

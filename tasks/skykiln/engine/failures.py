@@ -1,0 +1,60 @@
+"""Failures: why a stage could not run, left beside its stamp, for whoever started the night.
+
+Stages may run in other processes; a file is how the cause gets home. It goes when the stage succeeds.
+"""
+
+import json
+import traceback
+from contextlib import contextmanager
+from pathlib import Path
+from typing import NamedTuple
+
+from ..errors import SkykilnError
+from .atomic import remove, write_atomically
+from .digests import json_bytes
+
+
+class Failure(NamedTuple):
+    """What stopped a stage.
+
+    cause : the sentence for the user; traceback : empty unless it is a bug
+    """
+
+    stage: str
+    cause: str
+    traceback: str
+
+
+@contextmanager
+def recorded(stage):
+    """Leave a failure file when the block raises, none when it doesn't."""
+    try:
+        yield
+    except Exception as error:
+        write_atomically(_path(stage), [json_bytes(_failure(stage, error)._asdict())])
+        raise
+    remove(_path(stage))
+
+
+def read_failure(stage) -> Failure | None:
+    """The failure that a stage left, if it did."""
+    try:
+        return Failure(**json.loads(_path(stage).read_bytes()))
+    except (OSError, ValueError, TypeError):
+        return None
+
+
+def forget_failure(stage):
+    """Remove what an earlier night left."""
+    remove(_path(stage))
+
+
+def _path(stage):
+    return Path(stage.stamp_path).with_suffix(".failure")
+
+
+def _failure(stage, error):
+    if isinstance(error, SkykilnError):
+        return Failure(stage.label, str(error), "")
+    trace = "".join(traceback.format_exception(error))
+    return Failure(stage.label, f"{type(error).__name__}: {error}", trace)

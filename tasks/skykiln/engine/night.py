@@ -1,0 +1,99 @@
+"""A night: one run of the pipeline, and its summary night.json."""
+
+import time
+from datetime import UTC, datetime
+from pathlib import Path
+
+from .atomic import sweep, write_atomically
+from .chains import Chain, chain_of
+from .digests import json_bytes
+from .failures import Failure, forget_failure, read_failure
+from .stamps import read_stamp
+
+UNCHANGED, REBUILT, FAILED = "unchanged", "rebuilt", "failed"
+
+
+def now() -> str:
+    """The time, ISO 8601 with offset."""
+    return datetime.now(UTC).isoformat(timespec="seconds")
+
+
+class Outcome:
+    """What became of one target.
+
+    chain : its chain as it was judged before; ran : the new stamps, with the stages they are of
+    failure : why it is not up to date, or None
+    """
+
+    def __init__(self, before: Chain):
+        stale = before.stale
+        self.target = before.target
+        stamps = [(verdict, read_stamp(verdict.stage.stamp_path)) for verdict in stale]
+        self.ran = [(verdict.stage, stamp) for verdict, stamp in stamps if stamp not in (None, verdict.stamp)]
+        self.failure = _failure(before.target) if stale else None
+
+    @property
+    def state(self) -> str:
+        if self.failure:
+            return FAILED
+        return REBUILT if self.ran else UNCHANGED
+
+    def stages(self) -> list:
+        """The stages that ran, as night.json lists them."""
+        return [
+            {"stage": stage.title, "reason": stamp.reason, "seconds": stamp.seconds}
+            for stage, stamp in self.ran
+        ]
+
+
+class Night:
+    """The chains as they stood when it began.
+
+    started : ISO 8601 time, which also tells this night from others
+    """
+
+    def __init__(self, targets, started: str):
+        self.started = started
+        self._began = time.monotonic()
+        self.chains = [chain_of(target) for target in targets]
+
+    @property
+    def stale(self) -> list[Chain]:
+        """The chains in which a stage will or may run."""
+        return [chain for chain in self.chains if chain.stale]
+
+    def sweep(self):
+        """Remove what earlier nights left half done where this one will work."""
+        folders = set()
+        for chain in self.stale:
+            for verdict in chain.stale:
+                forget_failure(verdict.stage)
+                stage = verdict.stage
+                folders |= {Path(path).parent for path in (stage.stamp_path, *stage.files().values())}
+        for folder in folders:
+            sweep(folder)
+
+    def outcomes(self) -> list[Outcome]:
+        """What became of each target, as the stamps say it now."""
+        return [Outcome(chain) for chain in self.chains]
+
+    @property
+    def seconds(self) -> float:
+        return round(time.monotonic() - self._began, 3)
+
+
+def _failure(target) -> Failure | None:
+    """Why a target is not up to date: the first stage that left a cause, else the first unfinished one."""
+    unfinished = [verdict.stage for verdict in chain_of(target).stale]
+    for stage in unfinished:
+        failure = read_failure(stage)
+        if failure:
+            return failure
+    if unfinished:
+        return Failure(unfinished[0].label, "was stopped before it ended; bake again", "")
+    return None
+
+
+def write_night(path: Path, record: dict):
+    """Put night.json in its place."""
+    write_atomically(path, [json_bytes(record)])

@@ -1,0 +1,64 @@
+"""Pins: the digest of a source's bytes, taken once when the graph is made.
+
+A file whose size, time and inode are as they were is not read again. A file that was written less
+than two seconds before it was read is: clocks of file systems are too coarse to show a second write.
+"""
+
+import json
+import stat
+import time
+from pathlib import Path
+
+from .atomic import write_atomically
+from .digests import digest_file, json_bytes
+from .staleness import UNREADABLE
+
+TOO_YOUNG_NS = 2_000_000_000
+
+
+class Pins:
+    """The digest cache of a build folder.
+
+    Parameters: store : the JSON file that keeps it between bakes
+    """
+
+    def __init__(self, store: Path):
+        self.store = Path(store)
+        self._entries = _read(self.store)
+        self._changed = False
+
+    def pin(self, path: Path) -> str:
+        """Digest of the file's bytes, or 'unreadable: <cause>', which no file's bytes ever have."""
+        try:
+            status = path.stat()
+            if not stat.S_ISREG(status.st_mode):
+                return f"{UNREADABLE}: not a file"
+            return self._digest(path, status)
+        except OSError as error:
+            return f"{UNREADABLE}: {error.strerror}"
+
+    def save(self):
+        """Write the cache if it learnt something."""
+        if self._changed:
+            write_atomically(self.store, [json_bytes(self._entries)])
+            self._changed = False
+
+    def _digest(self, path, status):
+        seen = [status.st_size, status.st_mtime_ns, status.st_ino]
+        entry = self._entries.get(str(path))
+        if entry and entry[:3] == seen:
+            return entry[3]
+        young = time.time_ns() - status.st_mtime_ns < TOO_YOUNG_NS
+        digest = digest_file(path)
+        if not young:
+            self._entries[str(path)] = [*seen, digest]
+            self._changed = True
+        return digest
+
+
+def _read(store):
+    try:
+        entries = json.loads(store.read_bytes())
+    except (OSError, ValueError):
+        return {}
+    return entries if isinstance(entries, dict) else {}

@@ -1,0 +1,124 @@
+"""Progress of a bake, told by the stamps that appear: stages may run in any process, on any machine.
+
+On a terminal: a bar for the bake and one for each probe at work. Elsewhere: a line for each probe
+that is done.
+"""
+
+import sys
+import threading
+import time
+from contextlib import contextmanager
+from pathlib import Path
+
+EVERY = 0.2  # seconds between two looks at the stamps
+BARS = 8
+
+
+@contextmanager
+def shown(chains, file=sys.stdout):
+    """Show how far stale chains are while the block runs."""
+    watched = [_Watched(chain) for chain in chains]
+    with _bars(watched, file) if file.isatty() else _lines(watched, file) as draw:
+        ended = threading.Event()
+        watcher = threading.Thread(target=_watch, args=(watched, draw, ended), daemon=True)
+        watcher.start()
+        try:
+            yield
+        finally:
+            ended.set()
+            watcher.join()
+
+
+class _Watched:
+    """A stale chain, and how many of its stages have a new stamp."""
+
+    def __init__(self, chain):
+        self.owner = chain.target.owner
+        self.total = len(chain.stale)
+        self.done = 0
+        self.since = None
+        self._last = chain.target.stamp_path
+        self._waiting = {stage.stamp_path: _sign(stage.stamp_path) for stage in _stages(chain)}
+
+    def look(self):
+        """Count new stamps. Returns: whether there are any."""
+        news = [path for path, sign in self._waiting.items() if _sign(path) not in (None, sign)]
+        if self._last in news:  # what has no new stamp by now did not have to run
+            news = list(self._waiting)
+        for path in news:
+            del self._waiting[path]
+        self.done += len(news)
+        self.since = self.since or (time.monotonic() if news else None)
+        return bool(news)
+
+    @property
+    def finished(self):
+        return self.done == self.total
+
+    def sentence(self):
+        return f"{self.owner}: {self.total} stages in {time.monotonic() - self.since:.1f} s"
+
+
+def _stages(chain):
+    return [verdict.stage for verdict in chain.stale]
+
+
+def _sign(path):
+    try:
+        status = Path(path).stat()
+    except OSError:
+        return None
+    return status.st_mtime_ns, status.st_ino
+
+
+def _watch(watched, draw, ended):
+    """Look until the bake ends, and once more then; looking takes a tenth of the time at most."""
+    last = False
+    while not last:
+        began = time.monotonic()
+        last = ended.is_set()
+        changed = [chain for chain in watched if not chain.finished and chain.look()]
+        draw(changed)
+        if not last:
+            ended.wait(max(EVERY, 10 * (time.monotonic() - began)))
+
+
+@contextmanager
+def _lines(watched, file):
+    def draw(changed):
+        for chain in changed:
+            if chain.finished:
+                print(chain.sentence(), file=file, flush=True)
+
+    yield draw
+
+
+@contextmanager
+def _bars(watched, file):
+    from rich.console import Console
+    from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeElapsedColumn
+
+    columns = TextColumn("{task.description}"), BarColumn(), MofNCompleteColumn(), TimeElapsedColumn()
+    with Progress(*columns, console=Console(file=file)) as progress:
+        everything = progress.add_task("all stages", total=sum(chain.total for chain in watched))
+        bars = {}
+
+        def draw(changed):
+            for chain in changed:
+                _draw_chain(progress, bars, chain)
+            progress.update(everything, completed=sum(chain.done for chain in watched))
+
+        yield draw
+
+
+def _draw_chain(progress, bars, chain):
+    """Move a probe's bar; a probe that is done leaves a line in its place."""
+    if chain.finished:
+        if chain.owner in bars:
+            progress.remove_task(bars.pop(chain.owner))
+        progress.console.print(chain.sentence(), highlight=False, markup=False)
+        return
+    if chain.owner not in bars and len(bars) < BARS:
+        bars[chain.owner] = progress.add_task(f"  {chain.owner}", total=chain.total)
+    if chain.owner in bars:
+        progress.update(bars[chain.owner], completed=chain.done)

@@ -1,0 +1,103 @@
+"""Stage: the base of all stages, a Luigi task that reruns only when a content change reaches it.
+
+A stage declares: `version`, bumped when its run would write other bytes; `requires`, the stages it
+reads by role; `files`, the outputs by role; `settings`, the parameters that its run itself reads; and
+`make`, which turns inputs into outputs. Parameters that are only handed down to other stages stay out
+of `settings`: their effect arrives through the digests of the inputs.
+"""
+
+import luigi
+
+from .running import run_stage
+from .staleness import staleness
+
+
+class Stage(luigi.Task):
+    """One step of the bake."""
+
+    task_namespace = "skykiln"
+    version = 1
+    sketched = False
+
+    @classmethod
+    def sketch(cls, **parameters) -> "Stage":
+        """The same stage without Luigi's task id and parsing of parameters, a hundredth of the cost.
+
+        `plan`, lots and completeness compare stages by the thousand; only what Luigi itself is to
+        run becomes a full task.
+        """
+        stage = object.__new__(cls)
+        vars(stage).update(parameters, sketched=True)
+        return stage
+
+    def full(self) -> "Stage":
+        """The Luigi task of a sketch."""
+        return type(self)(**{name: getattr(self, name) for name in self.get_param_names()})
+
+    def beside(self, other: type["Stage"], **parameters) -> "Stage":
+        """Another stage, sketched if this one is."""
+        return other.sketch(**parameters) if self.sketched else other(**parameters)
+
+    @property
+    def owner(self) -> str:
+        """The name of the probe, or of whatever else this is a stage of."""
+        raise TypeError(f"{type(self).__name__} doesn't say whose stage it is")
+
+    @property
+    def title(self) -> str:
+        """What the stage makes, in words."""
+        raise TypeError(f"{type(self).__name__} has no title")
+
+    @property
+    def label(self) -> str:
+        """What the stage makes, and for whom: 'specular level 3 of ferry_noon'."""
+        return f"{self.title} of {self.owner}"
+
+    def files(self) -> dict:
+        """Role -> path of each output, in the order in which they are to appear."""
+        raise TypeError(f"{type(self).__name__} has no outputs")
+
+    def make(self, inputs: dict) -> dict:
+        """Role -> Input in; role -> array, dict (JSON) or bytes out."""
+        raise TypeError(f"{type(self).__name__} makes nothing")
+
+    def requires(self) -> dict:
+        """Role -> the stage that is read. A stage with several outputs gives the one named like the role."""
+        return {}
+
+    def settings(self) -> dict:
+        """The parameters that `make` reads, as JSON would give them back."""
+        return {}
+
+    def pins(self) -> dict:
+        """Role -> digest of inputs that no stage makes."""
+        return {}
+
+    def superseded(self) -> list:
+        """Files of earlier runs that this run no longer writes."""
+        return []
+
+    @property
+    def stamp_path(self) -> str:
+        """Where the stamp lies: beside the first output."""
+        return f"{next(iter(self.files().values()))}.stamp"
+
+    def output_role(self, role: str) -> str:
+        """Which output is meant by whoever reads this stage under `role`."""
+        files = self.files()
+        return role if role in files else next(iter(files))
+
+    def output(self):
+        return {role: luigi.LocalTarget(path) for role, path in self.files().items()}
+
+    def complete(self) -> bool:
+        return staleness(self, {}).up_to_date
+
+    def run(self):
+        # Luigi has scheduled what may run before it was known whether it must: the early cut-off.
+        verdict = staleness(self, {})
+        if not verdict.up_to_date:
+            run_stage(self, verdict)
+
+    def __repr__(self):
+        return f"{type(self).__name__}({self.label})"

@@ -1,0 +1,127 @@
+"""The one place that decides whether a stage is up to date, with a sentence for every reason."""
+
+from pathlib import Path
+from typing import NamedTuple
+
+from .stamps import Stamp, read_stamp
+
+UP_TO_DATE = "up to date"
+WILL_RUN = "will run"
+UNREADABLE = "unreadable"  # how the pin of a file begins that can't be read
+MAY_RUN = "may run"  # what it reads is to be made anew, and may come out as it was
+
+
+class Verdict(NamedTuple):
+    """Whether a stage must run.
+
+    stage : the stage that was judged
+    state : UP_TO_DATE, WILL_RUN or MAY_RUN
+    reasons : sentences, one for each cause; empty when up to date
+    inputs : role -> digest as it stands now, None where the maker of the input is itself stale
+    stamp : the stage's stamp, None if there is none
+    """
+
+    stage: object
+    state: str
+    reasons: tuple
+    inputs: dict
+    stamp: Stamp | None
+
+    @property
+    def up_to_date(self) -> bool:
+        return self.state == UP_TO_DATE
+
+
+def staleness(stage, memo: dict) -> Verdict:
+    """Judge a stage, and everything below it.
+
+    Parameters: memo : verdicts of this question by stamp path; filled on the way, so that a stage
+                       reached on two ways is judged once. What is read comes before what reads it.
+    """
+    known = memo.get(stage.stamp_path)
+    if known is None:
+        known = memo[stage.stamp_path] = _verdict(stage, memo)
+    return known
+
+
+def _verdict(stage, memo):
+    required = stage.requires()
+    inputs = dict(stage.pins())
+    for role, dependency in required.items():
+        below = staleness(dependency, memo)
+        known = below.stamp.outputs[dependency.output_role(role)] if below.up_to_date else None
+        inputs[role] = known and known.digest
+    stamp = read_stamp(stage.stamp_path)
+    reasons = tuple(_reasons(stage, stamp, inputs))
+    if reasons:
+        return Verdict(stage, WILL_RUN, reasons, inputs, stamp)
+    waiting = tuple(f"runs if {_words(role)} changes" for role, digest in inputs.items() if digest is None)
+    return Verdict(stage, MAY_RUN if waiting else UP_TO_DATE, waiting, inputs, stamp)
+
+
+def _reasons(stage, stamp, inputs):
+    if stamp is None:
+        begun = any(Path(path).exists() for path in stage.files().values())
+        yield "its last run did not end" if begun else "was never baked"
+    elif stamp.void:
+        yield stamp.void
+    elif stamp.family != stage.get_task_family():
+        yield f"was made by another stage, {stamp.family}"
+    else:
+        yield from _version_reasons(stage, stamp)
+        yield from _setting_reasons(stamp.settings, stage.settings())
+        yield from _input_reasons(stamp.inputs, inputs)
+        yield from _output_reasons(stamp.outputs, stage.files())
+
+
+def _version_reasons(stage, stamp):
+    if stamp.version != stage.version:
+        yield f"its code's version was {stamp.version}, is {stage.version}"
+
+
+def _setting_reasons(recorded, asked):
+    if recorded == asked:
+        return
+    for name in sorted(recorded.keys() | asked.keys()):
+        if name not in asked:
+            yield f"{name} is no longer a setting"
+        elif name not in recorded:
+            yield f"{name} is a new setting"
+        elif recorded[name] != asked[name]:
+            yield "{} was {}, is {}".format(name, *_shown(recorded[name], asked[name]))
+
+
+def _input_reasons(recorded, inputs):
+    for role, digest in inputs.items():
+        if role not in recorded:
+            yield f"{_words(role)} is a new input"
+        elif digest is not None and digest != recorded[role]:
+            news = f"is {digest}" if digest.startswith(UNREADABLE) else "changed"
+            yield f"{_words(role)} {news}"
+    for role in recorded:
+        if role not in inputs:
+            yield f"{_words(role)} is no longer an input"
+
+
+def _output_reasons(recorded, files):
+    if recorded.keys() != files.keys():
+        yield "its outputs are other ones now"
+        return
+    for role, record in recorded.items():
+        try:
+            fits = record.fits(Path(files[role]))
+        except OSError:
+            yield f"{record.file} is missing"
+        else:
+            if not fits:
+                yield f"{record.file} was changed by something else"
+
+
+def _words(role):
+    return role.replace("_", " ")
+
+
+def _shown(before, after):
+    """Two values as text, short where that tells them apart."""
+    short = [f"{value:.4g}" if isinstance(value, float) else str(value) for value in (before, after)]
+    return short if short[0] != short[1] else (repr(before), repr(after))

@@ -1,0 +1,89 @@
+"""Stamps: the record beside an output of what produced it.
+
+A stamp is removed before its outputs are replaced and written after, so a stamp that stands is true.
+"""
+
+import dataclasses
+import json
+import os
+from pathlib import Path
+from typing import NamedTuple
+
+from .atomic import write_atomically
+from .digests import digest_file, json_bytes
+
+
+class OutputRecord(NamedTuple):
+    """One output file as it was when its stamp was written."""
+
+    file: str
+    digest: str
+    size: int
+    mtime_ns: int
+
+    @classmethod
+    def of(cls, file: str, digest: str, status: os.stat_result):
+        return cls(file, digest, status.st_size, status.st_mtime_ns)
+
+    def fits(self, path: Path) -> bool:
+        """Whether the file still holds the recorded bytes; they are read only if size or time differ.
+
+        Raises: FileNotFoundError
+        """
+        status = path.stat()
+        if (status.st_size, status.st_mtime_ns) == (self.size, self.mtime_ns):
+            return True
+        return status.st_size == self.size and digest_file(path) == self.digest
+
+
+@dataclasses.dataclass(frozen=True)
+class Stamp:
+    """What made a stage's outputs.
+
+    settings : the parameters that the stage's run reads
+    inputs : role -> digest; outputs : role -> OutputRecord
+    reason : the sentence why it ran; seconds : how long; ended : when, ISO 8601
+    void : empty, or why the stage must run again whatever the rest says
+    """
+
+    family: str
+    version: int
+    settings: dict
+    inputs: dict
+    outputs: dict
+    reason: str
+    seconds: float
+    ended: str
+    void: str = ""
+
+    def to_bytes(self) -> bytes:
+        fields = dataclasses.asdict(self)
+        fields["outputs"] = {role: record._asdict() for role, record in self.outputs.items()}
+        return json_bytes(fields)
+
+    @classmethod
+    def from_bytes(cls, data: bytes) -> "Stamp":
+        """Raises: ValueError, TypeError or AttributeError when it isn't a stamp."""
+        fields = json.loads(data)
+        records = {role: OutputRecord(**record) for role, record in fields["outputs"].items()}
+        return cls(**{**fields, "outputs": records})
+
+
+def read_stamp(path) -> Stamp | None:
+    """The stamp, or None when there is none that can be understood."""
+    try:
+        return Stamp.from_bytes(Path(path).read_bytes())
+    except (OSError, ValueError, TypeError, AttributeError, KeyError):
+        return None
+
+
+def write_stamp(path, stamp: Stamp):
+    """Put a stamp in its place."""
+    write_atomically(Path(path), [stamp.to_bytes()])
+
+
+def void_stamp(path, why: str):
+    """Make a stage run again, for the reason given; what it made before stays on record."""
+    stamp = read_stamp(path)
+    if stamp is not None:
+        write_stamp(path, dataclasses.replace(stamp, void=why))

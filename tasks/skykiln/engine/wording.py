@@ -1,0 +1,38 @@
+"""Chains in words, for `plan` and `why`, and as JSON."""
+
+from collections import Counter
+
+from .staleness import MAY_RUN, UP_TO_DATE, WILL_RUN
+
+
+def plan_lines(chains):
+    """A line for every stage that would run and why, and the count of all."""
+    for chain in chains:
+        for verdict in chain.stale:
+            yield f"{verdict.state}: {verdict.stage.label}: {'; '.join(verdict.reasons)}"
+    states = Counter(verdict.state for chain in chains for verdict in chain.verdicts)
+    yield f"{states[WILL_RUN]} will run, {states[MAY_RUN]} may run, {states[UP_TO_DATE]} up to date"
+
+
+def plan_record(chains) -> list:
+    """The state of every stage of every chain."""
+    return [{"name": chain.target.owner, "stages": [_entry(v) for v in chain.verdicts]} for chain in chains]
+
+
+def _entry(verdict):
+    return {"stage": verdict.stage.label, "state": verdict.state, "reasons": list(verdict.reasons)}
+
+
+def why_lines(chains):
+    """For every stage when and why it ran last, and why it would run next."""
+    for chain in chains:
+        for verdict in chain.verdicts:
+            yield f"{verdict.stage.label}: {_last_run(verdict.stamp)}"
+            if not verdict.up_to_date:
+                yield f"    {verdict.state}: {'; '.join(verdict.reasons)}"
+
+
+def _last_run(stamp):
+    if stamp is None:
+        return "no finished run on record"
+    return f"ran {stamp.ended} ({stamp.seconds:.2f} s): {stamp.reason}"

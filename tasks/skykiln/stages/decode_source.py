@@ -1,0 +1,89 @@
+"""DecodeSource: a source file becomes a panorama of linear radiance, and facts about it."""
+
+from pathlib import Path
+
+from ..engine.digests import digest_file
+from ..errors import FileError
+from .probe_stage import ProbeStage
+
+LARGEST_FLOAT32 = 3.4028234e38
+
+
+class DecodeSource(ProbeStage):
+    """The panorama (H, W, 3) float32, repaired and scaled; `source.json` says what was found.
+
+    The two outputs have digests of their own, so that a new header over the same pixels stays here.
+    """
+
+    version = 1
+    title = "panorama"
+
+    def files(self):
+        return {"pixels": self.work_file("panorama.npy"), "facts": self.work_file("source.json")}
+
+    def pins(self):
+        return {"source": self.pinned.pin}
+
+    def settings(self):
+        probe = self.probe
+        return {
+            "layout": probe.layout,
+            "exposure_ev": probe.exposure_ev,
+            "horizontal_lux": probe.horizontal_lux,
+        }
+
+    def make(self, inputs):
+        from ..formats.source_files import read_source
+        from ..light.repair import repair_pixels
+
+        path = Path(self.pinned.source_path)
+        image = read_source(path)
+        self._check_pin(path)
+        _check_layout(path, self.probe.layout, image)
+        pixels, repairs = repair_pixels(image.pixels)
+        scale = _scale(path, self.probe, pixels)
+        height, width = pixels.shape[:2]
+        facts = {
+            "digest": self.pinned.pin,
+            "layout": "equirect",
+            "width": width,
+            "height": height,
+            "header": image.facts,
+            "repaired": repairs._asdict(),
+            "scale": scale,
+        }
+        return {"pixels": pixels * pixels.dtype.type(scale), "facts": facts}
+
+    def _check_pin(self, path):
+        if digest_file(path) != self.pinned.pin:
+            raise FileError(f"{path}: changed since the bake began; bake again")
+
+
+def _check_layout(path, layout, image):
+    height, width = image.pixels.shape[:2]
+    if layout != "auto":
+        return
+    if image.facts.get("envmap") == "cube":
+        raise FileError(f"{path}: holds cube faces; a lat-long panorama is needed")
+    if width != 2 * height:
+        raise FileError(
+            f"{path}: {width} x {height} is not twice as wide as high, as a panorama is; "
+            "if it is one, say layout: equirect"
+        )
+
+
+def _scale(path, probe, pixels):
+    """The factor from the file's values to radiance: of the exposure, or to the measured illuminance."""
+    from ..light.photometry import horizontal_illuminance
+
+    scale = 2.0**probe.exposure_ev
+    if probe.horizontal_lux is not None:
+        found = horizontal_illuminance(pixels)
+        if not found > 0:
+            raise FileError(
+                f"{path}: no light from above, so horizontal_lux can't scale it; remove horizontal_lux"
+            )
+        scale = float(probe.horizontal_lux / found)
+    if float(pixels.max()) * scale > LARGEST_FLOAT32:
+        raise FileError(f"{path}: scaled by {scale:.4g} its brightest pixel overflows; lower exposure_ev")
+    return scale

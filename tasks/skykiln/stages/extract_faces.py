@@ -1,0 +1,34 @@
+"""ExtractFaces: the panorama becomes six faces, level 0 of the specular chain."""
+
+import math
+
+from .decode_source import DecodeSource
+from .probe_stage import ProbeStage
+
+
+class ExtractFaces(ProbeStage):
+    """(6, n, n, 3) float32, the mean radiance over each texel's footprint, turned by the probe's yaw."""
+
+    version = 1
+    title = "faces"
+
+    def requires(self):
+        return {"pixels": self.of_same(DecodeSource)}
+
+    def files(self):
+        return {"faces": self.work_file("faces.npy")}
+
+    def settings(self):
+        return {"face_size": self.probe.face_size or "auto", "yaw_deg": self.probe.yaw_deg}
+
+    def make(self, inputs):
+        from ..light.faces import extract_faces
+
+        panorama = inputs["pixels"].array()
+        size = self.probe.face_size or auto_face_size(panorama.shape[1])
+        return {"faces": extract_faces(panorama, size, math.radians(self.probe.yaw_deg))}
+
+
+def auto_face_size(panorama_width: int) -> int:
+    """The largest power of two that is at most a quarter of the panorama's width, at least 1."""
+    return 1 << max(panorama_width // 4, 1).bit_length() - 1

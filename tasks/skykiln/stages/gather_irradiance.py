@@ -1,0 +1,52 @@
+"""GatherIrradiance: diffuse light as a small cube and as spherical harmonics, and the sky's totals."""
+
+import math
+
+from .decode_source import DecodeSource
+from .extract_faces import ExtractFaces
+from .probe_stage import ProbeStage
+from .pyramids import pyramid_of
+
+
+class GatherIrradiance(ProbeStage):
+    """`cube`: (6, m, m, 3) float32, irradiance E, not E/pi. `sums`: harmonics and totals as JSON."""
+
+    version = 1
+    title = "irradiance"
+
+    def requires(self):
+        return {"pixels": self.of_same(DecodeSource), "faces": self.of_same(ExtractFaces)}
+
+    def files(self):
+        return {"cube": self.work_file("irradiance.npy"), "sums": self.work_file("irradiance.json")}
+
+    def settings(self):
+        probe = self.probe
+        return {
+            "face_size": probe.irradiance_face_size,
+            "sh_order": probe.irradiance_sh_order,
+            "tolerance": probe.tolerance,
+            "yaw_deg": probe.yaw_deg,
+        }
+
+    def make(self, inputs):
+        from ..light.irradiance import irradiance_cube
+
+        probe, pyramid = self.probe, pyramid_of(inputs["faces"])
+        cube = irradiance_cube(pyramid, probe.irradiance_face_size, probe.tolerance)
+        return {"cube": cube, "sums": _sums(inputs["pixels"].array(), math.radians(probe.yaw_deg))}
+
+
+def _sums(panorama, yaw):
+    from ..light import harmonics, photometry
+
+    coefficients = harmonics.irradiance_coefficients(panorama, yaw)
+    windowed, strength = harmonics.weakest_window(coefficients)
+    return {
+        "sh": coefficients.tolist(),
+        "sh_smallest": harmonics.smallest_irradiance(coefficients),
+        "sh_window": {"strength": float(strength), "sh": windowed.tolist()},
+        "mean_radiance": photometry.mean_radiance(panorama).tolist(),
+        "level_irradiance": photometry.level_irradiance(panorama).tolist(),
+        "horizontal_illuminance": float(photometry.horizontal_illuminance(panorama)),
+    }

@@ -1,0 +1,43 @@
+"""Compiled kernels, made ready once for a machine instead of once for each worker."""
+
+import fcntl
+import os
+
+
+def warm_kernels(again: bool):
+    """Compile every kernel, if this machine has not yet, while other processes wait.
+
+    Parameters: again : load them into this process even so, for the workers that it will fork
+    """
+    from ..jit import cache_directory
+
+    folder = cache_directory()
+    folder.mkdir(parents=True, exist_ok=True)
+    done = folder / "compiled"
+    with (folder / "lock").open("w") as lock:
+        fcntl.flock(lock, fcntl.LOCK_EX)
+        if again or not done.exists():
+            _run_every_kernel()
+            done.touch()
+
+
+def _run_every_kernel():
+    """A tiny sky through every stage's numerics."""
+    import numpy as np
+
+    from ..light import brdf, faces, harmonics, irradiance, photometry, pyramid, repair, specular
+    from ..light.directions import alpha_from_roughness
+
+    sky, _ = repair.repair_pixels(np.ones((8, 16, 3), np.float32))
+    nodes = pyramid.build_pyramid(faces.extract_faces(sky, 8))
+    specular.filter_level(nodes, 4, alpha_from_roughness(0.5), 0.1)
+    irradiance.irradiance_cube(nodes, 4, 0.1)
+    harmonics.irradiance_coefficients(sky)
+    photometry.horizontal_illuminance(sky)
+    brdf.brdf_table(4)
+
+
+def share_cores(workers: int):
+    """Give each worker its share of this process's cores; before Numba is first imported."""
+    cores = len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count()
+    os.environ.setdefault("NUMBA_NUM_THREADS", str(max(1, cores // workers)))

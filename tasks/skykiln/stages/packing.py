@@ -1,0 +1,31 @@
+"""From world faces to the bytes of a packed cube."""
+
+import numpy as np
+
+from ..formats.ktx2 import Ktx2Texture, write_ktx2
+from ..light.cube_axes import to_cube_space
+from ..light.directions import cube_texel_solid_angles
+from ..light.storage import STORED_MAX, storage_ev
+
+
+def shared_storage_ev(cubes) -> int:
+    """The stops by which all files of a probe are darkened, so that its greatest value fits."""
+    return storage_ev(max(float(cube.max()) for cube in cubes))
+
+
+def pack_faces(levels, pixels, cube_axes, stops) -> bytes:
+    """A KTX2 cube of world faces.
+
+    Parameters: levels : arrays (6, n, n, 3), the largest first; pixels : name of the coding
+    """
+    images = [to_cube_space(np.ldexp(level, -stops), cube_axes) for level in levels]
+    metadata = {"skykiln.cube_axes": cube_axes, "skykiln.storage_ev": str(stops)}
+    return write_ktx2(Ktx2Texture(pixels, tuple(images), metadata))
+
+
+def share_lost(faces, stops) -> float:
+    """Share of the flux of faces (6, n, n, 3) that is above the largest stored value after darkening."""
+    kept = np.minimum(np.ldexp(faces, -stops), np.float32(STORED_MAX))
+    weights = cube_texel_solid_angles(faces.shape[1])[None, :, :, None]
+    total = float((faces * weights).sum())
+    return max(0.0, 1.0 - float((np.ldexp(kept, stops) * weights).sum()) / total) if total else 0.0

@@ -1,0 +1,90 @@
+"""What all stages of a probe share: the pinned probe they carry, and where its files lie.
+
+Stages import `light` and `formats` inside `make`: what is up to date is then found to be so without
+loading the numerics.
+"""
+
+import dataclasses
+import functools
+import json
+import zlib
+from pathlib import PurePath
+
+import luigi
+
+from ..config import Probe, canonical_json
+from ..engine.stage import Stage
+
+
+@dataclasses.dataclass(frozen=True)
+class PinnedProbe:
+    """A probe, the digest of its source, and the folders of its pipeline.
+
+    root, build_dir : absolute paths; cube_axes : the pipeline's, which packs may override
+    """
+
+    probe: Probe
+    pin: str
+    root: str
+    build_dir: str
+    cube_axes: str
+
+    def __post_init__(self):
+        if ".." in PurePath(self.probe.name).parts or PurePath(self.probe.name).is_absolute():
+            raise ValueError(f"the name {self.probe.name!r} leads out of the build folder")
+
+    def to_json(self) -> str:
+        return canonical_json({**vars(self), "probe": json.loads(self.probe.to_json())})
+
+    @classmethod
+    def from_json(cls, text: str) -> "PinnedProbe":
+        fields = json.loads(text)
+        return cls(**{**fields, "probe": Probe.from_json(canonical_json(fields["probe"]))})
+
+    @property
+    def source_path(self) -> str:
+        return f"{self.root}/{self.probe.file}" if self.probe.file[:1] != "/" else self.probe.file
+
+    @property
+    def work(self) -> str:
+        """The folder of the probe's intermediates and stamps."""
+        return f"{self.build_dir}/work/{self.probe.name}"
+
+    @property
+    def published(self) -> str:
+        """The folder that renderers read."""
+        return f"{self.build_dir}/probes/{self.probe.name}"
+
+
+class PinnedProbeParameter(luigi.Parameter):
+    """A pinned probe as canonical JSON."""
+
+    parse = staticmethod(PinnedProbe.from_json)
+    serialize = staticmethod(functools.lru_cache(maxsize=4096)(PinnedProbe.to_json))
+
+
+class ProbeStage(Stage):
+    """A stage of one probe."""
+
+    pinned = PinnedProbeParameter()
+
+    @property
+    def probe(self) -> Probe:
+        return self.pinned.probe
+
+    @property
+    def owner(self):
+        return self.pinned.probe.name
+
+    @property
+    def priority(self):
+        # One for all stages of a probe: the scheduler then ends one probe before it begins the next,
+        # and the probe's node pyramid is still at hand.
+        return zlib.crc32(self.owner.encode())
+
+    def of_same(self, stage, **parameters):
+        """Another stage of the same probe."""
+        return self.beside(stage, pinned=self.pinned, **parameters)
+
+    def work_file(self, name: str) -> str:
+        return f"{self.pinned.work}/{name}"

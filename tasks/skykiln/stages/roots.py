@@ -1,0 +1,79 @@
+"""The roots for Luigi's own command line and for users' pipelines: BakeProbe and BakeAll.
+
+Roots alone read the pipeline file. They pin the sources when Luigi asks whether they are complete,
+and hold to these pins while it runs what they require.
+"""
+
+import json
+import os
+from pathlib import Path
+
+import luigi
+
+from ..config import load_pipeline
+from ..engine.night import Night, now
+from ..engine.staleness import staleness
+from .nights import night_file, prepare, write_record
+from .shares import luigi_tasks
+from .snapshot import Snapshot
+
+
+class BakeProbe(luigi.Task):
+    """One probe and the BRDF table. `output()` is its probe.json."""
+
+    task_namespace = "skykiln"
+    pipeline = luigi.Parameter()
+    name = luigi.Parameter()
+    _snapshot = None
+
+    def complete(self):
+        self._snapshot = Snapshot(load_pipeline(self.pipeline), [self.name])
+        return all(staleness(target, {}).up_to_date for target in self._snapshot.targets)
+
+    def requires(self):
+        if self._snapshot is None:
+            self.complete()
+        return [target.full() for target in self._snapshot.targets]
+
+    def output(self):
+        return luigi.LocalTarget(load_pipeline(self.pipeline).build_dir / "probes" / self.name / "probe.json")
+
+
+class BakeAll(luigi.Task):
+    """One night: every probe of the pipeline, and night.json, which is its output.
+
+    night : tells one night from another; by default the time at which the process began
+    """
+
+    task_namespace = "skykiln"
+    pipeline = luigi.Parameter()
+    night = luigi.Parameter(default=now())
+    _snapshot = None
+    _night = None
+
+    def complete(self):
+        self._snapshot = Snapshot(load_pipeline(self.pipeline))
+        self._night = Night(self._snapshot.targets, self.night)
+        return not self._night.stale and _is_written(night_file(self._snapshot.pipeline), self.night)
+
+    def requires(self):
+        if self._night is None:
+            self.complete()
+        if not self._night.stale:
+            return []
+        prepare(self._night, self._snapshot, workers=os.cpu_count())
+        tasks = luigi_tasks(self._night.stale, self._snapshot.pipeline.build_dir, workers=os.cpu_count())
+        return [task for task, _ in tasks]
+
+    def run(self):
+        write_record(self._night, self._snapshot)
+
+    def output(self):
+        return luigi.LocalTarget(night_file(load_pipeline(self.pipeline)))
+
+
+def _is_written(path: Path, started):
+    try:
+        return json.loads(path.read_bytes())["started"] == started
+    except (OSError, ValueError, KeyError):
+        return False

@@ -1,0 +1,51 @@
+"""Which targets Luigi runs stage by stage, and which travel in lots."""
+
+import hashlib
+import math
+from pathlib import Path
+
+from ..config import canonical_json
+from ..engine.atomic import write_atomically
+from ..engine.lots import form_lots
+from .bake_lot import BakeLot
+from .extract_faces import auto_face_size
+from .publish_probe import PublishProbe
+
+BIG_SECONDS = 0.2  # a probe that takes longer has stages worth a task each
+LONGEST_LOT = 60.0
+LOTS_PER_WORKER = 4  # so that workers end at about the same time
+
+
+def luigi_tasks(chains, build_dir: Path, workers: int) -> list:
+    """The tasks that bring stale chains up to date, each with the number of tasks it brings along."""
+    small = [chain.target for chain in chains if _is_small(chain.target)]
+    big = [chain for chain in chains if not _is_small(chain.target)]
+    tasks = [(chain.target.full(), len(chain.stale)) for chain in big]
+    return tasks + [(lot, 1) for lot in _lots(small, build_dir, workers)]
+
+
+def _is_small(target):
+    return isinstance(target, PublishProbe) and expected_seconds(target.pinned) < BIG_SECONDS
+
+
+def expected_seconds(pinned) -> float:
+    """A guess at what a probe takes on two cores: by texels of its chain and bytes of its source."""
+    try:
+        size = Path(pinned.source_path).stat().st_size
+    except OSError:
+        size = 0
+    # An auto face size follows from the width: about 1.5 bytes a pixel of a packed half-float file.
+    face = pinned.probe.face_size or auto_face_size(int(math.sqrt(2 * size / 1.5)))
+    return 0.01 + 8 * face * face * 2e-7 + size * 2e-8
+
+
+def _lots(targets, build_dir, workers):
+    seconds = [expected_seconds(target.pinned) for target in targets]
+    longest = min(LONGEST_LOT, sum(seconds) / (LOTS_PER_WORKER * workers)) if workers > 1 else LONGEST_LOT
+    lots = form_lots([target.pinned for target in targets], seconds, longest)
+    if not lots:
+        return []
+    manifest = canonical_json([[pinned.to_json() for pinned in lot] for lot in lots]).encode()
+    path = build_dir / "work" / ".lots" / f"{hashlib.sha256(manifest).hexdigest()[:16]}.json"
+    write_atomically(path, [manifest])
+    return [BakeLot(manifest=str(path), number=number) for number in range(len(lots))]

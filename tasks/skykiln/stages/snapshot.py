@@ -1,0 +1,61 @@
+"""From the pipeline file to the targets of a bake: what there is to make, with all sources pinned."""
+
+import difflib
+import fnmatch
+
+from ..config import Pipeline
+from ..engine.pins import Pins
+from ..errors import PipelineError
+from .probe_stage import PinnedProbe
+from .publish_probe import PublishProbe
+from .tabulate_brdf import TabulateBrdf
+
+
+class Snapshot:
+    """The targets of some probes of a pipeline, as sketches, and the pins that they hold to.
+
+    brdf : the stage of the shared table; probes : one PublishProbe per probe
+    """
+
+    def __init__(self, pipeline: Pipeline, patterns=()):
+        self.pipeline = pipeline
+        self.pins = Pins(pipeline.build_dir / "work" / ".pins.json")
+        self.brdf = TabulateBrdf.sketch(build_dir=str(pipeline.build_dir), size=pipeline.brdf_size)
+        pinned = [self._pinned(probe) for probe in matching(pipeline.probes(), patterns)]
+        self.probes = [PublishProbe.sketch(pinned=probe) for probe in pinned]
+
+    @property
+    def targets(self) -> list:
+        return [self.brdf, *self.probes]
+
+    def _pinned(self, probe):
+        root = self.pipeline.root
+        return PinnedProbe(
+            probe=probe,
+            pin=self.pins.pin(root / probe.file),
+            root=str(root),
+            build_dir=str(self.pipeline.build_dir),
+            cube_axes=self.pipeline.cube_axes,
+        )
+
+
+def matching(probes, patterns) -> list:
+    """The probes whose names match one of the patterns; all of them when there are none.
+
+    Raises: PipelineError naming every pattern that matches nothing, with the nearest name
+    """
+    names = [probe.name for probe in probes]
+    lost = [pattern for pattern in patterns if not fnmatch.filter(names, pattern)]
+    if lost:
+        raise PipelineError([_nothing_called(pattern, names) for pattern in lost])
+    return [
+        probe
+        for probe in probes
+        if not patterns or any(fnmatch.fnmatchcase(probe.name, pattern) for pattern in patterns)
+    ]
+
+
+def _nothing_called(pattern, names):
+    near = difflib.get_close_matches(pattern, names, n=1, cutoff=0.4)
+    hint = f"did you mean '{near[0]}'?" if near else f"there are {', '.join(names[:8])}"
+    return f"no probe is called '{pattern}'; {hint}"
