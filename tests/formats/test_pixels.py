@@ -61,4 +61,5 @@ def test_decoder_undoes_the_encoder(name):
     decoded = coding.decode(blocks.tobytes(), (6, 8, 8))
     assert decoded.dtype == np.float32
     assert decoded.flags.writeable
-    np.testing.assert_allclose(decoded, values, rtol=2.0**-11, atol=2.0**-25)
+    # Half a step of the coarsest coding, relative to the brightest channel.
+    assert (np.abs(decoded - values) <= values.max(-1, keepdims=True) / 63).all()

@@ -9,10 +9,12 @@ from collections.abc import Callable
 from typing import NamedTuple
 
 from skykiln.formats import half
+from skykiln.formats.packed_floats import decode_r11g11b10f, encode_r11g11b10f
+from skykiln.formats.shared_exponent import decode_rgb9e5, encode_rgb9e5
 
 MODEL_RGBSDA = 1  # KDF 5.6, KHR_DF_MODEL_RGBSDA
 _RED, _GREEN, _BLUE, _ALPHA = 0, 1, 2, 15  # KDF, channels of RGBSDA
-_SIGNED_FLOAT = 0xC0  # KDF 5.15, qualifiers FLOAT | SIGNED
+_SIGNED_FLOAT, _FLOAT, _EXPONENT = 0xC0, 0x80, 0x20  # KDF 5.15, qualifiers
 _ONE, _MINUS_ONE = 0x3F800000, 0xBF800000  # float32 bits
 
 
@@ -55,6 +57,19 @@ def _half_samples(*channels):
     )
 
 
+# KDF 5.20 and chapter 11, example E5B9G9R9: every channel is a mantissa and the shared exponent; 8448 is
+# the mantissa that stands for 1.0 at the exponent's bias of 15.
+_SHARED_EXPONENT_SAMPLES = tuple(
+    sample
+    for channel in (_RED, _GREEN, _BLUE)
+    for sample in (Sample(9 * channel, 8, channel, 0, 8448), Sample(27, 4, _EXPONENT | channel, 15, 31))
+)
+_SMALL_FLOAT_SAMPLES = (
+    Sample(0, 10, _FLOAT | _RED, 0, _ONE),
+    Sample(11, 10, _FLOAT | _GREEN, 0, _ONE),
+    Sample(22, 9, _FLOAT | _BLUE, 0, _ONE),
+)
+
 PIXELS = {
     "rgba16f": Coding(
         channels=3, block_side=1, block_bytes=8, type_size=2, vk_format=97, model=MODEL_RGBSDA,
@@ -64,5 +79,13 @@ PIXELS = {
     "rg16f": Coding(
         channels=2, block_side=1, block_bytes=4, type_size=2, vk_format=83, model=MODEL_RGBSDA,
         samples=_half_samples(_RED, _GREEN), encode=half.encode_rg, decode=half.decode_rg,
+    ),
+    "rgb9e5": Coding(
+        channels=3, block_side=1, block_bytes=4, type_size=4, vk_format=123, model=MODEL_RGBSDA,
+        samples=_SHARED_EXPONENT_SAMPLES, encode=encode_rgb9e5, decode=decode_rgb9e5,
+    ),
+    "r11g11b10f": Coding(
+        channels=3, block_side=1, block_bytes=4, type_size=4, vk_format=122, model=MODEL_RGBSDA,
+        samples=_SMALL_FLOAT_SAMPLES, encode=encode_r11g11b10f, decode=decode_r11g11b10f,
     ),
 }  # fmt: skip
