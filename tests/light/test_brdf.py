@@ -22,8 +22,8 @@ def at(roughness, mu):
     brdf._fill(
         np.array([roughness**2]),
         np.array([mu]),
-        *brdf._polar_rule(brdf.POLAR_NODES),
-        *brdf._azimuth_rule(brdf.AZIMUTH_NODES),
+        *brdf.polar_rule(brdf.POLAR_NODES),
+        *brdf.azimuth_rule(brdf.AZIMUTH_NODES),
         table,
     )
     return table[0, 0]

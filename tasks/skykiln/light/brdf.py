@@ -3,19 +3,12 @@
     A + B = ∫ D(h) G2(v, l) / (4 cos_v) dl,   B takes the share (1 - v.h)^5 of it
 
 with D of Walter et al. 2007 (eq. 33), the height-correlated Smith G2 of Heitz 2014 (eq. 99; both
-numbers from memory) and Schlick's Fresnel term (Schlick 1994). Written over half vectors
-(dl = 4 v.h dh) with t = tan(theta_h)/alpha, the distribution D cos(theta_h) dh becomes
-d(t^2)/(1 + t^2)^2 dphi/(2 pi): in s = ln(1 + t^2) it is exp(-s) ds, smooth from a mirror's peak to its
-tail, whatever alpha is. The half vectors that send light above the surface end at
-
-    2 theta_h = pi/2 - theta_v   (below it: every azimuth)
-    2 theta_h = pi/2 + theta_v   (above it: none)
-
-so the range of s is cut at both. Across azimuth, sin(phi/2) = sin(phi_max/2) sin(psi) makes cos_l a mixture
-of its two ends, cos^2(psi) cos_max + sin^2(psi) cos_min: never negative, nothing cancels at grazing
-angles, and nodes crowd where shadowing sets in. The cut leaves a weak singularity in s, so nodes crowd
-towards both ends of each range. The largest error measured (against 240 x 120 nodes, tables of 2 to
-1,024 texels) is 2e-8.
+numbers from memory) and Schlick's Fresnel term (Schlick 1994). Over half vectors (dl = 4 v.h dh) with
+t = tan(theta_h)/alpha, the distribution D cos(theta_h) dh becomes d(t^2)/(1 + t^2)^2 dphi/(2 pi): in
+s = ln(1 + t^2) it is exp(-s) ds, smooth from a mirror's peak to its tail, whatever alpha is. The range of s
+is cut where the horizon begins to hide azimuths (`half_vectors`), which leaves a weak singularity, so
+nodes crowd towards both ends of each range. The largest error measured (against 240 x 120 nodes,
+tables of 2 to 1,024 texels) is 2e-8.
 """
 
 import math
@@ -25,6 +18,13 @@ from numba import prange
 
 from skykiln.jit import formula, parallel
 from skykiln.light.directions import alpha_from_roughness
+from skykiln.light.half_vectors import (
+    azimuth_rule,
+    polar_rule,
+    reflected_range,
+    tangents_of_limits,
+    turn_share,
+)
 
 POLAR_NODES = 48
 AZIMUTH_NODES = 24
@@ -38,7 +38,7 @@ def brdf_table(size):
     table : (size, size, 2) float64; rows: roughness, smallest first; columns: mu = n.v; last: A, B.
     """
     centres = (np.arange(size) + 0.5) / size
-    polar, azimuth = _polar_rule(POLAR_NODES), _azimuth_rule(AZIMUTH_NODES)
+    polar, azimuth = polar_rule(POLAR_NODES), azimuth_rule(AZIMUTH_NODES)
     table = np.empty((size, size, 2))
     _fill(alpha_from_roughness(centres), centres, *polar, *azimuth, table)
     return table
@@ -61,24 +61,6 @@ def average_albedo(table):
     return directional_albedo(table) @ mu * (2.0 / columns)
 
 
-def _unit_rule(count):
-    """Gauss-Legendre nodes and weights on 0..1."""
-    nodes, weights = np.polynomial.legendre.leggauss(count)
-    return (nodes + 1.0) / 2.0, weights / 2.0
-
-
-def _polar_rule(count):
-    """Nodes and weights on 0..1 with x -> 3 x^2 - 2 x^3, which flattens both ends."""
-    x, weights = _unit_rule(count)
-    return x * x * (3.0 - 2.0 * x), weights * 6.0 * x * (1.0 - x)
-
-
-def _azimuth_rule(count):
-    """cos^2(psi) of the nodes on 0..pi/2, and weights that make a whole turn count 1."""
-    nodes, weights = _unit_rule(count)
-    return np.cos(np.pi / 2 * nodes) ** 2, weights
-
-
 @parallel
 def _fill(alphas, mus, polar, polar_weights, cos2_psi, psi_weights, table):
     for row in prange(alphas.size):
@@ -97,17 +79,13 @@ def _fill(alphas, mus, polar, polar_weights, cos2_psi, psi_weights, table):
 @formula
 def _visible_limits(mu, alpha):
     """s up to which every azimuth is visible, and s from which none is."""
-    sine = math.sqrt(1.0 - mu * mu)
-    # Half-angle formulas: tan((pi/2 -+ theta_v)/2).
-    full = mu / (1.0 + sine) / alpha
-    none = (1.0 + sine) / mu / alpha
-    return math.log1p(full * full), math.log1p(none * none)
+    full, none = tangents_of_limits(mu)
+    return math.log1p((full / alpha) ** 2), math.log1p((none / alpha) ** 2)
 
 
 @formula
 def _panel(alpha, mu, start, end, polar, polar_weights, cos2_psi, psi_weights):
     """A and B from the half vectors with s between two limits."""
-    sine = math.sqrt(1.0 - mu * mu)
     a2 = alpha * alpha
     root_v = math.sqrt(a2 + (1.0 - a2) * mu * mu)
     a = 0.0
@@ -115,27 +93,19 @@ def _panel(alpha, mu, start, end, polar, polar_weights, cos2_psi, psi_weights):
     for i in range(polar.size):
         s = start + (end - start) * polar[i]
         tan2 = a2 * math.expm1(s)
-        cos2_h = 1.0 / (1.0 + tan2)
-        along = mu * (1.0 - tan2) * cos2_h
-        across = sine * 2.0 * math.sqrt(tan2) * cos2_h
-        largest = along + across
-        smallest = max(along - across, 0.0)
-        # The visible share of the turn: sin^2(phi_max / 2).
-        share = 1.0 if along >= across else largest / (2.0 * across)
-        scale = 0.5 / math.sqrt(cos2_h)
+        secant = math.sqrt(1.0 + tan2)
+        largest, smallest, share = reflected_range(mu, tan2)
         whole = 0.0
         fresnel = 0.0
         for j in range(cos2_psi.size):
             cos_l = largest * cos2_psi[j] + smallest * (1.0 - cos2_psi[j])
-            turn = psi_weights[j] * math.sqrt(
-                share * cos2_psi[j] / (1.0 - share * (1.0 - cos2_psi[j]))
-            )
-            cos_vh = (cos_l + mu) * scale
-            value = turn * _masked(cos_l, mu, root_v, a2) * cos_vh
+            cos_vh = (cos_l + mu) * 0.5 * secant
+            value = psi_weights[j] * turn_share(share, cos2_psi[j])
+            value *= _masked(cos_l, mu, root_v, a2) * cos_vh
             away = max(1.0 - cos_vh, 0.0)
             whole += value
             fresnel += value * away * away * away * away * away
-        weight = (end - start) * polar_weights[i] * math.exp(-s) / math.sqrt(cos2_h)
+        weight = (end - start) * polar_weights[i] * math.exp(-s) * secant
         a += weight * (whole - fresnel)
         b += weight * fresnel
     return a, b
