@@ -10,6 +10,8 @@ import time
 from contextlib import contextmanager
 from pathlib import Path
 
+from .stamps import read_stamp
+
 EVERY = 0.2  # seconds between two looks at the stamps
 BARS = 8
 
@@ -36,19 +38,21 @@ class _Watched:
         self.owner = chain.target.owner
         self.total = len(chain.stale)
         self.done = 0
-        self.since = None
+        self.seconds = 0.0
         self._last = chain.target.stamp_path
-        self._waiting = {stage.stamp_path: _sign(stage.stamp_path) for stage in _stages(chain)}
+        paths = [verdict.stage.stamp_path for verdict in chain.stale]
+        self._waiting = {path: _sign(path) for path in paths}
 
     def look(self):
         """Count new stamps. Returns: whether there are any."""
         news = [path for path, sign in self._waiting.items() if _sign(path) not in (None, sign)]
-        if self._last in news:  # what has no new stamp by now did not have to run
-            news = list(self._waiting)
         for path in news:
             del self._waiting[path]
+            stamp = read_stamp(path)
+            self.seconds += stamp.seconds if stamp else 0.0
         self.done += len(news)
-        self.since = self.since or (time.monotonic() if news else None)
+        if self._last in news:  # what has no new stamp by now did not have to run
+            self.total = self.done
         return bool(news)
 
     @property
@@ -56,11 +60,8 @@ class _Watched:
         return self.done == self.total
 
     def sentence(self):
-        return f"{self.owner}: {self.total} stages in {time.monotonic() - self.since:.1f} s"
-
-
-def _stages(chain):
-    return [verdict.stage for verdict in chain.stale]
+        stages = "1 stage" if self.total == 1 else f"{self.total} stages"
+        return f"{self.owner}: {stages} in {self.seconds:.2f} s"
 
 
 def _sign(path):
@@ -106,7 +107,8 @@ def _bars(watched, file):
         def draw(changed):
             for chain in changed:
                 _draw_chain(progress, bars, chain)
-            progress.update(everything, completed=sum(chain.done for chain in watched))
+            done, total = sum(chain.done for chain in watched), sum(chain.total for chain in watched)
+            progress.update(everything, completed=done, total=total)
 
         yield draw
 

@@ -55,8 +55,10 @@ def _verdict(stage, memo):
     reasons = tuple(_reasons(stage, stamp, inputs))
     if reasons:
         return Verdict(stage, WILL_RUN, reasons, inputs, stamp)
-    waiting = tuple(f"runs if {_words(role)} changes" for role, digest in inputs.items() if digest is None)
-    return Verdict(stage, MAY_RUN if waiting else UP_TO_DATE, waiting, inputs, stamp)
+    waiting = [_words(role) for role, digest in inputs.items() if digest is None]
+    if waiting:
+        return Verdict(stage, MAY_RUN, (f"runs if {_listed(waiting)} changes",), inputs, stamp)
+    return Verdict(stage, UP_TO_DATE, (), inputs, stamp)
 
 
 def _reasons(stage, stamp, inputs):
@@ -121,7 +123,17 @@ def _words(role):
     return role.replace("_", " ")
 
 
+def _listed(words):
+    return " or ".join(part for part in (", ".join(words[:-1]), words[-1]) if part)
+
+
 def _shown(before, after):
     """Two values as text, short where that tells them apart."""
-    short = [f"{value:.4g}" if isinstance(value, float) else str(value) for value in (before, after)]
+    short = _short(before), _short(after)
     return short if short[0] != short[1] else (repr(before), repr(after))
+
+
+def _short(value):
+    if isinstance(value, list):
+        return f"[{', '.join(map(_short, value))}]"
+    return f"{value:.4g}" if isinstance(value, float) else str(value)

@@ -13,13 +13,13 @@ from luigi.worker import Worker
 PENDING = 300
 
 
-def waves_of(tasks, sizes) -> list:
+def waves_of(tasks) -> list:
     """Share out tasks, in their order, into waves.
 
-    Parameters: sizes : how many tasks each brings along, itself counted
+    Parameters: tasks : pairs of a task and of how many tasks it brings along, itself counted
     """
     waves, pending = [], PENDING
-    for task, size in zip(tasks, sizes, strict=True):
+    for task, size in tasks:
         if pending + size > PENDING:
             waves.append([])
             pending = 0

@@ -9,7 +9,7 @@ from .pyramids import pyramid_of
 
 
 class GatherIrradiance(ProbeStage):
-    """`cube`: (6, m, m, 3) float32, irradiance E, not E/pi. `sums`: harmonics and totals as JSON."""
+    """`irradiance`: (6, m, m, 3) float32, irradiance E, not E/pi. `totals`: harmonics and totals as JSON."""
 
     version = 1
     title = "irradiance"
@@ -18,7 +18,7 @@ class GatherIrradiance(ProbeStage):
         return {"pixels": self.of_same(DecodeSource), "faces": self.of_same(ExtractFaces)}
 
     def files(self):
-        return {"cube": self.work_file("irradiance.npy"), "sums": self.work_file("irradiance.json")}
+        return {"irradiance": self.work_file("irradiance.npy"), "totals": self.work_file("irradiance.json")}
 
     def settings(self):
         probe = self.probe
@@ -34,10 +34,10 @@ class GatherIrradiance(ProbeStage):
 
         probe, pyramid = self.probe, pyramid_of(inputs["faces"])
         cube = irradiance_cube(pyramid, probe.irradiance_face_size, probe.tolerance)
-        return {"cube": cube, "sums": _sums(inputs["pixels"].array(), math.radians(probe.yaw_deg))}
+        return {"irradiance": cube, "totals": _totals(inputs["pixels"].array(), math.radians(probe.yaw_deg))}
 
 
-def _sums(panorama, yaw):
+def _totals(panorama, yaw):
     from ..light import harmonics, photometry
 
     coefficients = harmonics.irradiance_coefficients(panorama, yaw)

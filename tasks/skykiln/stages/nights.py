@@ -10,7 +10,7 @@ from ..engine.release import release
 from ..engine.stamps import void_stamp
 from ..engine.waves import build_wave, waves_of
 from .kernels import warm_kernels
-from .shares import luigi_tasks
+from .shares import luigi_tasks, manifests_removed
 from .snapshot import Snapshot
 
 
@@ -32,8 +32,8 @@ def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) ->
     if night.stale:
         prepare(night, snapshot, workers)
         tasks = luigi_tasks(night.stale, snapshot.pipeline.build_dir, workers)
-        with shown(night.stale):
-            for wave in waves_of(*zip(*tasks, strict=True)):
+        with shown(night.stale), manifests_removed(tasks):
+            for wave in waves_of(tasks):
                 build_wave(wave, workers, verbose)
     return write_record(night, snapshot)
 

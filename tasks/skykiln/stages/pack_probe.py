@@ -27,7 +27,7 @@ class PackProbe(ProbeStage):
         return {
             "faces": self.of_same(ExtractFaces),
             **{f"level_{level}": self.of_same(FilterLevel, level=level) for level in levels},
-            "cube": self.of_same(GatherIrradiance),
+            "irradiance": self.of_same(GatherIrradiance),
         }
 
     def files(self):

@@ -7,7 +7,7 @@ def probe_record(settings, packed_names, inputs) -> dict:
     Parameters: settings : those of PublishProbe; packed_names : name of the pack -> names of its files
                 inputs : role -> Input
     """
-    facts, sums = inputs["facts"].json(), inputs["sums"].json()
+    facts, totals = inputs["facts"].json(), inputs["totals"].json()
     packs = {name: inputs[f"{name}.json"].json() for name in packed_names}
     shared = next(iter(packs.values()))
     return {
@@ -26,11 +26,11 @@ def probe_record(settings, packed_names, inputs) -> dict:
         "irradiance": {
             "face_size": shared["irradiance_face_size"],
             "files": _files(settings, packed_names, inputs, "irradiance"),
-            **{key: sums[key] for key in ("sh", "sh_smallest", "sh_window")},
+            **{key: totals[key] for key in ("sh", "sh_smallest", "sh_window")},
         },
         "sun": None,
         "energy": {
-            **{key: sums[key] for key in ("mean_radiance", "level_irradiance", "horizontal_illuminance")},
+            **{key: totals[key] for key in ("mean_radiance", "level_irradiance", "horizontal_illuminance")},
             "lost_to_clamping": max(pack["lost_to_clamping"] for pack in packs.values()),
         },
         "audit": None,

@@ -20,7 +20,7 @@ class PublishProbe(ProbeStage):
         packs = [self.of_same(PackProbe, pack=name) for name in packed_names(self.probe)]
         return {
             "facts": self.of_same(DecodeSource),
-            "sums": self.of_same(GatherIrradiance),
+            "totals": self.of_same(GatherIrradiance),
             **{role: pack for pack in packs for role in pack.files()},
         }
 

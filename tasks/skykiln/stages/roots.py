@@ -14,7 +14,7 @@ from ..config import load_pipeline
 from ..engine.night import Night, now
 from ..engine.staleness import staleness
 from .nights import night_file, prepare, write_record
-from .shares import luigi_tasks
+from .shares import luigi_tasks, manifests_removed
 from .snapshot import Snapshot
 
 
@@ -50,23 +50,31 @@ class BakeAll(luigi.Task):
     night = luigi.Parameter(default=now())
     _snapshot = None
     _night = None
+    _tasks = None
 
     def complete(self):
+        self._tasks = None
         self._snapshot = Snapshot(load_pipeline(self.pipeline))
         self._night = Night(self._snapshot.targets, self.night)
         return not self._night.stale and _is_written(night_file(self._snapshot.pipeline), self.night)
 
     def requires(self):
+        if self._tasks is None:
+            self._tasks = self._stale_tasks()
+        return [task for task, _ in self._tasks]
+
+    def _stale_tasks(self):
         if self._night is None:
             self.complete()
         if not self._night.stale:
             return []
-        prepare(self._night, self._snapshot, workers=os.cpu_count())
-        tasks = luigi_tasks(self._night.stale, self._snapshot.pipeline.build_dir, workers=os.cpu_count())
-        return [task for task, _ in tasks]
+        workers = os.cpu_count()  # Luigi keeps to itself how many there are
+        prepare(self._night, self._snapshot, workers)
+        return luigi_tasks(self._night.stale, self._snapshot.pipeline.build_dir, workers)
 
     def run(self):
-        write_record(self._night, self._snapshot)
+        with manifests_removed(self._tasks):
+            write_record(self._night, self._snapshot)
 
     def output(self):
         return luigi.LocalTarget(night_file(load_pipeline(self.pipeline)))

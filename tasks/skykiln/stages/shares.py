@@ -2,10 +2,11 @@
 
 import hashlib
 import math
+from contextlib import contextmanager
 from pathlib import Path
 
 from ..config import canonical_json
-from ..engine.atomic import write_atomically
+from ..engine.atomic import remove, write_atomically
 from ..engine.lots import form_lots
 from .bake_lot import BakeLot
 from .extract_faces import auto_face_size
@@ -17,11 +18,21 @@ LOTS_PER_WORKER = 4  # so that workers end at about the same time
 
 
 def luigi_tasks(chains, build_dir: Path, workers: int) -> list:
-    """The tasks that bring stale chains up to date, each with the number of tasks it brings along."""
+    """Pairs of a task that brings stale chains up to date, and of the number of tasks it brings along."""
     small = [chain.target for chain in chains if _is_small(chain.target)]
     big = [chain for chain in chains if not _is_small(chain.target)]
     tasks = [(chain.target.full(), len(chain.stale)) for chain in big]
     return tasks + [(lot, 1) for lot in _lots(small, build_dir, workers)]
+
+
+@contextmanager
+def manifests_removed(tasks):
+    """Remove the manifests of lots when the block ends."""
+    try:
+        yield
+    finally:
+        for manifest in {task.manifest for task, _ in tasks if isinstance(task, BakeLot)}:
+            remove(Path(manifest))
 
 
 def _is_small(target):
