@@ -33,20 +33,16 @@ def _bake(options):
 
     share_cores(options.workers)
     from .engine.progress import shown
+    from .engine.wording import night_sentence
     from .stages.nights import bake
 
     snapshot = _snapshot(options)
-    record = bake(snapshot, options.workers, options.again, options.verbose, shown)
-    _tell_night(record)
-    return record["exit_status"]
-
-
-def _tell_night(record):
-    for probe in record["probes"]:
-        if probe["failure"]:
-            print(f"probe '{probe['name']}': {probe['failure']['cause']}", file=sys.stderr)
-    totals = ", ".join(f"{count} {what}" for what, count in record["totals"].items())
-    print(f"{totals}; {record['stages_run']} stages ran in {record['seconds']:.1f} s")
+    night = bake(snapshot, options.workers, options.again, options.verbose, shown)
+    for owner, failure in night.failures:
+        cause = failure.traceback or failure.cause.replace(f"{snapshot.pipeline.root}/", "")
+        print(f"{owner}: {cause}", file=sys.stderr)
+    print(night_sentence(night))
+    return SOURCE_FAILED if night.failures else ALL_WELL
 
 
 def _plan(options):

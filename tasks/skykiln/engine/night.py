@@ -2,6 +2,7 @@
 
 import time
 from datetime import UTC, datetime
+from functools import cached_property
 from pathlib import Path
 
 from .atomic import sweep, write_atomically
@@ -73,9 +74,15 @@ class Night:
         for folder in folders:
             sweep(folder)
 
+    @cached_property
     def outcomes(self) -> list[Outcome]:
-        """What became of each target, as the stamps say it now."""
+        """What became of each target, as the stamps say it when this is first asked."""
         return [Outcome(chain) for chain in self.chains]
+
+    @property
+    def failures(self) -> list:
+        """Pairs of the name of a target that is not up to date, and why."""
+        return [(outcome.target.owner, outcome.failure) for outcome in self.outcomes if outcome.failure]
 
     @property
     def seconds(self) -> float:

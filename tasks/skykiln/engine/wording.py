@@ -2,6 +2,8 @@
 
 from collections import Counter
 
+from .failures import read_failure
+from .night import FAILED, REBUILT, UNCHANGED
 from .staleness import MAY_RUN, UP_TO_DATE, WILL_RUN
 
 
@@ -30,6 +32,17 @@ def why_lines(chains):
             yield f"{verdict.stage.label}: {_last_run(verdict.stamp)}"
             if not verdict.up_to_date:
                 yield f"    {verdict.state}: {'; '.join(verdict.reasons)}"
+                failure = read_failure(verdict.stage)
+                if failure:
+                    yield f"    failed last time: {failure.cause}"
+
+
+def night_sentence(night) -> str:
+    """What a night did, in a line."""
+    states = Counter(outcome.state for outcome in night.outcomes)
+    ran = sum(len(outcome.ran) for outcome in night.outcomes)
+    told = ", ".join(f"{states[state]} {state}" for state in (REBUILT, UNCHANGED, FAILED))
+    return f"{told}; {ran} stages ran in {night.seconds:.1f} s"
 
 
 def _last_run(stamp):

@@ -52,7 +52,7 @@ class DecodeSource(ProbeStage):
             "repaired": repairs._asdict(),
             "scale": scale,
         }
-        return {"pixels": pixels * pixels.dtype.type(scale), "facts": facts}
+        return {"pixels": pixels if scale == 1 else pixels * pixels.dtype.type(scale), "facts": facts}
 
     def _check_pin(self, path):
         if digest_file(path) != self.pinned.pin:

@@ -19,12 +19,12 @@ def night_file(pipeline: Pipeline) -> Path:
     return pipeline.build_dir / "night.json"
 
 
-def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) -> dict:
+def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) -> Night:
     """One night from the skykiln command.
 
     Parameters: again : run every stage; verbose : let Luigi log
                 shown : context manager that shows the progress of stale chains
-    Returns:    what night.json holds
+    Returns:    the night; its outcomes stand in night.json too
     """
     if again:
         call_for_all(snapshot)
@@ -35,7 +35,8 @@ def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) ->
         with shown(night.stale), manifests_removed(tasks):
             for wave in waves_of(tasks):
                 build_wave(wave, workers, verbose)
-    return write_record(night, snapshot)
+    write_record(night, snapshot)
+    return night
 
 
 def call_for_all(snapshot: Snapshot):
@@ -55,24 +56,23 @@ def prepare(night: Night, snapshot: Snapshot, workers: int):
     warm_kernels(again=workers > 1)
 
 
-def write_record(night: Night, snapshot: Snapshot) -> dict:
-    """Write night.json. Returns: what it holds."""
-    record = night_record(night, snapshot.pipeline)
-    write_night(night_file(snapshot.pipeline), record)
-    return record
+def write_record(night: Night, snapshot: Snapshot):
+    """Write night.json."""
+    write_night(night_file(snapshot.pipeline), night_record(night, snapshot.pipeline))
 
 
 def night_record(night: Night, pipeline: Pipeline) -> dict:
     """The values of night.json."""
-    table, *outcomes = night.outcomes()
+    table, *outcomes = night.outcomes
     states = [outcome.state for outcome in outcomes]
+    counts = {state: states.count(state) for state in (REBUILT, UNCHANGED, FAILED)}
     return {
         "schema": 1,
         "skykiln": release(),
         "started": night.started,
         "seconds": night.seconds,
-        "exit_status": 1 if FAILED in (*states, table.state) else 0,
-        "totals": {"probes": len(states), **{s: states.count(s) for s in (REBUILT, UNCHANGED, FAILED)}},
+        "exit_status": 1 if night.failures else 0,
+        "totals": {"probes": len(states), **counts},
         "stages_run": sum(len(outcome.ran) for outcome in (table, *outcomes)),
         "shared": table.stages(),
         "probes": [_probe_entry(outcome, f"{pipeline.root}/") for outcome in outcomes],
