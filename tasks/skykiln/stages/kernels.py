@@ -2,6 +2,7 @@
 
 import fcntl
 import os
+import sys
 
 
 def warm_kernels(again: bool):
@@ -16,6 +17,8 @@ def warm_kernels(again: bool):
     done = folder / "compiled"
     with (folder / "lock").open("w") as lock:
         fcntl.flock(lock, fcntl.LOCK_EX)
+        if not done.exists():
+            print("compiling kernels, once for this machine", file=sys.stderr, flush=True)
         if again or not done.exists():
             _run_every_kernel()
             done.touch()
