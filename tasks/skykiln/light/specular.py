@@ -1,0 +1,233 @@
+"""The specular filter by hierarchical quadrature: deterministic, noise-free, to a stated tolerance.
+
+    P(n) = (1/N) sum over nodes of F (mean of K over the node)
+
+with a node's flux F (`pyramid`), the lobe's kernel K and its integral N (`ggx`), the mean by moments
+(`lobe_sums`). The mean direction leaves no first-order error: a tiny sun stands exactly where it is.
+
+Groups of tiles, and then each tile of output texels, walk the pyramid once and share lists of nodes
+(`walk`). How exact a node must be follows from the smallest result expected in the tile: far from the
+lobe, where the kernel is small, whole faces will do; a sun is followed down to its texel.
+
+Conventions: `directions`. Source: hierarchical summation after Barnes and Hut 1986.
+"""
+
+import math
+
+import numba
+import numpy as np
+
+from skykiln.jit import formula, parallel
+from skykiln.light.directions import FACE_AXES, cube_directions
+from skykiln.light.ggx import ggx_norm
+from skykiln.light.lobe_sums import ENTRY, append, sum_above, sum_across, sum_coloured
+from skykiln.light.pyramid import RADIUS, RECORD
+from skykiln.light.walk import (
+    ACROSS,
+    BATCH,
+    COLOURED,
+    DROP,
+    OPEN,
+    STACK,
+    fetch,
+    judge,
+    lower_bounds,
+    pop_batch,
+    push_quarters,
+)
+
+_BLOCK = 256  # entries of a list that are summed at a time: they fit the nearest cache
+_DEFERRED = 8192  # nodes that a group may leave to its tiles
+_GROUP = 4  # tiles along a group's edge
+_ERRORS_PER_TEXEL = 3.0  # how many of the largest errors add up, as calibrated by the error tests
+_ROUGH = 0.2  # relative error of the first look at a group
+_DARK = 1e-3  # errors count against at least this share of the mean radiance
+
+
+def filter_level(pyramid, face_size, alpha, tolerance):
+    """The environment filtered by the GGX lobe, at texel centres.
+
+    Parameters
+    ----------
+    pyramid : Pyramid of the source faces.
+    face_size : texels along an edge of the result, a power of two.
+    alpha : GGX alpha, 0 < alpha <= 1.
+    tolerance : largest relative error per channel, where results below 1e-3 of the mean radiance of the
+        brightest channel count as that.
+
+    Returns
+    -------
+    (6, face_size, face_size, 3) float32, radiance, never negative.
+    """
+    brightest = pyramid.mean.max()
+    if brightest == 0.0:
+        return np.zeros((6, face_size, face_size, 3), np.float32)
+    norm = ggx_norm(alpha)
+    tile = _tile_edge(face_size, alpha)
+    group = min(face_size, _GROUP * tile)
+    sums = _sum_groups(
+        pyramid.faces, pyramid.nodes, pyramid.offsets, FACE_AXES,
+        cube_directions(face_size).astype(np.float32), tile, group, float(alpha),
+        tolerance / _ERRORS_PER_TEXEL, _DARK * brightest * norm,
+    )  # fmt: skip
+    return sums * np.float32(1.0 / norm)
+
+
+def _tile_edge(face_size, alpha):
+    """A tile about as wide as the lobe, at most 8 texels and a quarter of a radian."""
+    widest = min(3.0 * alpha, 0.3)
+    edge = 1
+    while edge < 8 and 2 * edge <= face_size and 2 * edge * 1.6 / face_size < widest:
+        edge *= 2
+    return edge
+
+
+@parallel
+def _sum_groups(faces, nodes, offsets, face_axes, directions, tile, group, alpha, part, floor):
+    size = directions.shape[1]
+    across = size // group
+    result = np.empty((6, size, size, 3), np.float32)
+    for g in numba.prange(6 * across * across):
+        face = np.int64(g) // (across * across)
+        j0 = np.int64(g) // across % across * group
+        i0 = np.int64(g) % across * group
+        window = directions[face, j0 : j0 + group, i0 : i0 + group]
+        target = result[face, j0 : j0 + group, i0 : i0 + group]
+        _sum_group(faces, nodes, offsets, face_axes, window, tile, alpha, part, floor, target)
+    return result
+
+
+@formula
+def _sum_group(faces, nodes, offsets, face_axes, window, tile, alpha, part, floor, target):
+    """All texels of a group: one walk for what its tiles share, then one per tile for the rest."""
+    b, a2 = 1.0 - alpha * alpha, 2.0 * alpha * alpha
+    tiles, area = window.shape[0] // tile, tile * tile
+    count = tiles * tiles
+    texels = _by_tiles(window, tile)
+    sums = np.zeros((count * area, 3), np.float32)
+    centre = np.empty(3)
+    radius = _bounds(texels, centre)
+    per_part = np.empty((count + 1, 3))
+    _tile_limits(faces, nodes, offsets, face_axes, texels, tile, centre, radius, b, a2, per_part)
+    for c in range(3):
+        for t in range(count):
+            per_part[t, c] = 1.0 / (part * max(per_part[t, c], floor))
+        per_part[count, c] = per_part[:count, c].max()
+    levels, deferred = np.empty(_DEFERRED, np.int32), np.empty(_DEFERRED, np.int64)
+    none_level, none = np.empty(0, np.int32), np.empty(0, np.int64)
+    for face in range(6):
+        levels[face] = offsets.shape[0] - 2
+        deferred[face] = face
+    roots_level, roots = levels[:6].copy(), deferred[:6].copy()
+    left = _sum_nodes(
+        faces, nodes, offsets, face_axes, texels, centre, radius, b, a2, per_part[count],
+        roots_level, roots, levels, deferred, sums,
+    )  # fmt: skip
+    for t in range(count):
+        own, own_sums = texels[t * area : t * area + area], sums[t * area : t * area + area]
+        radius = _bounds(own, centre)
+        _sum_nodes(
+            faces, nodes, offsets, face_axes, own, centre, radius, b, a2, per_part[t],
+            levels[:left], deferred[:left], none_level, none, own_sums,
+        )  # fmt: skip
+        for k in range(area):
+            target[t // tiles * tile + k // tile, t % tiles * tile + k % tile] = own_sums[k]
+
+
+@formula
+def _by_tiles(window, tile):
+    """The texels of a group, tile after tile. (texels, 3) float32."""
+    tiles, area = window.shape[0] // tile, tile * tile
+    texels = np.empty((tiles * tiles * area, 3), np.float32)
+    for k in range(texels.shape[0]):
+        t, inside = k // area, k % area
+        texels[k] = window[t // tiles * tile + inside // tile, t % tiles * tile + inside % tile]
+    return texels
+
+
+@formula
+def _bounds(texels, centre):
+    """Mean direction of some texels (into `centre`), and the largest distance from it."""
+    centre[:] = 0.0
+    for k in range(texels.shape[0]):
+        for x in range(3):
+            centre[x] += texels[k, x]
+    centre /= math.sqrt(centre[0] ** 2 + centre[1] ** 2 + centre[2] ** 2)
+    largest = 0.0
+    for k in range(texels.shape[0]):
+        square = 0.0
+        for x in range(3):
+            square += (texels[k, x] - centre[x]) ** 2
+        largest = max(largest, square)
+    return math.sqrt(largest)
+
+
+@formula
+def _tile_limits(faces, nodes, offsets, face_axes, texels, tile, centre, radius, b, a2, limits):
+    """The smallest sums expected in each tile, from its corners and its middle, into limits (tiles, 3)."""
+    area, last = tile * tile, tile - 1
+    count = texels.shape[0] // area
+    corners = np.array([0, last, tile * last, tile * last + last, tile // 2 * tile + tile // 2])
+    probes = np.empty((3, 5 * count), np.float32)
+    for p in range(5 * count):
+        for x in range(3):
+            probes[x, p] = texels[p // 5 * area + corners[p % 5], x]
+    sums = np.zeros((3, 5 * count), np.float32)
+    lower_bounds(faces, nodes, offsets, face_axes, probes, centre, radius, b, a2, _ROUGH, sums)
+    for t in range(count):
+        for c in range(3):
+            limits[t, c] = 0.7 * sums[c, 5 * t : 5 * t + 5].min()
+
+
+@formula
+def _sum_nodes(faces, nodes, offsets, face_axes, texels, centre, radius, b, a2, per_part,
+               seed_levels, seeds, deferred_levels, deferred, sums):  # fmt: skip
+    """Walks down from the seeds and sums what is taken into sums (texels, 3).
+
+    A node to be opened that is smaller than the texels' group is left to its tiles while `deferred` has
+    room. Returns how many were.
+    """
+    stack_level, stack_node = np.empty(STACK, np.int32), np.empty(STACK, np.int64)
+    batch, rows = np.empty(BATCH, np.int64), np.empty(BATCH, np.int64)
+    verdicts = np.empty(BATCH, np.int32)
+    scratch = np.empty((BATCH, RECORD), np.float32)
+    above = np.empty((ENTRY, _BLOCK), np.float32)
+    coloured, kinked = np.empty_like(above), np.empty_like(above)
+    n_above, n_coloured, n_kinked = 0, 0, 0
+    left, used, top = 0, 0, 0
+    while used < seeds.shape[0] or top > 0:
+        while top < BATCH and used < seeds.shape[0] and (top == 0 or seed_levels[used] == stack_level[0]):
+            stack_level[top], stack_node[top] = seed_levels[used], seeds[used]
+            top, used = top + 1, used + 1
+        level, count, top = pop_batch(stack_level, stack_node, top, batch)
+        records = fetch(faces, nodes, offsets, face_axes, level, batch, count, scratch, rows)
+        judge(records, rows, count, centre, radius, b, a2, per_part, verdicts)
+        for e in range(count):
+            verdict, node = verdicts[e] & 3, records[rows[e]]
+            if verdict == OPEN:
+                if left < deferred.shape[0] and (level <= 0 or node[RADIUS] < 0.7 * radius):
+                    deferred_levels[left], deferred[left] = level, batch[e]
+                    left += 1
+                else:
+                    top = push_quarters(stack_level, stack_node, top, level, batch[e])
+            elif verdict == DROP:
+                continue
+            elif verdicts[e] & ACROSS:
+                n_kinked = append(kinked, n_kinked, node, True)
+                if n_kinked == _BLOCK:
+                    sum_across(kinked, n_kinked, texels, b, a2, sums)
+                    n_kinked = 0
+            elif verdict == COLOURED:
+                n_coloured = append(coloured, n_coloured, node, True)
+                if n_coloured == _BLOCK:
+                    sum_coloured(coloured, n_coloured, texels, b, a2, sums)
+                    n_coloured = 0
+            else:
+                n_above = append(above, n_above, node, False)
+                if n_above == _BLOCK:
+                    sum_above(above, n_above, texels, b, a2, sums)
+                    n_above = 0
+    sum_above(above, n_above, texels, b, a2, sums)
+    sum_coloured(coloured, n_coloured, texels, b, a2, sums)
+    sum_across(kinked, n_kinked, texels, b, a2, sums)
+    return left
