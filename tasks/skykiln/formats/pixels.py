@@ -9,10 +9,12 @@ from collections.abc import Callable
 from typing import NamedTuple
 
 from skykiln.formats import half
+from skykiln.formats.bc6h import decode_bc6h
+from skykiln.formats.bc6h_encode import encode_bc6h
 from skykiln.formats.packed_floats import decode_r11g11b10f, encode_r11g11b10f
 from skykiln.formats.shared_exponent import decode_rgb9e5, encode_rgb9e5
 
-MODEL_RGBSDA = 1  # KDF 5.6, KHR_DF_MODEL_RGBSDA
+MODEL_RGBSDA, MODEL_BC6H = 1, 133  # KDF 5.6, KHR_DF_MODEL_...
 _RED, _GREEN, _BLUE, _ALPHA = 0, 1, 2, 15  # KDF, channels of RGBSDA
 _SIGNED_FLOAT, _FLOAT, _EXPONENT = 0xC0, 0x80, 0x20  # KDF 5.15, qualifiers
 _ONE, _MINUS_ONE = 0x3F800000, 0xBF800000  # float32 bits
@@ -87,5 +89,9 @@ PIXELS = {
     "r11g11b10f": Coding(
         channels=3, block_side=1, block_bytes=4, type_size=4, vk_format=122, model=MODEL_RGBSDA,
         samples=_SMALL_FLOAT_SAMPLES, encode=encode_r11g11b10f, decode=decode_r11g11b10f,
+    ),
+    "bc6h": Coding(
+        channels=3, block_side=4, block_bytes=16, type_size=1, vk_format=143, model=MODEL_BC6H,
+        samples=(Sample(0, 127, _FLOAT, 0, _ONE),), encode=encode_bc6h, decode=decode_bc6h,
     ),
 }  # fmt: skip

@@ -1,0 +1,301 @@
+"""BC6H blocks whose flux came out wrong, fitted again.
+
+Interpolation is linear in the bits of half floats, about the logarithm: where a sun stands in a block,
+an encoder that looks for the nearest texels alone can lose a part of the sun's flux. Here a block costs
+
+    J = sum over texels, channels of  D^2 + P/a (d/F)^2   +   K/a sum over channels of max(0, |f|/F - a)^2
+
+with D the difference in log2, d in value, F the channel's flux in the block, f the difference in it and
+a the share of the flux that may be lost or won; and the cheapest of these is kept: the block as it came,
+with its endpoints and indices improved; and one-subset blocks of modes 3, 7, 11 and 15, begun by least
+squares along the principal axis of the texels' colours (every texel alike, or weighted by its radiance)
+and improved alike. To improve is to move one endpoint or one index at a time to where J is least, while
+K rises round by round, so that the flux is put right last.
+"""
+
+import math
+
+import numpy as np
+
+from skykiln.formats.bc6h import half_between, is_anchor, subset_of, unpack_block, unquantise
+from skykiln.formats.bc6h_layout import (
+    DELTA_BITS,
+    ENDPOINT_BITS,
+    PARTITION,
+    SUBSETS,
+    WEIGHTS_3,
+    WEIGHTS_4,
+)
+from skykiln.formats.bc6h_pack import fits, pack_block
+from skykiln.jit import exact
+
+_VALUE_COST = 0.3  # P: keeps a sun's own texels near their values
+_FLUX_COSTS = np.array([1.0, 10.0, 100.0, 100.0])  # K, round by round: first near, then exact
+_DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
+_STEPS = np.array([32, 16, 8, 4, 2, 1])
+_ONE_SUBSET_MODES = np.array([3, 7, 11, 15])
+
+
+def refit_blocks(blocks, halves, free) -> np.ndarray:
+    """Fit blocks again.
+
+    Parameters
+    ----------
+    blocks : (count, 2) uint64, as an encoder made them.
+    halves : (count, 16, 3) uint16, the half bits that they stand for.
+    free : (count, 3) float64, per channel the relative error of the block's flux that costs nothing.
+
+    Returns
+    -------
+    (count, 2) uint64, each block the cheapest that was found.
+    """
+    refitted = np.empty_like(blocks)
+    _refit(blocks, halves.astype(np.int64), free, refitted)
+    return refitted
+
+
+@exact
+def _refit(blocks, targets, frees, refitted):
+    values, indices = np.empty(13, np.int64), np.empty(16, np.int64)
+    for i in range(len(blocks)):
+        flux, scale = _fluxes(targets[i])
+        free = frees[i]
+        mode = unpack_block(blocks[i], values, indices)
+        best = math.inf
+        if SUBSETS[mode] > 0:
+            best = _improve(mode, values, indices, targets[i], flux, scale, free)
+            pack_block(mode, values, indices, refitted[i])
+        for mode in _ONE_SUBSET_MODES:
+            for by_radiance in (False, True):
+                _least_squares(mode, targets[i], by_radiance, values, indices)
+                cost = _improve(mode, values, indices, targets[i], flux, scale, free)
+                if cost < best:
+                    best = cost
+                    pack_block(mode, values, indices, refitted[i])
+
+
+@exact
+def half_value(bits):
+    """The value of a half float's bits."""
+    if bits < 1024:
+        return bits * 2.0**-24
+    return math.ldexp(float(1024 + (bits & 1023)), (bits >> 10) - 25)
+
+
+@exact
+def _fluxes(target):
+    """Per channel: the sum of the texels' values, and 1/F for J."""
+    flux, scale = np.zeros(3), np.empty(3)
+    for texel in range(16):
+        for c in range(3):
+            flux[c] += half_value(target[texel, c])
+    for c in range(3):
+        scale[c] = 1.0 / max(flux[c], _DIM * flux.max(), 2.0**-24)
+    return flux, scale
+
+
+@exact
+def _improve(mode, values, indices, target, flux, scale, free):
+    """Move endpoints and indices downhill, in place. Returns the cost."""
+    for strength in _FLUX_COSTS:
+        for c in range(3):
+            _improve_channel(mode, values, indices, target, c, flux[c], scale[c], free[c], strength)
+        _improve_indices(mode, values, indices, target, flux, scale, free, strength)
+    cost = 0.0
+    for c in range(3):
+        strength = _FLUX_COSTS[-1]
+        cost += _improve_channel(mode, values, indices, target, c, flux[c], scale[c], free[c], strength)
+    return cost
+
+
+@exact
+def _weight(two, index):
+    return WEIGHTS_3[index] if two else WEIGHTS_4[index]
+
+
+@exact
+def _channel_cost(mode, values, indices, target, c, flux, scale, free, strength):
+    """One channel's part of J."""
+    two, bits = SUBSETS[mode] == 2, ENDPOINT_BITS[mode]
+    error, total = 0.0, 0.0
+    for texel in range(16):
+        first = 6 * subset_of(texel, two, values[PARTITION]) + c
+        low, high = unquantise(values[first], bits), unquantise(values[first + 3], bits)
+        half = half_between(low, high, _weight(two, indices[texel]))
+        error += _texel_cost(half, target[texel, c], scale, free)
+        total += half_value(half)
+    return error + _flux_cost(total - flux, scale, free, strength)
+
+
+@exact
+def _texel_cost(half, target, scale, free):
+    """One value's part of J, of half bits; 1,024 of them are about one in the log2."""
+    value = (half_value(half) - half_value(target)) * scale
+    return ((half - target) / 1024.0) ** 2 + _VALUE_COST / free * value * value
+
+
+@exact
+def _flux_cost(difference, scale, free, strength):
+    excess = abs(difference) * scale - free
+    return strength / free * excess * excess if excess > 0 else 0.0
+
+
+@exact
+def _improve_channel(mode, values, indices, target, c, flux, scale, free, strength):
+    """Try every endpoint of one channel at smaller and smaller steps. Returns the channel's cost."""
+    best = _channel_cost(mode, values, indices, target, c, flux, scale, free, strength)
+    for step in _STEPS:
+        for k in range(c, 6 * SUBSETS[mode], 3):
+            for change in (-step, step):
+                while True:
+                    values[k] += change
+                    cost = math.inf
+                    if fits(mode, values, c):
+                        cost = _channel_cost(mode, values, indices, target, c, flux, scale, free, strength)
+                    if cost >= best:
+                        values[k] -= change
+                        break
+                    best = cost
+    return best
+
+
+@exact
+def _improve_indices(mode, values, indices, target, flux, scale, free, strength):
+    """Give each texel in turn the index that makes J least, the others staying as they are."""
+    two, bits = SUBSETS[mode] == 2, ENDPOINT_BITS[mode]
+    count = 8 if two else 16
+    halves = np.empty((2, 16, 3), np.int64)
+    for subset in range(SUBSETS[mode]):
+        for index in range(count):
+            for c in range(3):
+                low, high = values[6 * subset + c], values[6 * subset + 3 + c]
+                low, high = unquantise(low, bits), unquantise(high, bits)
+                halves[subset, index, c] = half_between(low, high, _weight(two, index))
+    total = np.zeros(3)
+    for texel in range(16):
+        for c in range(3):
+            total[c] += half_value(halves[subset_of(texel, two, values[PARTITION]), indices[texel], c])
+    for texel in range(16):
+        palette = halves[subset_of(texel, two, values[PARTITION])]
+        usable = count // 2 if is_anchor(texel, two, values[PARTITION]) else count
+        _choose_index(texel, palette[:usable], indices, target[texel], total, flux, scale, free, strength)
+
+
+@exact
+def _choose_index(texel, palette, indices, target, total, flux, scale, free, strength):
+    for c in range(3):
+        total[c] -= half_value(palette[indices[texel], c])
+    best = math.inf
+    for index in range(len(palette)):
+        cost = 0.0
+        for c in range(3):
+            cost += _texel_cost(palette[index, c], target[c], scale[c], free[c])
+            difference = total[c] + half_value(palette[index, c]) - flux[c]
+            cost += _flux_cost(difference, scale[c], free[c], strength)
+        if cost < best:
+            best, indices[texel] = cost, index
+    for c in range(3):
+        total[c] += half_value(palette[indices[texel], c])
+
+
+@exact
+def _least_squares(mode, target, by_radiance, values, indices):
+    """A one-subset block: indices along the principal axis, endpoints by least squares, twice."""
+    weights = np.ones(16)
+    if by_radiance:
+        for texel in range(16):
+            weights[texel] = 1e-3 * half_value(target.max()) + half_value(target[texel].max())
+    place = _along_principal_axis(target, weights)
+    low, high = np.empty(3), np.empty(3)
+    for _ in range(2):
+        for texel in range(16):
+            indices[texel] = np.argmin(np.abs(WEIGHTS_4 / 64.0 - place[texel]))
+        _solve_endpoints(target, weights, indices, low, high)
+        _project(target, low, high, place)
+    if indices[0] >= 8:  # the anchor's index has no top bit: turn the block's ends around
+        indices[:] = 15 - indices
+        _quantise_ends(mode, high, low, values)
+    else:
+        _quantise_ends(mode, low, high, values)
+    values[PARTITION] = 0
+
+
+@exact
+def _along_principal_axis(target, weights):
+    """Where each texel lies between the ends of the texels' spread, 0..1: (16,) float64."""
+    mean, axis = np.zeros(3), np.array([1.0, 1.0, 1.0])
+    for c in range(3):
+        mean[c] = (weights * target[:, c]).sum() / weights.sum()
+    for _ in range(8):  # power iteration on the weighted covariance
+        turned = np.zeros(3)
+        for texel in range(16):
+            along = 0.0
+            for c in range(3):
+                along += (target[texel, c] - mean[c]) * axis[c]
+            for c in range(3):
+                turned[c] += weights[texel] * along * (target[texel, c] - mean[c])
+        length = math.sqrt((turned * turned).sum())
+        if length == 0.0:
+            break
+        axis[:] = turned / length
+    place = np.zeros(16)
+    for texel in range(16):
+        for c in range(3):
+            place[texel] += (target[texel, c] - mean[c]) * axis[c]
+    low, high = place.min(), place.max()
+    return (place - low) / (high - low) if high > low else np.zeros(16)
+
+
+@exact
+def _solve_endpoints(target, weights, indices, low, high):
+    """Ends in 0..65535 that make the weighted squared differences least, the indices given."""
+    aa, ab, bb = 0.0, 0.0, 0.0
+    at, bt = np.zeros(3), np.zeros(3)
+    for texel in range(16):
+        b = WEIGHTS_4[indices[texel]] / 64.0
+        a, w = 1.0 - b, weights[texel]
+        aa, ab, bb = aa + w * a * a, ab + w * a * b, bb + w * b * b
+        for c in range(3):
+            v = target[texel, c] * 64.0 / 31.0 + 1.0
+            at[c], bt[c] = at[c] + w * a * v, bt[c] + w * b * v
+    det = aa * bb - ab * ab
+    for c in range(3):
+        mean = (at[c] + bt[c]) / (aa + 2 * ab + bb)
+        singular = det <= 1e-9 * (aa + bb) ** 2
+        low[c] = mean if singular else (bb * at[c] - ab * bt[c]) / det
+        high[c] = mean if singular else (aa * bt[c] - ab * at[c]) / det
+        low[c], high[c] = min(max(low[c], 0.0), 65535.0), min(max(high[c], 0.0), 65535.0)
+
+
+@exact
+def _project(target, low, high, place):
+    """Where each texel lies between the two ends."""
+    length = 0.0
+    for c in range(3):
+        length += (high[c] - low[c]) ** 2
+    for texel in range(16):
+        along = 0.0
+        for c in range(3):
+            along += (target[texel, c] * 64.0 / 31.0 + 1.0 - low[c]) * (high[c] - low[c])
+        place[texel] = along / length if length > 0 else 0.0
+
+
+@exact
+def _quantise_ends(mode, low, high, values):
+    """Ends as the mode can store them; the second is moved to where its difference fits."""
+    bits = ENDPOINT_BITS[mode]
+    most = (np.int64(1) << bits) - 1
+    for c in range(3):
+        first = _quantise(low[c], bits)
+        second = _quantise(high[c], bits)
+        delta_bits = DELTA_BITS[mode, c]
+        if delta_bits:
+            reach = np.int64(1) << (delta_bits - 1)
+            second = min(max(second, first - reach), first + reach - 1)
+        values[c], values[3 + c] = first, min(max(second, np.int64(0)), most)
+
+
+@exact
+def _quantise(v, bits):
+    """The inverse of `unquantise` (KDF 1.4, 20.2), to nearest."""
+    return min(max(np.int64(math.floor(v * 2.0 ** (bits - 16))), np.int64(0)), (np.int64(1) << bits) - 1)
