@@ -17,9 +17,9 @@ BARS = 8
 
 
 @contextmanager
-def shown(chains, file=sys.stdout):
+def shown(chains):
     """Show how far stale chains are while the block runs."""
-    watched = [_Watched(chain) for chain in chains]
+    watched, file = [_Watched(chain) for chain in chains], sys.stdout
     with _bars(watched, file) if file.isatty() else _lines(watched, file) as draw:
         ended = threading.Event()
         watcher = threading.Thread(target=_watch, args=(watched, draw, ended), daemon=True)

@@ -1,5 +1,6 @@
 """The one place that decides whether a stage is up to date, with a sentence for every reason."""
 
+import json
 from pathlib import Path
 from typing import NamedTuple
 
@@ -136,4 +137,6 @@ def _shown(before, after):
 def _short(value):
     if isinstance(value, list):
         return f"[{', '.join(map(_short, value))}]"
-    return f"{value:.4g}" if isinstance(value, float) else str(value)
+    if isinstance(value, float):
+        return f"{value:.4g}" if abs(value) < 1e4 else f"{value:.6g}"
+    return value if isinstance(value, str) else json.dumps(value)

@@ -1,0 +1,212 @@
+"""The skykiln command: what it prints, its exit status, and what it leaves unloaded."""
+
+import json
+import os
+import re
+import subprocess
+import sys
+import time
+
+import jsonschema
+import numba
+import pytest
+
+from skykiln.cli import ALL_WELL, SOURCE_FAILED, WRONG, main
+from tiny_pipeline import TinyPipeline, touch
+
+
+@pytest.fixture
+def pipeline(tmp_path, monkeypatch):
+    pipeline = TinyPipeline(tmp_path)
+    pipeline.snapshot()
+    monkeypatch.chdir(tmp_path)
+    # The command sets it for its process; here the process is pytest's, and its threads may have begun.
+    monkeypatch.setenv("NUMBA_NUM_THREADS", str(numba.config.NUMBA_NUM_THREADS))
+    return pipeline
+
+
+def _run(capsys, *arguments):
+    status = main(list(arguments))
+    printed = capsys.readouterr()
+    return status, printed.out, printed.err
+
+
+def test_bake_takes_the_pipeline_of_the_working_folder_and_prints_a_line_per_probe(pipeline, capsys):
+    status, out, _ = _run(capsys, "bake")
+    assert status == ALL_WELL
+    *lines, total = out.splitlines()
+    assert {line.split(":")[0] for line in lines} == {"all probes", "ferry_noon", "quay_night"}
+    assert re.fullmatch(r"3 rebuilt, 0 unchanged, 0 failed; 15 stages ran in [0-9.]+ s", total)
+
+
+def test_bake_of_bad_source_ends_with_1_and_names_file_and_cause(pipeline, capsys):
+    (pipeline.folder / "quay_night.exr").write_text("not a picture")
+    status, _, err = _run(capsys, "bake")
+    assert status == SOURCE_FAILED
+    assert err.startswith("quay_night: quay_night.exr: ")
+
+
+def test_wrong_pipeline_ends_with_2_and_names_every_line(pipeline, capsys):
+    pipeline.settings["recipes"]["tiny"]["face_sise"] = 8
+    pipeline.settings["cube_axes"] = "sideways"
+    pipeline.file.write_text(json.dumps(pipeline.settings, indent=1))
+    for command in ("bake", "plan"):
+        status, out, err = _run(capsys, command)
+        assert (status, out) == (WRONG, "")
+        assert "face_size" in err
+        assert "sideways" in err
+    assert not pipeline.build.exists()
+
+
+def test_unknown_name_ends_with_2_and_tells_the_nearest(pipeline, capsys):
+    status, _, err = _run(capsys, "bake", "ferry_moon", "quay*", "zebra")
+    assert status == WRONG
+    assert err.splitlines()[0] == "no probe is called 'ferry_moon'; did you mean 'ferry_noon'?"
+    assert "'zebra'" in err.splitlines()[1]
+
+
+@pytest.mark.parametrize("arguments", ["", "paint", "bake --workers 0", "bake --workers two", "why"])
+def test_wrong_command_ends_with_2(arguments, capsys):
+    with pytest.raises(SystemExit) as end:
+        main(arguments.split())
+    assert end.value.code == WRONG
+
+
+def test_plan_says_in_words_what_would_run_and_why(pipeline, capsys):
+    _run(capsys, "bake")
+    pipeline.recipe["specular"]["roughness"] = [0, 0.4286, 1]
+    pipeline.snapshot()
+    status, out, _ = _run(capsys, "plan", "ferry_noon")
+    assert status == ALL_WELL
+    assert out.splitlines() == [
+        "will run: specular level 1 of ferry_noon: roughness was 0.5, is 0.4286",
+        "may run: pack specular.rgba16f.ktx2 of ferry_noon: runs if level 1 changes",
+        "will run: published files of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
+        "2 will run, 1 may run, 5 up to date",
+    ]
+
+
+def test_plan_as_json_tells_every_state(pipeline, capsys):
+    _run(capsys, "bake")
+    pipeline.recipe["irradiance"]["face_size"] = 4
+    pipeline.snapshot()
+    record = json.loads(_run(capsys, "plan", "--json")[1])
+    names = [chain["name"] for chain in record["chains"]]
+    assert names == ["all probes", "ferry_noon", "quay_night"]
+    states = {stage["stage"]: stage for stage in record["chains"][1]["stages"]}
+    assert states["faces of ferry_noon"] == {
+        "stage": "faces of ferry_noon",
+        "state": "up to date",
+        "reasons": [],
+    }
+    assert states["irradiance of ferry_noon"]["reasons"] == ["face_size was 2, is 4"]
+
+
+def test_plan_changes_nothing_on_disk(pipeline, capsys):
+    _run(capsys, "plan")
+    assert not pipeline.build.exists()
+
+
+def test_why_tells_when_and_why_a_stage_ran_and_would_run(pipeline, capsys):
+    _run(capsys, "bake")
+    pipeline.settings["sources"]["ferry_noon"]["yaw_deg"] = 90
+    pipeline.snapshot()
+    _, out, _ = _run(capsys, "why", "ferry_noon")
+    lines = out.splitlines()
+    faces = lines.index(next(line for line in lines if line.startswith("faces of ferry_noon: ran 20")))
+    assert lines[faces].endswith("was never baked")
+    assert lines[faces + 1] == "    will run: yaw_deg was 0, is 90"
+
+
+def test_why_tells_what_failed_last_time(pipeline, capsys):
+    (pipeline.folder / "quay_night.exr").write_text("not a picture")
+    _run(capsys, "bake")
+    _, out, _ = _run(capsys, "why", "quay*")
+    assert "    failed last time: " in out
+    assert "panorama of quay_night: no finished run on record" in out
+
+
+def test_schema_prints_a_schema_that_takes_the_pipeline(pipeline, capsys):
+    schema = json.loads(_run(capsys, "schema")[1])
+    jsonschema.Draft202012Validator.check_schema(schema)
+    jsonschema.validate(pipeline.settings, schema)
+
+
+def test_again_reruns_one_probe_when_named(pipeline, capsys):
+    _run(capsys, "bake")
+    _, out, _ = _run(capsys, "bake", "--again", "quay_night")
+    assert out.splitlines()[-1].startswith("2 rebuilt, 0 unchanged, 0 failed; 8 stages ran")
+
+
+def _python(code, folder):
+    environment = {**os.environ, "PYTHONPATH": os.pathsep.join(sys.path)}
+    run = subprocess.run(
+        [sys.executable, "-c", code], cwd=folder, env=environment, check=True, capture_output=True, text=True
+    )
+    return run.stdout
+
+
+def test_help_loads_no_heavy_library(tmp_path):
+    code = """
+import sys
+from skykiln.cli import main
+try:
+    main(["--help"])
+except SystemExit:
+    print("loaded:", sorted({"numba", "numpy", "luigi", "pydantic", "yaml", "rich"} & set(sys.modules)))
+"""
+    assert _python(code, tmp_path).endswith("loaded: []\n")
+
+
+def test_bake_with_nothing_to_do_loads_no_numerics(pipeline, capsys):
+    _run(capsys, "bake")
+    touch(pipeline.folder / "ferry_noon.exr")
+    code = """
+import sys
+from skykiln.cli import main
+assert main(["bake"]) == 0
+print("loaded:", sorted({"numba", "numpy", "OpenEXR"} & set(sys.modules)))
+"""
+    assert _python(code, pipeline.folder).endswith("loaded: []\n")
+
+
+def test_bake_with_nothing_to_do_is_quick(pipeline, capsys):
+    _run(capsys, "bake")
+    began = time.perf_counter()
+    status, out, _ = _run(capsys, "bake")
+    assert time.perf_counter() - began < 0.5
+    assert (status, out.splitlines()[-1][:41]) == (ALL_WELL, "0 rebuilt, 3 unchanged, 0 failed; 0 stage")
+
+
+def test_luigi_s_own_noise_is_off_by_default_and_shown_with_v(pipeline):
+    environment = {**os.environ, "PYTHONPATH": os.pathsep.join(sys.path)}
+
+    def printed(*arguments):
+        command = [sys.executable, "-m", "skykiln", "bake", "--again", *arguments]
+        run = subprocess.run(command, env=environment, check=True, capture_output=True, text=True)
+        return run.stdout + run.stderr
+
+    assert "Worker" not in printed()
+    assert "Worker" in printed("-v")
+
+
+def test_bars_are_drawn_on_a_terminal(pipeline):
+    import pty
+
+    environment = {**os.environ, "PYTHONPATH": os.pathsep.join(sys.path), "TERM": "xterm", "COLUMNS": "80"}
+    leader, follower = pty.openpty()
+    run = subprocess.Popen([sys.executable, "-m", "skykiln", "bake"], env=environment, stdout=follower)
+    os.close(follower)
+    seen = b""
+    while chunk := _read(leader):
+        seen += chunk
+    assert run.wait() == ALL_WELL
+    assert b"all stages" in seen
+    assert "━".encode() in seen
+
+
+def _read(leader):
+    try:
+        return os.read(leader, 65536)
+    except OSError:  # the terminal closed
+        return b""

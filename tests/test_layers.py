@@ -1,0 +1,67 @@
+"""Imports run one way: the table of layers, held against the sources themselves."""
+
+import ast
+from pathlib import Path
+
+import pytest
+
+import skykiln
+
+PACKAGE = Path(skykiln.__file__).parent
+
+# What each room may import of the package, besides itself.
+ALLOWED = {
+    "errors": set(),
+    "jit": set(),
+    "light": {"jit"},
+    "formats": {"errors", "jit"},
+    "config": {"errors"},
+    "schemas": set(),
+    "engine": {"errors"},
+    "report": {"light", "formats", "errors"},
+    "stages": {"engine", "report", "config", "formats", "light", "errors", "jit"},
+    "cli": {"stages", "engine", "config", "errors"},
+    "__init__": {"stages"},
+    "__main__": {"cli"},
+}
+# Libraries that only these rooms may know.
+KEPT_BY = {
+    "luigi": {"engine", "stages"},
+    "numba": {"light", "formats", "jit"},
+    "OpenEXR": {"formats"},
+    "yaml": {"config"},
+    "pydantic": {"config"},
+    "rich": {"engine"},
+}
+MODULES = sorted(PACKAGE.rglob("*.py"))
+
+
+def _room(path):
+    return path.relative_to(PACKAGE).parts[0].removesuffix(".py")
+
+
+def _imports(path):
+    """Absolute dotted names of all that a module imports, at its top or inside its functions."""
+    here = ("skykiln", *path.relative_to(PACKAGE).parts[:-1])
+    for node in ast.walk(ast.parse(path.read_text())):
+        if isinstance(node, ast.Import):
+            yield from (alias.name for alias in node.names)
+        elif isinstance(node, ast.ImportFrom):
+            parents = here[: len(here) - node.level + 1] if node.level else ()
+            origin = ".".join([*parents, *([node.module] if node.module else [])])
+            yield from (f"{origin}.{alias.name}" for alias in node.names)
+
+
+@pytest.mark.parametrize("path", MODULES, ids=lambda path: str(path.relative_to(PACKAGE)))
+def test_module_imports_only_from_rooms_below_its_own(path):
+    room = _room(path)
+    for name in _imports(path):
+        parts = name.split(".")
+        if parts[0] == "skykiln" and len(parts) > 1:
+            assert parts[1] in ALLOWED[room] | {room}, f"{room} may not import {name}"
+        elif parts[0] in KEPT_BY:
+            assert room in KEPT_BY[parts[0]], f"{room} may not import {name}"
+
+
+def test_table_has_a_line_for_every_room():
+    assert {_room(path) for path in MODULES} == set(ALLOWED)
