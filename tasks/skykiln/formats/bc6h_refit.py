@@ -33,6 +33,9 @@ _VALUE_COST = 0.3  # P: keeps a sun's own texels near their values
 _FLUX_COSTS = np.array([1.0, 10.0, 100.0, 100.0])  # K, round by round: first near, then exact
 _DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
 _STEPS = np.array([32, 16, 8, 4, 2, 1])
+_REACH = 4  # steps around both ends of a subset that are tried together at last
+# Where the texels' spread ends: not at the last weight, values between it and the end can be hit finer.
+_SPREADS = np.array([64, 60, 55]) / 64.0
 _ONE_SUBSET_MODES = np.array([3, 7, 11, 15])
 
 
@@ -65,13 +68,14 @@ def _refit(blocks, targets, frees, refitted):
         if SUBSETS[mode] > 0:
             best = _improve(mode, values, indices, targets[i], flux, scale, free)
             pack_block(mode, values, indices, refitted[i])
-        for mode in _ONE_SUBSET_MODES:
-            for by_radiance in (False, True):
-                _least_squares(mode, targets[i], by_radiance, values, indices)
-                cost = _improve(mode, values, indices, targets[i], flux, scale, free)
-                if cost < best:
-                    best = cost
-                    pack_block(mode, values, indices, refitted[i])
+        for start in range(len(_ONE_SUBSET_MODES) * len(_SPREADS) * 2):
+            mode = _ONE_SUBSET_MODES[start // 2 % len(_ONE_SUBSET_MODES)]
+            spread = _SPREADS[start // 2 // len(_ONE_SUBSET_MODES)]
+            _least_squares(mode, targets[i], start % 2 == 1, spread, values, indices)
+            cost = _improve(mode, values, indices, targets[i], flux, scale, free)
+            if cost < best:
+                best = cost
+                pack_block(mode, values, indices, refitted[i])
 
 
 @exact
@@ -103,8 +107,7 @@ def _improve(mode, values, indices, target, flux, scale, free):
         _improve_indices(mode, values, indices, target, flux, scale, free, strength)
     cost = 0.0
     for c in range(3):
-        strength = _FLUX_COSTS[-1]
-        cost += _improve_channel(mode, values, indices, target, c, flux[c], scale[c], free[c], strength)
+        cost += _improve_ends(mode, values, indices, target, c, flux[c], scale[c], free[c])
     return cost
 
 
@@ -160,6 +163,25 @@ def _improve_channel(mode, values, indices, target, c, flux, scale, free, streng
 
 
 @exact
+def _improve_ends(mode, values, indices, target, c, flux, scale, free):
+    """Try the ends of each subset together, all pairs nearby. Returns the channel's cost."""
+    strength = _FLUX_COSTS[-1]
+    best = _channel_cost(mode, values, indices, target, c, flux, scale, free, strength)
+    for low in range(c, 6 * SUBSETS[mode], 6):
+        first, second = values[low], values[low + 3]
+        best_first, best_second = first, second
+        for i in range(-_REACH, _REACH + 1):
+            for k in range(-_REACH, _REACH + 1):
+                values[low], values[low + 3] = first + i, second + k
+                if fits(mode, values, c):
+                    cost = _channel_cost(mode, values, indices, target, c, flux, scale, free, strength)
+                    if cost < best:
+                        best, best_first, best_second = cost, values[low], values[low + 3]
+        values[low], values[low + 3] = best_first, best_second
+    return best
+
+
+@exact
 def _improve_indices(mode, values, indices, target, flux, scale, free, strength):
     """Give each texel in turn the index that makes J least, the others staying as they are."""
     two, bits = SUBSETS[mode] == 2, ENDPOINT_BITS[mode]
@@ -199,19 +221,21 @@ def _choose_index(texel, palette, indices, target, total, flux, scale, free, str
 
 
 @exact
-def _least_squares(mode, target, by_radiance, values, indices):
+def _least_squares(mode, target, by_radiance, spread, values, indices):
     """A one-subset block: indices along the principal axis, endpoints by least squares, twice."""
     weights = np.ones(16)
     if by_radiance:
         for texel in range(16):
             weights[texel] = 1e-3 * half_value(target.max()) + half_value(target[texel].max())
-    place = _along_principal_axis(target, weights)
+    place = spread * _along_principal_axis(target, weights)
     low, high = np.empty(3), np.empty(3)
     for _ in range(2):
         for texel in range(16):
             indices[texel] = np.argmin(np.abs(WEIGHTS_4 / 64.0 - place[texel]))
         _solve_endpoints(target, weights, indices, low, high)
         _project(target, low, high, place)
+    for texel in range(16):
+        indices[texel] = np.argmin(np.abs(WEIGHTS_4 / 64.0 - place[texel]))
     if indices[0] >= 8:  # the anchor's index has no top bit: turn the block's ends around
         indices[:] = 15 - indices
         _quantise_ends(mode, high, low, values)

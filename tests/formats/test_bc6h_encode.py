@@ -1,0 +1,142 @@
+"""The BC6H encoder: what reaches it, what it keeps of a small sun, and how it stands to the bare encoder."""
+
+import sys
+
+import ispc_texcomp
+import numpy as np
+import pytest
+from test_bc6h import random_blocks
+
+from skykiln.errors import SkykilnError
+from skykiln.formats.bc6h import decode_bc6h, decode_blocks, unpack_block
+from skykiln.formats.bc6h_encode import encode_bc6h
+from skykiln.formats.bc6h_layout import MODES
+from skykiln.formats.bc6h_pack import pack_block
+from skykiln.formats.bc6h_refit import refit_blocks
+
+
+def coded(colours):
+    """What stays of (faces, h, w, 3) after coding."""
+    return decode_bc6h(encode_bc6h(colours).tobytes(), colours.shape[:3])
+
+
+def sky(size, seed=0):
+    """(6, n, n, 3): a gradient with waves and grain; values 0.2 to 3."""
+    rng = np.random.default_rng(seed)
+    y, x = np.mgrid[0:size, 0:size] / size
+    waves = sum(np.sin(x * rng.normal() * k + y * rng.normal() * k + k) / k for k in range(1, 30))
+    grain = 0.05 * rng.normal(size=(size, size))
+    base = np.exp(0.4 * waves + 0.5 * y + grain)[..., None] * np.array([0.4, 0.7, 1.1])
+    return np.float32(np.stack([base * (1 + 0.1 * f) for f in range(6)]))
+
+
+def sunlit_sky(size, radius=1.5):
+    """The same with a sun on face 4: a disc 1e4 times brighter, edges averaged; its radius in texels."""
+    faces = sky(size)
+    fine = np.mgrid[0 : 8 * size, 0 : 8 * size] / 8 - size * 0.37
+    disc = (np.hypot(*fine) < radius).reshape(size, 8, size, 8).mean((1, 3))
+    faces[4] += np.float32(disc[..., None] * np.array([3e4, 2.7e4, 2.2e4]))
+    return faces
+
+
+@pytest.mark.parametrize("mode", MODES)
+def test_parts_of_a_block_make_the_same_block(mode):
+    for block in random_blocks(mode, 50):
+        values, indices, packed = np.zeros(13, int), np.zeros(16, int), np.zeros(2, np.uint64)
+        pack_block(unpack_block(block, values, indices), values, indices, packed)
+        np.testing.assert_array_equal(packed, block)
+
+
+@pytest.mark.parametrize("value", [0.0, 1.0, 0.1, 64512.0, 65504.0, 2.0**-20])
+def test_constant_colour_is_kept_to_a_thousandth(value):
+    colours = np.full((6, 4, 4, 3), value, np.float32)
+    np.testing.assert_allclose(coded(colours), colours, rtol=1e-3, atol=1e-7)
+
+
+def test_not_a_number_negative_and_infinite_values_never_reach_the_file():
+    colours = np.ones((6, 4, 4, 3), np.float32)
+    for face, value in enumerate([np.nan, -5, np.inf, 1e9, -np.inf]):
+        colours[face] = value
+    np.testing.assert_allclose(coded(colours)[:, 0, 0, 0], [0, 0, 65504, 65504, 0, 1], rtol=1e-3)
+
+
+@pytest.mark.parametrize("size", [1, 2, 3, 5, 6])
+def test_partial_blocks_keep_their_texels(size):
+    colours = sky(8)[:, :size, :size]
+    assert coded(colours).shape == colours.shape
+    np.testing.assert_allclose(coded(colours), colours, rtol=0.08)
+
+
+def test_two_by_two_texels_weigh_the_same():
+    colours = np.ones((6, 2, 2, 3), np.float32)
+    colours[:, 1, 1] = 1.5
+    np.testing.assert_allclose(coded(colours), colours, rtol=0.01)
+
+
+def bare_encoder(colours):
+    """The encoder's basic profile with nothing of ours around it."""
+    kept = []
+    for face in colours:
+        size = len(face)
+        rgba = np.ones((size, size, 4), np.float16)
+        rgba[..., :3] = face
+        surface = ispc_texcomp.RGBASurface(rgba.tobytes(), size, size, size * 8)
+        profile = ispc_texcomp.BC6HEncSettings.from_profile("basic")
+        blocks = ispc_texcomp.compress_blocks_bc6h(surface, profile)
+        kept.append(decode_bc6h(blocks, (1, size, size))[0])
+    return np.stack(kept)
+
+
+def log_error(kept, colours):
+    return np.sqrt(np.mean((np.log2(np.maximum(kept, 1e-6)) - np.log2(colours)) ** 2))
+
+
+@pytest.mark.parametrize("radius", [0.4, 1.5, 3])
+def test_small_sun_keeps_its_energy(radius):
+    colours = sunlit_sky(128, radius)
+    kept = coded(colours)
+    energy = kept.sum((0, 1, 2), np.float64) / colours.sum((0, 1, 2), np.float64)
+    np.testing.assert_allclose(energy, 1, atol=3e-3)
+    assert log_error(kept, colours) <= 1.05 * log_error(bare_encoder(colours), colours)
+
+
+def test_wide_sun_keeps_its_peak():
+    # A sun's rim and its middle fall on a few indices of one block: the peak of a smaller one can be
+    # several per cent off where its flux is right.
+    colours = sunlit_sky(128, 3)
+    assert coded(colours).max() == pytest.approx(colours.max(), rel=0.02)
+
+
+def test_sky_without_sun_is_coded_as_the_bare_encoder_codes_it():
+    colours = sky(32)
+    assert log_error(coded(colours), colours) <= 1.001 * log_error(bare_encoder(colours), colours)
+
+
+def test_refitting_puts_flux_right():
+    halves = np.full((1, 16, 3), np.float16(2).view(np.uint16))
+    halves[0, 5] = np.float16(20000).view(np.uint16)
+    spoiled = np.zeros((1, 2), np.uint64)  # black: mode 0, all zero
+    refitted = decode_blocks(refit_blocks(spoiled, halves, np.full((1, 3), 5e-4)))
+    flux = refitted.view(np.float16).astype(float).sum(1) / halves.view(np.float16).astype(float).sum(1)
+    np.testing.assert_allclose(flux, 1, atol=2e-3)
+
+
+def test_refitting_keeps_an_exact_block():
+    colours = np.full((1, 4, 4, 3), 3.5, np.float32)
+    block = encode_bc6h(colours)
+    halves = decode_blocks(block)
+    np.testing.assert_array_equal(decode_blocks(refit_blocks(block, halves, np.full((1, 3), 1e-3))), halves)
+
+
+def test_same_bytes_for_every_number_of_threads(monkeypatch):
+    colours = sunlit_sky(64)
+    several = encode_bc6h(colours)
+    monkeypatch.setattr("numba.get_num_threads", lambda: 1)
+    monkeypatch.setattr("skykiln.formats.bc6h_encode._STRIP", 100)
+    np.testing.assert_array_equal(encode_bc6h(colours), several)
+
+
+def test_missing_encoder_is_an_error_that_names_the_extra(monkeypatch):
+    monkeypatch.setitem(sys.modules, "ispc_texcomp", None)
+    with pytest.raises(SkykilnError, match=r"skykiln\[bc6h\]"):
+        encode_bc6h(np.ones((6, 4, 4, 3), np.float32))
