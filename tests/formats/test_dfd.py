@@ -2,7 +2,7 @@
 
 import pytest
 
-from skykiln.formats.dfd import broken_dfd_rules, write_dfd
+from skykiln.formats.dfd import PRIMARIES, broken_dfd_rules, read_primaries, write_dfd
 from skykiln.formats.pixels import PIXELS
 
 # Total size; vendor and type 0; version 2, block size; model, BT.709, linear, flags; block dimensions
@@ -40,19 +40,35 @@ KNOWN = {
 
 @pytest.mark.parametrize("name", PIXELS)
 def test_descriptor_has_these_bytes(name):
-    assert write_dfd(PIXELS[name]).hex() == "".join(KNOWN[name].split())
+    assert write_dfd(PIXELS[name], "rec709").hex() == "".join(KNOWN[name].split())
 
 
 @pytest.mark.parametrize("name", PIXELS)
 def test_every_change_of_a_byte_is_named(name):
-    data = write_dfd(PIXELS[name])
+    data = write_dfd(PIXELS[name], "rec709")
     assert list(broken_dfd_rules(data, PIXELS[name])) == []
     for i in range(len(data)):
-        changed = data[:i] + bytes([data[i] ^ 1]) + data[i + 1 :]
+        changed = data[:i] + bytes([data[i] ^ 64]) + data[i + 1 :]
         assert len(list(broken_dfd_rules(changed, PIXELS[name]))) == 1
 
 
 def test_field_is_named_with_its_bytes():
-    data = bytearray(write_dfd(PIXELS["rg16f"]))
+    data = bytearray(write_dfd(PIXELS["rg16f"], "rec709"))
     data[14] = 2  # transfer function: sRGB
     assert list(broken_dfd_rules(bytes(data), PIXELS["rg16f"])) == ["DFD transferFunction is 02, not 01"]
+
+
+@pytest.mark.parametrize(("name", "number"), [("rec709", 1), ("rec2020", 4), ("acescg", 7)])
+def test_primaries_have_these_numbers(name, number):
+    data = write_dfd(PIXELS["rgba16f"], name)
+    assert data[13] == number
+    assert list(broken_dfd_rules(data, PIXELS["rgba16f"])) == []
+    assert read_primaries(data) == name
+
+
+def test_unknown_primaries_are_named():
+    data = bytearray(write_dfd(PIXELS["rg16f"], "rec709"))
+    data[13] = 99
+    (rule,) = broken_dfd_rules(bytes(data), PIXELS["rg16f"])
+    assert "colorPrimaries is 99" in rule
+    assert str(sorted(PRIMARIES.values())) in rule

@@ -2,6 +2,7 @@
 
 import struct
 
+import imagecodecs
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -32,7 +33,7 @@ def test_smallest_cube_map_has_these_bytes():
     # Header 80, index 24, DFD 92, key/value 24: the level starts at 220, padded to 224.
     expected = b"\xabKTX 20\xbb\r\n\x1a\n" + struct.pack("<9I", *words)
     expected += struct.pack("<4I2Q", 104, 92, 196, 24, 0, 0) + struct.pack("<3Q", 224, 48, 48)
-    expected += write_dfd(PIXELS["rgba16f"])
+    expected += write_dfd(PIXELS["rgba16f"], "rec709")
     expected += b"\x12\0\0\0KTXorientation\0rd\0\0\0" + bytes(4)
     for red in ("0000", "003c", "0040", "0042", "0044", "0045"):
         expected += bytes.fromhex(red + "003c 0040 003c")
@@ -93,15 +94,16 @@ def test_same_texture_gives_the_same_bytes_whatever_the_order_of_its_keys():
     assert write_ktx2(texture) == write_ktx2(Ktx2Texture(texture.pixels, texture.levels, turned))
 
 
-@settings(max_examples=40, deadline=None)
+@settings(max_examples=30, deadline=None)
 @given(
     pixels=st.sampled_from(sorted(PIXELS)),
     width=st.integers(1, 40),
     height=st.integers(1, 40),
     cube=st.booleans(),
+    compress=st.sampled_from([0, 1, 3]),
     data=st.data(),
 )
-def test_texture_survives(pixels, width, height, cube, data):
+def test_texture_survives(pixels, width, height, cube, compress, data):
     height = width if cube else height
     count = data.draw(st.integers(1, max(width, height).bit_length()))
     rng = np.random.default_rng(count)
@@ -110,16 +112,17 @@ def test_texture_survives(pixels, width, height, cube, data):
         rng.random((shape[0], max(1, height >> p), max(1, width >> p), shape[1]), np.float32)
         for p in range(count)
     )
-    written = write_ktx2(Ktx2Texture(pixels, levels, METADATA))
+    written = write_ktx2(Ktx2Texture(pixels, levels, METADATA, "rec2020"), compress)
     assert list(broken_ktx2_rules(written)) == []
     texture = read_ktx2(written, "sky")
     assert texture.pixels == pixels
+    assert texture.primaries == "rec2020"
     assert texture.metadata == {**METADATA, "KTXorientation": "rd"}
     for level, original in zip(texture.levels, levels, strict=True):
         decoded = PIXELS[pixels].decode(PIXELS[pixels].encode(original).tobytes(), original.shape[:3])
         np.testing.assert_array_equal(level, decoded)
     # What was decoded is coded again without loss, except by BC6H's encoder.
-    assert pixels == "bc6h" or write_ktx2(texture) == written
+    assert pixels == "bc6h" or write_ktx2(texture, compress) == written
 
 
 def test_levels_that_are_no_chain_are_refused():
@@ -128,10 +131,11 @@ def test_levels_that_are_no_chain_are_refused():
         write_ktx2(Ktx2Texture("rgba16f", levels))
 
 
-def test_every_truncation_is_an_error():
-    data = write_ktx2(chain(size=4))
+@pytest.mark.parametrize("compress", [0, 3])
+def test_every_truncation_is_an_error(compress):
+    data = write_ktx2(chain(size=4), compress)
     for end in range(len(data)):
-        with pytest.raises(FileError, match=r"^sky\.ktx2: .*(ends|identifier|inside)"):
+        with pytest.raises(FileError, match=r"^sky\.ktx2: .*(ends|identifier|inside|Zstandard)"):
             read_ktx2(data[:end], "sky.ktx2")
 
 
@@ -165,7 +169,7 @@ MUTATIONS = [
     (word(20, 0xFFFFFFFF), "square"),
     (word(24, 0), "pixelHeight"),
     (word(24, 16), "square"),
-    (lambda data: word(24, 1 << 31)(word(20, 1 << 31)(data)), "byteLength"),
+    (lambda data: word(24, 1 << 31)(word(20, 1 << 31)(data)), "more than the 4294967296"),
     (lambda data: word(24, 16)(word(20, 16)(data)), "byteLength"),
     (word(28, 1), "pixelDepth"),
     (word(28, 6), "pixelDepth"),
@@ -237,6 +241,67 @@ def test_broken_rule_is_named(number):
     with pytest.raises(FileError, match=words) as error:
         read_ktx2(change(data), "probes/sky.ktx2")
     assert str(error.value).startswith("probes/sky.ktx2: ")
+
+
+def test_packed_levels_are_frames_without_padding_that_another_reader_unpacks():
+    texture = chain(size=8)
+    packed, plain = write_ktx2(texture, 3), write_ktx2(texture)
+    words = struct.unpack_from("<13I2Q", packed, 12)
+    assert words[8] == 2
+    assert words[:8] + words[9:13] == struct.unpack_from("<13I", plain, 12)[:8] + words[9:13]
+    end = words[11] + words[12]
+    for p in reversed(range(4)):
+        offset, length, size = struct.unpack_from("<3Q", packed, 80 + 24 * p)
+        assert offset == end
+        end = offset + length
+        plain_offset, _, plain_size = struct.unpack_from("<3Q", plain, 80 + 24 * p)
+        assert size == plain_size
+        level = imagecodecs.zstd_decode(packed[offset:end])
+        assert level == plain[plain_offset : plain_offset + plain_size]
+    assert end == len(packed)
+
+
+# Offsets in a packed 8 x 8 chain: the first frame, of the smallest level, stands at the end of the keys.
+PACKED_MUTATIONS = [
+    (word(44, 0), "byteLength"),
+    (word(44, 1), "supercompressionScheme"),
+    (long_word(96, 0), "level 0: uncompressedByteLength"),
+    (long_word(96, 1 << 40), "level 0: uncompressedByteLength"),
+    (long_word(88, 5), "Zstandard|byteOffset|behind"),
+    (long_word(88, 1 << 60), "Zstandard|ends after"),
+    (lambda data: word(24, 1 << 20)(word(20, 1 << 20)(data)), "more than the 4294967296"),
+    (lambda data: word(24, 1 << 12)(word(20, 1 << 12)(data)), "uncompressedByteLength|levelCount"),
+    (lambda data: data[: frame(data, 3)] + b"\0" + data[frame(data, 3) + 1 :], "level 3: .* magic"),
+    (lambda data: byte(frame(data, 0) + 5, 0xFF)(data), "level 0: its Zstandard frame"),
+    (lambda data: byte(len(data) - 3, data[-3] ^ 0xFF)(data), "level 0"),
+    (lambda data: data[:-5], "ends after"),
+    (lambda data: data + b"\0", "behind the base"),
+]
+
+
+def frame(data, level):
+    return struct.unpack_from("<Q", data, 80 + 24 * level)[0]
+
+
+@pytest.mark.parametrize("number", range(len(PACKED_MUTATIONS)))
+def test_broken_rule_of_packed_levels_is_named(number):
+    change, words = PACKED_MUTATIONS[number]
+    data = write_ktx2(Ktx2Texture("rgba16f", tuple(np.ones((6, n, n, 3), "f4") for n in (8, 4, 2, 1))), 3)
+    with pytest.raises(FileError, match=words) as error:
+        read_ktx2(change(data), "probes/sky.ktx2")
+    assert str(error.value).startswith("probes/sky.ktx2: ")
+
+
+def test_frame_that_claims_more_than_it_can_hold_takes_no_memory():
+    # A frame header with a content size of 6 * 16384^2 * 2 bytes and nothing behind it.
+    level = np.zeros((1, 1, 1, 2), np.float32)
+    data = bytearray(write_ktx2(Ktx2Texture("rg16f", (level,)), 3))
+    start, size = frame(data, 0), 4 * 16384 * 16384
+    struct.pack_into("<II", data, 20, 16384, 16384)
+    data[start:] = b"\x28\xb5\x2f\xfd\xe0" + struct.pack("<Q", size)
+    struct.pack_into("<QQ", data, 88, len(data) - start, size)
+    with pytest.raises(FileError, match="can't hold"):
+        read_ktx2(bytes(data), "sky")
 
 
 def test_mip_padding_must_be_zero():

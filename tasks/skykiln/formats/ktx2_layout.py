@@ -7,6 +7,7 @@ from typing import NamedTuple
 from skykiln.formats.pixels import PIXELS, Coding
 
 IDENTIFIER = b"\xabKTX 20\xbb\r\n\x1a\n"
+PLAIN, ZSTANDARD = 0, 2  # supercompressionScheme
 _HEADER = struct.Struct("<13I2Q")
 HEADER_BYTES = len(IDENTIFIER) + _HEADER.size
 _LEVEL = struct.Struct("<3Q")
@@ -87,6 +88,6 @@ def place_levels(start: int, lengths: list[int], alignment: int) -> list[int]:
     return offsets[::-1]
 
 
-def level_alignment(coding: Coding) -> int:
-    """"mipPadding": the least common multiple of a block's bytes and 4."""
-    return lcm(coding.block_bytes, 4)
+def level_alignment(coding: Coding, scheme: int) -> int:
+    """"mipPadding": the least common multiple of a block's bytes and 4; none between packed levels."""
+    return lcm(coding.block_bytes, 4) if scheme == PLAIN else 1

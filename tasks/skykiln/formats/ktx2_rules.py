@@ -12,6 +12,8 @@ from skykiln.formats.key_values import broken_key_value_rules
 from skykiln.formats.ktx2_layout import (
     HEADER_BYTES,
     IDENTIFIER,
+    PLAIN,
+    ZSTANDARD,
     Header,
     coding_name,
     index_end,
@@ -22,6 +24,9 @@ from skykiln.formats.ktx2_layout import (
     read_index,
 )
 from skykiln.formats.pixels import PIXELS, Coding
+from skykiln.formats.zstandard_levels import broken_frame_rules
+
+MAX_BYTES = 1 << 32  # a chain of 8192 x 8192 half-float faces fits
 
 
 def broken_ktx2_rules(data: bytes) -> Iterator[str]:
@@ -65,8 +70,8 @@ def _header_rules(h: Header) -> Iterator[str]:
     most = max(h.pixelWidth, h.pixelHeight).bit_length()
     if not 1 <= h.levelCount <= most:
         yield f"levelCount must be 1 to {most} for {h.pixelWidth} x {h.pixelHeight}, but is {h.levelCount}"
-    if h.supercompressionScheme != 0:
-        yield f"supercompressionScheme must be 0, but is {h.supercompressionScheme}"
+    if h.supercompressionScheme not in (PLAIN, ZSTANDARD):
+        yield f"supercompressionScheme must be 0 or 2 (Zstandard), but is {h.supercompressionScheme}"
 
 
 def _place_rules(h: Header, data: bytes) -> Iterator[str]:
@@ -88,20 +93,26 @@ def _place_rules(h: Header, data: bytes) -> Iterator[str]:
 
 
 def _level_rules(h: Header, coding: Coding, data: bytes) -> Iterator[str]:
-    places, lengths = read_index(data, h.levelCount), level_lengths(h, coding)
+    places, sizes = read_index(data, h.levelCount), level_lengths(h, coding)
+    plain = h.supercompressionScheme == PLAIN
+    lengths = sizes if plain else [place.byteLength for place in places]
     end = h.dfdByteOffset + h.dfdByteLength + h.kvdByteLength
-    offsets = place_levels(end, lengths, level_alignment(coding))
+    offsets = place_levels(end, lengths, level_alignment(coding, h.supercompressionScheme))
+    if sum(sizes) > MAX_BYTES:
+        yield f"its levels hold {sum(sizes)} bytes, more than the {MAX_BYTES} that are read"
     for p in reversed(range(h.levelCount)):
         place = places[p]
         if place.byteLength != lengths[p]:
             yield f"level {p}: byteLength is {place.byteLength}, not {lengths[p]}"
-        if place.uncompressedByteLength != lengths[p]:
-            yield f"level {p}: uncompressedByteLength is {place.uncompressedByteLength}, not {lengths[p]}"
+        if place.uncompressedByteLength != sizes[p]:
+            yield f"level {p}: uncompressedByteLength is {place.uncompressedByteLength}, not {sizes[p]}"
         if place.byteOffset != offsets[p]:
             yield f"level {p}: byteOffset is {place.byteOffset}, not {offsets[p]} (smallest level first)"
         if any(data[end : offsets[p]]):
             yield f"level {p}: the mipPadding before it is not zero"
         end = offsets[p] + lengths[p]
+        if not plain:
+            yield from broken_frame_rules(data[offsets[p] : end], sizes[p], p)
     if len(data) < end:
         yield f"the file ends after {len(data)} bytes, inside its levels, which end at {end}"
     if len(data) > end:
