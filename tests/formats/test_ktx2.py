@@ -104,6 +104,8 @@ def test_same_texture_gives_the_same_bytes_whatever_the_order_of_its_keys():
     data=st.data(),
 )
 def test_texture_survives(pixels, width, height, cube, compress, data):
+    if pixels == "bc6h":
+        width, height = width % 9 + 1, height % 9 + 1
     height = width if cube else height
     count = data.draw(st.integers(1, max(width, height).bit_length()))
     rng = np.random.default_rng(count)

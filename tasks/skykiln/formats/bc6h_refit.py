@@ -33,6 +33,7 @@ _VALUE_COST = 0.3  # P: keeps a sun's own texels near their values
 _FLUX_COSTS = np.array([1.0, 10.0, 100.0, 100.0])  # K, round by round: first near, then exact
 _DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
 _STEPS = np.array([32, 16, 8, 4, 2, 1])
+_CHEAP = 1.05  # an improved block that costs about what its own errors did before is kept at once
 _REACH = 4  # steps around both ends of a subset that are tried together at last
 # Where the texels' spread ends: not at the last weight, values between it and the end can be hit finer.
 _SPREADS = np.array([64, 60, 55]) / 64.0
@@ -66,8 +67,11 @@ def _refit(blocks, targets, frees, refitted):
         mode = unpack_block(blocks[i], values, indices)
         best = math.inf
         if SUBSETS[mode] > 0:
+            unpaid = _cost_without_flux(mode, values, indices, targets[i], flux, scale, free)
             best = _improve(mode, values, indices, targets[i], flux, scale, free)
             pack_block(mode, values, indices, refitted[i])
+            if best < _CHEAP * unpaid:
+                continue
         for start in range(len(_ONE_SUBSET_MODES) * len(_SPREADS) * 2):
             mode = _ONE_SUBSET_MODES[start // 2 % len(_ONE_SUBSET_MODES)]
             spread = _SPREADS[start // 2 // len(_ONE_SUBSET_MODES)]
@@ -108,6 +112,14 @@ def _improve(mode, values, indices, target, flux, scale, free):
     cost = 0.0
     for c in range(3):
         cost += _improve_ends(mode, values, indices, target, c, flux[c], scale[c], free[c])
+    return cost
+
+
+@exact
+def _cost_without_flux(mode, values, indices, target, flux, scale, free):
+    cost = 0.0
+    for c in range(3):
+        cost += _channel_cost(mode, values, indices, target, c, flux[c], scale[c], free[c], 0.0)
     return cost
 
 
