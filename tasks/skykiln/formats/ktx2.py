@@ -16,7 +16,6 @@ from skykiln.formats.ktx2_layout import (
     coding_name,
     index_end,
     level_alignment,
-    level_size,
     place_levels,
     read_header,
     read_index,
@@ -24,6 +23,7 @@ from skykiln.formats.ktx2_layout import (
     write_index,
 )
 from skykiln.formats.ktx2_rules import broken_ktx2_rules
+from skykiln.formats.mip_levels import check_chain, level_size
 from skykiln.formats.pixels import PIXELS
 from skykiln.formats.zstandard_levels import compress_level, decompress_level
 
@@ -51,7 +51,7 @@ def write_ktx2(texture: Ktx2Texture, compress: int = 0) -> bytes:
     `compress` is 0 for none, or a level of Zstandard, 1 to 22: every mip level is then a frame of its own.
     """
     coding = PIXELS[texture.pixels]
-    faces, height, width, _ = _check_shapes(texture.levels, coding.channels)
+    faces, height, width = check_chain(texture.levels, coding.channels)
     plain = [coding.encode(level).tobytes() for level in texture.levels]
     stored = [compress_level(level, compress) for level in plain] if compress else plain
     scheme = ZSTANDARD if compress else PLAIN
@@ -97,13 +97,3 @@ def read_ktx2(data: bytes, name: str) -> Ktx2Texture:
 
 def _broken(name: str, rule: str) -> FileError:
     return FileError(f"{name}: not a sound KTX2 texture: {rule}; bake it again")
-
-
-def _check_shapes(levels, channels: int) -> tuple[int, int, int, int]:
-    """The base level's shape; raises ValueError where the levels are no chain of mip levels."""
-    faces, height, width, _ = base = levels[0].shape
-    for p, level in enumerate(levels):
-        expected = (faces, *level_size(width, height, p)[::-1], channels)
-        if level.shape != expected:
-            raise ValueError(f"level {p} has the shape {level.shape}, not {expected}")
-    return base

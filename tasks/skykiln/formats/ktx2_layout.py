@@ -4,6 +4,7 @@ import struct
 from math import lcm
 from typing import NamedTuple
 
+from skykiln.formats.mip_levels import level_size
 from skykiln.formats.pixels import PIXELS, Coding
 
 IDENTIFIER = b"\xabKTX 20\xbb\r\n\x1a\n"
@@ -65,11 +66,6 @@ def index_end(levels: int) -> int:
 def coding_name(vk_format: int) -> str | None:
     """The coding with this Vulkan format."""
     return next((name for name, coding in PIXELS.items() if coding.vk_format == vk_format), None)
-
-
-def level_size(width: int, height: int, level: int) -> tuple[int, int]:
-    """(width, height) of a mip level."""
-    return max(1, width >> level), max(1, height >> level)
 
 
 def level_lengths(header: Header, coding: Coding) -> list[int]:

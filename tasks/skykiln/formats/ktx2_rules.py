@@ -23,6 +23,7 @@ from skykiln.formats.ktx2_layout import (
     read_header,
     read_index,
 )
+from skykiln.formats.mip_levels import longest_chain
 from skykiln.formats.pixels import PIXELS, Coding
 from skykiln.formats.zstandard_levels import broken_frame_rules
 
@@ -67,7 +68,7 @@ def _header_rules(h: Header) -> Iterator[str]:
         yield f"pixelDepth must be 0, but is {h.pixelDepth}"
     if h.layerCount != 0:
         yield f"layerCount must be 0, but is {h.layerCount}"
-    most = max(h.pixelWidth, h.pixelHeight).bit_length()
+    most = longest_chain(h.pixelWidth, h.pixelHeight)
     if not 1 <= h.levelCount <= most:
         yield f"levelCount must be 1 to {most} for {h.pixelWidth} x {h.pixelHeight}, but is {h.levelCount}"
     if h.supercompressionScheme not in (PLAIN, ZSTANDARD):

@@ -2,7 +2,7 @@
 
 Every encoder takes radiance as float32 and keeps what it can: NaN and negative values become 0, too
 large ones the coding's largest finite value, all others are rounded to nearest. The sources are the
-Khronos Data Format specification 1.4 ("KDF") and the Vulkan format list.
+Khronos Data Format specification 1.4 ("KDF") and the format lists of Vulkan and of DXGI.
 """
 
 from collections.abc import Callable
@@ -42,6 +42,7 @@ class Coding(NamedTuple):
     block_bytes: int
     type_size: int  # of KTX2's header
     vk_format: int
+    dxgi_format: int
     model: int
     samples: tuple[Sample, ...]
     encode: Callable
@@ -74,24 +75,24 @@ _SMALL_FLOAT_SAMPLES = (
 
 PIXELS = {
     "rgba16f": Coding(
-        channels=3, block_side=1, block_bytes=8, type_size=2, vk_format=97, model=MODEL_RGBSDA,
-        samples=_half_samples(_RED, _GREEN, _BLUE, _ALPHA),
+        channels=3, block_side=1, block_bytes=8, type_size=2, vk_format=97, dxgi_format=10,
+        model=MODEL_RGBSDA, samples=_half_samples(_RED, _GREEN, _BLUE, _ALPHA),
         encode=half.encode_rgba, decode=half.decode_rgba,
     ),
     "rg16f": Coding(
-        channels=2, block_side=1, block_bytes=4, type_size=2, vk_format=83, model=MODEL_RGBSDA,
-        samples=_half_samples(_RED, _GREEN), encode=half.encode_rg, decode=half.decode_rg,
+        channels=2, block_side=1, block_bytes=4, type_size=2, vk_format=83, dxgi_format=34,
+        model=MODEL_RGBSDA, samples=_half_samples(_RED, _GREEN), encode=half.encode_rg, decode=half.decode_rg,
     ),
     "rgb9e5": Coding(
-        channels=3, block_side=1, block_bytes=4, type_size=4, vk_format=123, model=MODEL_RGBSDA,
-        samples=_SHARED_EXPONENT_SAMPLES, encode=encode_rgb9e5, decode=decode_rgb9e5,
+        channels=3, block_side=1, block_bytes=4, type_size=4, vk_format=123, dxgi_format=67,
+        model=MODEL_RGBSDA, samples=_SHARED_EXPONENT_SAMPLES, encode=encode_rgb9e5, decode=decode_rgb9e5,
     ),
     "r11g11b10f": Coding(
-        channels=3, block_side=1, block_bytes=4, type_size=4, vk_format=122, model=MODEL_RGBSDA,
-        samples=_SMALL_FLOAT_SAMPLES, encode=encode_r11g11b10f, decode=decode_r11g11b10f,
+        channels=3, block_side=1, block_bytes=4, type_size=4, vk_format=122, dxgi_format=26,
+        model=MODEL_RGBSDA, samples=_SMALL_FLOAT_SAMPLES, encode=encode_r11g11b10f, decode=decode_r11g11b10f,
     ),
     "bc6h": Coding(
-        channels=3, block_side=4, block_bytes=16, type_size=1, vk_format=143, model=MODEL_BC6H,
-        samples=(Sample(0, 127, _FLOAT, 0, _ONE),), encode=encode_bc6h, decode=decode_bc6h,
+        channels=3, block_side=4, block_bytes=16, type_size=1, vk_format=143, dxgi_format=95,
+        model=MODEL_BC6H, samples=(Sample(0, 127, _FLOAT, 0, _ONE),), encode=encode_bc6h, decode=decode_bc6h,
     ),
 }  # fmt: skip
