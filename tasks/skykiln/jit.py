@@ -67,3 +67,9 @@ def exact(function):
 def formula(function):
     """A scalar formula, inlined into the kernels that call it."""
     return numba.njit(inline="never", nogil=True, error_model="numpy", fastmath=True)(function)
+
+
+def inlined(function):
+    """A formula that is handed whole tables: it has to vanish into its caller, since passing a tuple
+    of arrays costs more than the work (measured: 340 ns a call for 16 ns of work)."""
+    return numba.njit(forceinline=True, nogil=True, error_model="numpy", fastmath=True)(function)
