@@ -38,7 +38,6 @@ from skykiln.light.walk import (
 
 _BLOCK = 256  # entries of a list that are summed at a time: they fit the nearest cache
 _DEFERRED = 8192  # nodes that a group may leave to its tiles
-_GROUP = 4  # tiles along a group's edge
 _ERRORS_PER_TEXEL = 3.0  # how many of the largest errors add up, as calibrated by the error tests
 _ROUGH = 0.2  # relative error of the first look at a group
 _DARK = 1e-3  # errors count against at least this share of the mean radiance
@@ -64,7 +63,7 @@ def filter_level(pyramid, face_size, alpha, tolerance):
         return np.zeros((6, face_size, face_size, 3), np.float32)
     norm = ggx_norm(alpha)
     tile = _tile_edge(face_size, alpha)
-    group = min(face_size, _GROUP * tile)
+    group = _group_edge(face_size, tile, alpha)
     sums = _sum_groups(
         pyramid.faces, pyramid.nodes, pyramid.offsets, FACE_AXES,
         cube_directions(face_size).astype(np.float32), tile, group, float(alpha),
@@ -78,6 +77,14 @@ def _tile_edge(face_size, alpha):
     widest = min(3.0 * alpha, 0.3)
     edge = 1
     while edge < 8 and 2 * edge <= face_size and 2 * edge * 1.6 / face_size < widest:
+        edge *= 2
+    return edge
+
+
+def _group_edge(face_size, tile, alpha):
+    """Up to four tiles, but not many lobes wide: a group looks at all it covers as finely as a lobe."""
+    edge = tile
+    while edge < 4 * tile and 2 * edge <= face_size and 2 * edge * 1.6 / face_size < 12.0 * alpha:
         edge *= 2
     return edge
 
