@@ -1,13 +1,9 @@
 """OpenEXR pictures, through the `OpenEXR` package.
 
-The package doesn't raise on damaged pixels: it prints a warning on sys.stdout and leaves the part
-out. So the header is read by itself first (sizes and layout are judged before any pixel is
-allocated), and the parts that the second read returns are counted against it.
+The header is read by itself first: sizes and layout are judged before any pixel is allocated, and the
+parts that the second read returns are counted against it.
 """
 
-import contextlib
-import io
-import sys
 from typing import NamedTuple
 
 import numpy as np
@@ -15,12 +11,12 @@ import OpenEXR
 
 from skykiln.errors import FileError
 from skykiln.formats.image import Image, check_size
+from skykiln.formats.openexr_package import open_openexr
 
 _PIXEL_TYPES = {np.dtype("float16"), np.dtype("float32")}
 _ENVMAPS = {OpenEXR.ENVMAP_LATLONG: "latlong", OpenEXR.ENVMAP_CUBE: "cube"}
 # The package takes memory for whole tiles, so a damaged tile size is judged as the picture's is.
 _TILE_PIXELS = 1 << 20
-_WARNING = "Warning: Exception raised"
 # OpenEXR's own default, also what a file without the attribute means: ITU-R BT.709, D65.
 _REC709 = (0.64, 0.33, 0.30, 0.60, 0.15, 0.06, 0.3127, 0.3290)
 
@@ -31,7 +27,7 @@ def read_openexr(path, max_pixels: int) -> Image:
     Raises: FileError for anything else, and for damaged or cut files.
     """
     name = str(path)
-    parts = _open(name, header_only=True).parts
+    parts = open_openexr(name, name, header_only=True).parts
     if len(parts) != 1:
         raise FileError(
             f"{name}: a multi-part file with {len(parts)} parts; export the picture as a single part"
@@ -88,29 +84,6 @@ def _window(corners) -> tuple[int, int, int, int]:
     return tuple(int(x) for corner in corners for x in corner)
 
 
-def _open(name: str, header_only: bool):
-    """The package's file object; raises with the cause that it only prints."""
-    printed = io.StringIO()
-    try:
-        with contextlib.redirect_stdout(printed):
-            file = OpenEXR.File(name, separate_channels=True, header_only=header_only)
-    except Exception as error:
-        raise FileError(
-            f"{name}: not a readable OpenEXR file ({error}); its header is damaged or cut: export it again"
-        ) from error
-    finally:
-        lines = printed.getvalue().splitlines()
-        # What other threads printed meanwhile goes where it was meant to go.
-        for line in lines:
-            if line and not line.startswith(_WARNING):
-                print(line, file=sys.stdout)
-    warnings = [line for line in lines if line.startswith(_WARNING)]
-    if warnings:
-        cause = warnings[0].rpartition(" - ")[2].strip()
-        raise FileError(f"{name}: damaged or cut pixel data ({cause}); export it again")
-    return file
-
-
 def _check_header(name: str, header: _Header, max_pixels: int) -> None:
     """Judge size and layout by the header alone."""
     check_size(name, header.width, header.height, max_pixels)
@@ -145,7 +118,7 @@ def _check_channels(name: str, header: _Header) -> None:
 
 
 def _read_channels(name: str) -> dict:
-    parts = _open(name, header_only=False).parts
+    parts = open_openexr(name, name, header_only=False).parts
     if len(parts) != 1:
         raise FileError(f"{name}: damaged or cut pixel data; export it again")
     return parts[0].channels
