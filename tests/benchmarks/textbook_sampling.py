@@ -1,10 +1,10 @@
 """The baseline of the filter benchmarks: textbook GGX importance sampling with mip-filtered lookups.
 
 Per texel 1,024 Hammersley points (Hammersley 1960), half vectors by the inverse transform of the GGX
-distribution (Walter et al. 2007, equations 35 and 36), each lookup from the box-filtered mip level whose
-texel matches the sample's share of the sphere (Colbert and Krivanek 2007), bilinear within a face. The
-sample vectors in the lobe's own frame, their weights and mip levels are the same for every texel and are
-made once, as a careful implementation does.
+distribution (Walter et al. 2007, equations 35 and 36), each lookup trilinear between the two box-filtered
+mip levels around the one whose texel matches the sample's share of the sphere (Colbert and Krivanek
+2007). The sample vectors in the lobe's own frame, their weights and mip levels are the same for every
+texel and are made once, as a careful implementation does.
 """
 
 import math
@@ -51,8 +51,8 @@ def sampled_level(faces, mips, face_size, alpha):
     flat, offsets, sizes = mips
     l, weight, level = lobe_samples(alpha, faces.shape[1])
     directions = cube_directions(face_size).astype(np.float32).reshape(-1, 3)
-    nearest = np.minimum(np.rint(level), len(sizes) - 1).astype(np.int64)
-    result = _sample(flat, offsets, sizes, directions, l, weight, nearest)
+    level = np.minimum(level, len(sizes) - 1.001)
+    result = _sample(flat, offsets, sizes, directions, l, weight, level)
     return result.reshape(6, face_size, face_size, 3)
 
 
@@ -79,26 +79,26 @@ def _sample(flat, offsets, sizes, directions, l, weight, level):
                 face, m, s, r = (2, ay, x, z) if y > 0 else (3, ay, x, -z)
             else:
                 face, m, s, r = (4, az, x, -y) if z > 0 else (5, az, -x, -y)
-            size = sizes[level[k]]
-            scale = half * np.float32(size)
             inverse = one / m
-            u = (s * inverse + one) * scale - half
-            v = (r * inverse + one) * scale - half
-            u = min(max(u, np.float32(0)), np.float32(size - 1))
-            v = min(max(v, np.float32(0)), np.float32(size - 1))
-            i, j = int(u), int(v)
-            fu, fv = u - np.float32(i), v - np.float32(j)
-            i1, j1 = min(i + 1, size - 1), min(j + 1, size - 1)
-            base = offsets[level[k]]
-            p00, p01 = base + j * size + i, base + j * size + i1
-            p10, p11 = base + j1 * size + i, base + j1 * size + i1
-            w = weight[k]
-            w00, w01 = w * (one - fu) * (one - fv), w * fu * (one - fv)
-            w10, w11 = w * (one - fu) * fv, w * fu * fv
-            row = flat[face]
-            red += w00 * row[p00, 0] + w01 * row[p01, 0] + w10 * row[p10, 0] + w11 * row[p11, 0]
-            green += w00 * row[p00, 1] + w01 * row[p01, 1] + w10 * row[p10, 1] + w11 * row[p11, 1]
-            blue += w00 * row[p00, 2] + w01 * row[p01, 2] + w10 * row[p10, 2] + w11 * row[p11, 2]
-            total += w
+            s, r = s * inverse, r * inverse
+            upper = int(level[k])
+            blend = level[k] - np.float32(upper)
+            for part in range(2):
+                w = weight[k] * (blend if part else one - blend)
+                row, size, base = flat[face], sizes[upper + part], offsets[upper + part]
+                scale = half * np.float32(size)
+                u = min(max((s + one) * scale - half, np.float32(0)), np.float32(size - 1))
+                v = min(max((r + one) * scale - half, np.float32(0)), np.float32(size - 1))
+                i, j = int(u), int(v)
+                fu, fv = u - np.float32(i), v - np.float32(j)
+                i1, j1 = min(i + 1, size - 1), min(j + 1, size - 1)
+                p00, p01 = base + j * size + i, base + j * size + i1
+                p10, p11 = base + j1 * size + i, base + j1 * size + i1
+                w00, w01 = w * (one - fu) * (one - fv), w * fu * (one - fv)
+                w10, w11 = w * (one - fu) * fv, w * fu * fv
+                red += w00 * row[p00, 0] + w01 * row[p01, 0] + w10 * row[p10, 0] + w11 * row[p11, 0]
+                green += w00 * row[p00, 1] + w01 * row[p01, 1] + w10 * row[p10, 1] + w11 * row[p11, 1]
+                blue += w00 * row[p00, 2] + w01 * row[p01, 2] + w10 * row[p10, 2] + w11 * row[p11, 2]
+            total += weight[k]
         result[t, 0], result[t, 1], result[t, 2] = red / total, green / total, blue / total
     return result
