@@ -102,8 +102,14 @@ def test_plan_as_json_tells_every_state(pipeline, capsys):
     assert states["irradiance of ferry_noon"]["reasons"] == ["face_size was 2, is 4"]
 
 
-def test_plan_changes_nothing_on_disk(pipeline, capsys):
-    _run(capsys, "plan")
+def test_plan_tells_a_whole_chain_in_one_line_and_changes_nothing_on_disk(pipeline, capsys):
+    _, out, _ = _run(capsys, "plan")
+    assert out.splitlines() == [
+        "will run: BRDF table of all probes: was never baked",
+        "will run: all 7 stages of ferry_noon: was never baked",
+        "will run: all 7 stages of quay_night: was never baked",
+        "15 will run, 0 may run, 0 up to date",
+    ]
     assert not pipeline.build.exists()
 
 

@@ -1,12 +1,12 @@
 """Running a stage: what is written in which order, what is left after a failure."""
 
 import json
+import os
 from pathlib import Path
 
 import pytest
 from small_stages import Multiply, ReadNumber, Sum, sketch_of_sum, write_source
 
-from skykiln.engine import atomic
 from skykiln.engine.failures import read_failure
 from skykiln.engine.lots import bake_depth_first, bake_lot
 from skykiln.engine.running import run_stage
@@ -84,28 +84,29 @@ def test_stamp_goes_before_outputs_appear_and_comes_after(tmp_path, monkeypatch)
     assert seen == [("number.json", False), ("remark.json", False), ("number.json.stamp", False)]
 
 
-def test_bytes_and_names_reach_the_disk_in_order(tmp_path, monkeypatch):
-    """Every file is synced before it is renamed, its folder after; the old stamp is gone from disk first."""
+@pytest.mark.parametrize("published", [False, True])
+def test_bytes_and_names_reach_the_disk_in_order(tmp_path, monkeypatch, published):
+    """Outputs are synced before any appears; of published ones the folder before the last appears."""
     write_source(tmp_path, "20 first")
     _ran(tmp_path)
-    write_source(tmp_path, "30 first")
+    write_source(tmp_path, "30 second")
+    monkeypatch.setattr(ReadNumber, "published", published)
     steps = []
 
     def traced(name, function):
-        def call(*arguments):
+        def call(*arguments, **options):
             steps.append(name)
-            return function(*arguments)
+            return function(*arguments, **options)
 
         return call
 
-    monkeypatch.setattr(atomic, "_write_to_disk", traced("write and sync file", atomic._write_to_disk))
+    monkeypatch.setattr(os, "fsync", traced("sync", os.fsync))
+    monkeypatch.setattr(Path, "unlink", traced("remove stamp", Path.unlink))
     monkeypatch.setattr(Path, "replace", traced("rename", Path.replace))
-    sync_folder = traced("sync folder", atomic.sync_folder)
-    for module in ("atomic", "running"):
-        monkeypatch.setattr(f"skykiln.engine.{module}.sync_folder", sync_folder)
     bake_depth_first(sketch_of_sum(tmp_path, pin="2", stage=ReadNumber), {})
-    one_file = ["rename", "sync folder"]
-    assert steps == ["write and sync file", "sync folder", *one_file, "write and sync file", *one_file]
+    folder = ["sync"] if published else []
+    *steps, _ = steps  # last of all the failure of an earlier run is removed
+    assert steps == ["sync", "sync", "remove stamp", "rename", *folder, "rename", "rename"]
 
 
 def test_failure_is_recorded_with_its_cause_and_removed_by_success(tmp_path):

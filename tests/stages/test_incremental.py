@@ -1,11 +1,14 @@
 """What reruns after which change: no more and no less."""
 
+import dataclasses
+
 import pytest
-from tiny_pipeline import TinyPipeline, everything, sky_pixels, touch, write_sky
 
 from skykiln.engine.staleness import MAY_RUN, WILL_RUN
+from skykiln.stages import shares
 from skykiln.stages.decode_source import DecodeSource
 from skykiln.stages.filter_level import FilterLevel
+from tiny_pipeline import TinyPipeline, everything, sky_pixels, touch, write_sky
 
 CHAIN = [
     "panorama of ferry_noon",
@@ -18,8 +21,10 @@ CHAIN = [
 ]
 
 
-@pytest.fixture
-def pipeline(tmp_path):
+@pytest.fixture(params=["in lots", "stage by stage"])
+def pipeline(tmp_path, monkeypatch, request):
+    if request.param == "stage by stage":
+        monkeypatch.setattr(shares, "BIG_SECONDS", 0.0)
     pipeline = TinyPipeline(tmp_path)
     pipeline.bake()
     return pipeline
@@ -145,6 +150,19 @@ def test_again_runs_everything_and_publishes_the_same_bytes(pipeline):
     after = everything(pipeline.build)
     assert {name: after[name] for name in before} == before  # not even the times changed
     assert pipeline.night_record()["shared"][0]["reason"] == "was asked for again"
+
+
+def test_name_with_characters_of_patterns_means_itself(tmp_path):
+    pipeline = TinyPipeline(tmp_path, probes=["stair [up]", "stair u", "stair"])
+    assert [probe.owner for probe in pipeline.snapshot("stair [up]").probes] == ["stair [up]"]
+    assert [probe.owner for probe in pipeline.snapshot("stair [u]").probes] == ["stair u"]
+
+
+def test_name_that_leads_out_of_the_build_folder_is_a_bug(tmp_path):
+    pinned = TinyPipeline(tmp_path).snapshot().probes[0].pinned
+    for name in ("../elsewhere", "/elsewhere", "a/../../b"):
+        with pytest.raises(ValueError, match="leads out of the build folder"):
+            dataclasses.replace(pinned, probe=dataclasses.replace(pinned.probe, name=name))
 
 
 def test_named_probe_is_baked_alone(tmp_path):

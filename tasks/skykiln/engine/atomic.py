@@ -1,8 +1,8 @@
 """Files that appear whole or not at all.
 
 A file is written beside its place under a name that holds host and process, brought to the disk
-(fsync), renamed into its place, and the rename brought to the disk (fsync of the folder). Whoever is
-killed on the way leaves a file that no reader looks at and that the next bake sweeps away.
+(fsync) where it must outlive a power cut, and renamed into its place. Whoever is killed on the way
+leaves a file that no reader looks at and that the next bake sweeps away.
 """
 
 import os
@@ -32,17 +32,18 @@ def temporary_name(path: Path) -> Path:
     return path.with_name(f".{path.name}.{_host()}.{os.getpid()}{SUFFIX}")
 
 
-def write_beside(path: Path, chunks) -> Path:
-    """Write chunks of bytes beside `path` and to the disk.
+def write_beside(path: Path, chunks, synced: bool = True) -> Path:
+    """Write chunks of bytes beside `path`.
 
-    Returns: the temporary file
-    Raises:  FileError naming `path`; nothing is left then
+    Parameters: synced : whether the bytes must be on the disk before this returns
+    Returns:    the temporary file
+    Raises:     FileError naming `path`; nothing is left then
     """
     beside = temporary_name(path)
     with told_as_file_error(path):
         path.parent.mkdir(parents=True, exist_ok=True)
         try:
-            _write_to_disk(beside, chunks)
+            _write(beside, chunks, synced)
         except BaseException:
             beside.unlink(missing_ok=True)
             raise
@@ -50,15 +51,14 @@ def write_beside(path: Path, chunks) -> Path:
 
 
 def rename_into_place(beside: Path, path: Path):
-    """Let the finished file appear under its own name, and keep it there through a power cut."""
+    """Let the finished file appear under its own name."""
     with told_as_file_error(path):
         beside.replace(path)
-        sync_folder(path.parent)
 
 
-def write_atomically(path: Path, chunks):
+def write_atomically(path: Path, chunks, synced: bool = True):
     """Write a file in one go."""
-    rename_into_place(write_beside(path, chunks), path)
+    rename_into_place(write_beside(path, chunks, synced), path)
 
 
 def remove(path: Path):
@@ -77,7 +77,7 @@ def sweep(folder: Path):
 
 
 def sync_folder(folder: Path):
-    """Bring a folder's names to the disk."""
+    """Bring a folder's names to the disk: what was renamed in it stays so through a power cut."""
     handle = os.open(folder, os.O_RDONLY)
     try:
         os.fsync(handle)
@@ -85,12 +85,13 @@ def sync_folder(folder: Path):
         os.close(handle)
 
 
-def _write_to_disk(path, chunks):
+def _write(path, chunks, synced):
     with path.open("wb") as file:
         for chunk in chunks:
             file.write(chunk)
-        file.flush()
-        os.fsync(file.fileno())
+        if synced:
+            file.flush()
+            os.fsync(file.fileno())
 
 
 def _host():

@@ -31,7 +31,8 @@ def recorded(stage):
     try:
         yield
     except Exception as error:
-        write_atomically(_path(stage), [json_bytes(_failure(stage, error)._asdict())])
+        data = json_bytes(_failure(stage, error)._asdict())
+        write_atomically(_path(stage), [data], synced=False)
         raise
     remove(_path(stage))
 

@@ -40,7 +40,7 @@ class Pins:
     def save(self):
         """Write the cache if it learnt something."""
         if self._changed:
-            write_atomically(self.store, [json_bytes(self._entries)])
+            write_atomically(self.store, [json_bytes(self._entries)], synced=False)
             self._changed = False
 
     def _digest(self, path, status):

@@ -1,7 +1,12 @@
 """Running a stage: read, make, put the outputs and then the stamp in place.
 
-The order that makes a kill harmless: outputs are written beside and brought to the disk; the inputs
-are checked once more; the old stamp goes; the outputs appear, in the stage's order; the stamp appears.
+The order that makes a kill harmless: the inputs are checked once more; the outputs are written beside
+and brought to the disk; the old stamp goes; the outputs appear, in the stage's order; the stamp appears.
+
+A power cut may undo renames in any order. That is harmless too, and costs no more syncs: a stamp holds
+size, time and digest of its outputs, so one that came back beside other bytes is not believed, and one
+that is lost only makes its stage run again. Only for published files the folder is synced before the
+last of them, probe.json, appears: readers have no stamps.
 """
 
 import time
@@ -69,21 +74,16 @@ def _place(stage, contents):
 def _appear(stage, files, fresh):
     superseded = stage.superseded()
     if fresh or superseded:
-        _drop_stamp(Path(stage.stamp_path))
+        remove(Path(stage.stamp_path))
     last = next(reversed(files))
-    for role, path in files.items():
-        if role == last:
-            for old in superseded:
-                remove(old)
-        if role in fresh:
-            rename_into_place(fresh[role], path)
-
-
-def _drop_stamp(path):
-    """No stamp may outlive its outputs, not even through a power cut."""
-    if path.exists():
-        remove(path)
-        sync_folder(path.parent)
+    for role in [role for role in fresh if role != last]:
+        rename_into_place(fresh[role], files[role])
+    for old in superseded:
+        remove(old)
+    if last in fresh:
+        if stage.published:
+            sync_folder(files[last].parent)
+        rename_into_place(fresh[last], files[last])
 
 
 def _holds(path, chunks, digest):

@@ -1,9 +1,16 @@
 """Stage: the base of all stages, a Luigi task that reruns only when a content change reaches it.
 
-A stage declares: `version`, bumped when its run would write other bytes; `requires`, the stages it
-reads by role; `files`, the outputs by role; `settings`, the parameters that its run itself reads; and
-`make`, which turns inputs into outputs. Parameters that are only handed down to other stages stay out
-of `settings`: their effect arrives through the digests of the inputs.
+A stage declares
+
+    version     bumped when its run would write other bytes
+    title       what it makes, in words; owner: the name of the probe it makes it for
+    files()     role -> path of each output, in the order in which they are to appear
+    requires()  role -> the stage that is read; one with several outputs gives the one named like the role
+    settings()  the parameters that its run itself reads, as JSON would give them back
+    make(inputs)  role -> Input in; role -> array, dict (for JSON) or bytes out
+
+Parameters that are only handed down to other stages stay out of `settings`: their effect arrives
+through the digests of the inputs.
 """
 
 import luigi
@@ -17,6 +24,7 @@ class Stage(luigi.Task):
 
     task_namespace = "skykiln"
     version = 1
+    published = False  # whether others than stages read the outputs
     sketched = False
 
     @classmethod
@@ -39,34 +47,14 @@ class Stage(luigi.Task):
         return other.sketch(**parameters) if self.sketched else other(**parameters)
 
     @property
-    def owner(self) -> str:
-        """The name of the probe, or of whatever else this is a stage of."""
-        raise TypeError(f"{type(self).__name__} doesn't say whose stage it is")
-
-    @property
-    def title(self) -> str:
-        """What the stage makes, in words."""
-        raise TypeError(f"{type(self).__name__} has no title")
-
-    @property
     def label(self) -> str:
         """What the stage makes, and for whom: 'specular level 3 of ferry_noon'."""
         return f"{self.title} of {self.owner}"
 
-    def files(self) -> dict:
-        """Role -> path of each output, in the order in which they are to appear."""
-        raise TypeError(f"{type(self).__name__} has no outputs")
-
-    def make(self, inputs: dict) -> dict:
-        """Role -> Input in; role -> array, dict (JSON) or bytes out."""
-        raise TypeError(f"{type(self).__name__} makes nothing")
-
     def requires(self) -> dict:
-        """Role -> the stage that is read. A stage with several outputs gives the one named like the role."""
         return {}
 
     def settings(self) -> dict:
-        """The parameters that `make` reads, as JSON would give them back."""
         return {}
 
     def pins(self) -> dict:

@@ -79,7 +79,7 @@ def read_stamp(path) -> Stamp | None:
 
 def write_stamp(path, stamp: Stamp):
     """Put a stamp in its place."""
-    write_atomically(Path(path), [stamp.to_bytes()])
+    write_atomically(Path(path), [stamp.to_bytes()], synced=False)
 
 
 def void_stamp(path, why: str):

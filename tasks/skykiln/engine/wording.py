@@ -10,10 +10,20 @@ from .staleness import MAY_RUN, UP_TO_DATE, WILL_RUN
 def plan_lines(chains):
     """A line for every stage that would run and why, and the count of all."""
     for chain in chains:
-        for verdict in chain.stale:
-            yield f"{verdict.state}: {verdict.stage.label}: {'; '.join(verdict.reasons)}"
+        yield from _stale_lines(chain)
     states = Counter(verdict.state for chain in chains for verdict in chain.verdicts)
     yield f"{states[WILL_RUN]} will run, {states[MAY_RUN]} may run, {states[UP_TO_DATE]} up to date"
+
+
+def _stale_lines(chain):
+    """A line per stale stage, or one for all of them when all would run for the same reason."""
+    whole = {(verdict.state, verdict.reasons) for verdict in chain.verdicts}
+    if len(whole) == 1 < len(chain.stale):
+        state, reasons = whole.pop()
+        yield f"{state}: all {len(chain.verdicts)} stages of {chain.target.owner}: {'; '.join(reasons)}"
+        return
+    for verdict in chain.stale:
+        yield f"{verdict.state}: {verdict.stage.label}: {'; '.join(verdict.reasons)}"
 
 
 def plan_record(chains) -> list:

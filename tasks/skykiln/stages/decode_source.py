@@ -55,7 +55,11 @@ class DecodeSource(ProbeStage):
         return {"pixels": pixels if scale == 1 else pixels * pixels.dtype.type(scale), "facts": facts}
 
     def _check_pin(self, path):
-        if digest_file(path) != self.pinned.pin:
+        try:
+            digest = digest_file(path)
+        except OSError:
+            digest = None
+        if digest != self.pinned.pin:
             raise FileError(f"{path}: changed since the bake began; bake again")
 
 

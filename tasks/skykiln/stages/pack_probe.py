@@ -49,10 +49,12 @@ class PackProbe(ProbeStage):
         *chain, cube = [source.array() for source in inputs.values()]
         stops = shared_storage_ev([*chain, cube])
         entry = self._entry()
+        # Not the release: files would change with every one of them.
+        shared = entry.cube_axes, stops, f"skykiln PackProbe {self.version}"
         specular, *irradiance = packed_names(self.probe)[self.pack]
-        contents = {specular: pack_faces(chain, entry.pixels, entry.cube_axes, stops)}
+        contents = {specular: pack_faces(chain, entry.pixels, *shared)}
         for name in irradiance:
-            contents[name] = pack_faces([cube], self.probe.irradiance_pixels, entry.cube_axes, stops)
+            contents[name] = pack_faces([cube], self.probe.irradiance_pixels, *shared)
         facts = {
             "storage_ev": stops,
             "face_sizes": [level.shape[1] for level in chain],

@@ -13,19 +13,30 @@ def shared_storage_ev(cubes) -> int:
     return storage_ev(max(float(cube.max()) for cube in cubes))
 
 
-def pack_faces(levels, pixels, cube_axes, stops) -> bytes:
+def pack_faces(levels, pixels, cube_axes, stops, writer) -> bytes:
     """A KTX2 cube of world faces.
 
     Parameters: levels : arrays (6, n, n, 3), the largest first; pixels : name of the coding
+                writer : what packs, and which version of it
     """
-    images = [to_cube_space(np.ldexp(level, -stops), cube_axes) for level in levels]
-    metadata = {"skykiln.cube_axes": cube_axes, "skykiln.storage_ev": str(stops)}
+    images = [to_cube_space(darkened(level, stops), cube_axes) for level in levels]
+    metadata = {
+        "KTXwriter": writer,
+        "skykiln.cube_axes": cube_axes,
+        "skykiln.storage_ev": str(stops),
+    }
     return write_ktx2(Ktx2Texture(pixels, tuple(images), metadata))
+
+
+def darkened(cube, stops):
+    """Stored values of radiance: exact, a power of two only moves the exponent."""
+    return cube * np.float32(2.0**-stops)
 
 
 def share_lost(faces, stops) -> float:
     """Share of the flux of faces (6, n, n, 3) that is above the largest stored value after darkening."""
-    kept = np.minimum(np.ldexp(faces, -stops), np.float32(STORED_MAX))
+    above = np.maximum(darkened(faces, stops) - np.float32(STORED_MAX), 0)
+    if not above.any():
+        return 0.0
     weights = cube_texel_solid_angles(faces.shape[1])[None, :, :, None]
-    total = float((faces * weights).sum())
-    return max(0.0, 1.0 - float((np.ldexp(kept, stops) * weights).sum()) / total) if total else 0.0
+    return float((above * weights).sum() * 2.0**stops / (faces * weights).sum())

@@ -15,6 +15,7 @@ class PublishProbe(ProbeStage):
 
     version = 1
     title = "published files"
+    published = True
 
     def requires(self):
         packs = [self.of_same(PackProbe, pack=name) for name in packed_names(self.probe)]

@@ -4,6 +4,7 @@ Roots alone read the pipeline file. They pin the sources when Luigi asks whether
 and hold to these pins while it runs what they require.
 """
 
+import functools
 import json
 import os
 from pathlib import Path
@@ -27,7 +28,7 @@ class BakeProbe(luigi.Task):
     _snapshot = None
 
     def complete(self):
-        self._snapshot = Snapshot(load_pipeline(self.pipeline), [self.name])
+        self._snapshot = Snapshot(_loaded(self.pipeline), [self.name])
         return all(staleness(target, {}).up_to_date for target in self._snapshot.targets)
 
     def requires(self):
@@ -36,7 +37,7 @@ class BakeProbe(luigi.Task):
         return [target.full() for target in self._snapshot.targets]
 
     def output(self):
-        return luigi.LocalTarget(load_pipeline(self.pipeline).build_dir / "probes" / self.name / "probe.json")
+        return luigi.LocalTarget(_loaded(self.pipeline).build_dir / "probes" / self.name / "probe.json")
 
 
 class BakeAll(luigi.Task):
@@ -77,7 +78,19 @@ class BakeAll(luigi.Task):
             write_record(self._night, self._snapshot)
 
     def output(self):
-        return luigi.LocalTarget(night_file(load_pipeline(self.pipeline)))
+        return luigi.LocalTarget(night_file(_loaded(self.pipeline)))
+
+
+def _loaded(path):
+    """The pipeline of a file, read once for the many probes that a user's pipeline may require."""
+    found = Path(path)
+    status = found.stat() if found.exists() else None
+    return _load(path, status and (status.st_mtime_ns, status.st_size, status.st_ino))
+
+
+@functools.lru_cache(maxsize=8)
+def _load(path, seen):
+    return load_pipeline(path)
 
 
 def _is_written(path: Path, started):

@@ -58,5 +58,5 @@ def _lots(targets, build_dir, workers):
         return []
     manifest = canonical_json([[pinned.to_json() for pinned in lot] for lot in lots]).encode()
     path = build_dir / "work" / ".lots" / f"{hashlib.sha256(manifest).hexdigest()[:16]}.json"
-    write_atomically(path, [manifest])
+    write_atomically(path, [manifest], synced=False)
     return [BakeLot(manifest=str(path), number=number) for number in range(len(lots))]

@@ -45,14 +45,17 @@ def matching(probes, patterns) -> list:
     Raises: PipelineError naming every pattern that matches nothing, with the nearest name
     """
     names = [probe.name for probe in probes]
-    lost = [pattern for pattern in patterns if not fnmatch.filter(names, pattern)]
+    chosen = {pattern: _matches(pattern, names) for pattern in patterns}
+    lost = [pattern for pattern, found in chosen.items() if not found]
     if lost:
         raise PipelineError([_nothing_called(pattern, names) for pattern in lost])
-    return [
-        probe
-        for probe in probes
-        if not patterns or any(fnmatch.fnmatchcase(probe.name, pattern) for pattern in patterns)
-    ]
+    wanted = set().union(*chosen.values()) if patterns else set(names)
+    return [probe for probe in probes if probe.name in wanted]
+
+
+def _matches(pattern, names):
+    """A probe's own name means that probe, whatever characters of patterns it holds."""
+    return {pattern} if pattern in names else {n for n in names if fnmatch.fnmatchcase(n, pattern)}
 
 
 def _nothing_called(pattern, names):

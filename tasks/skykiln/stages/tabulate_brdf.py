@@ -12,6 +12,7 @@ class TabulateBrdf(Stage):
     """The table as a texture, and its albedos as JSON."""
 
     version = 1
+    published = True
     build_dir = luigi.Parameter()
     size = luigi.IntParameter()
 
@@ -33,7 +34,8 @@ class TabulateBrdf(Stage):
         from ..light.brdf import average_albedo, brdf_table, directional_albedo
 
         table = brdf_table(self.size)
-        texture = write_ktx2(Ktx2Texture("rg16f", (table[None].astype("float32"),), {}))
+        metadata = {"KTXwriter": f"skykiln TabulateBrdf {self.version}"}
+        texture = write_ktx2(Ktx2Texture("rg16f", (table[None].astype("float32"),), metadata))
         record = {
             "schema": 1,
             "size": self.size,
