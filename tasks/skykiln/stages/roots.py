@@ -43,7 +43,10 @@ class BakeProbe(luigi.Task):
 class BakeAll(luigi.Task):
     """One night: every probe of the pipeline, and night.json, which is its output.
 
-    night : tells one night from another; by default the time at which the process began
+    Luigi doesn't run what requires a failed task: after a failure night.json stays that of the last
+    good night here, where `skykiln bake` writes one that names the failures.
+
+    night : ISO 8601 time that tells one night from another; by default when the process began
     """
 
     task_namespace = "skykiln"
