@@ -14,6 +14,8 @@ from skykiln.formats.bc6h_layout import MODES
 from skykiln.formats.bc6h_pack import pack_block
 from skykiln.formats.bc6h_refit import refit_blocks
 
+NO_PEAK = np.zeros(3, np.int64)
+
 
 def coded(colours):
     """What stays of (faces, h, w, 3) after coding."""
@@ -97,12 +99,18 @@ def test_small_sun_keeps_its_energy(radius):
     kept = coded(colours)
     energy = kept.sum((0, 1, 2), np.float64) / colours.sum((0, 1, 2), np.float64)
     np.testing.assert_allclose(energy, 1, atol=3e-3)
-    assert log_error(kept, colours) <= 1.05 * log_error(bare_encoder(colours), colours)
+    # Only the sun's own blocks pay for it.
+    bare = bare_encoder(colours)
+    elsewhere = [f for f in range(6) if f != 4]
+    np.testing.assert_allclose(
+        log_error(kept[elsewhere], colours[elsewhere]),
+        log_error(bare[elsewhere], colours[elsewhere]),
+        rtol=1e-3,
+    )
+    assert log_error(kept, colours) <= 1.5 * log_error(bare, colours)
 
 
 def test_wide_sun_keeps_its_peak():
-    # A sun's rim and its middle fall on a few indices of one block: the peak of a smaller one can be
-    # several per cent off where its flux is right.
     colours = sunlit_sky(128, 3)
     assert coded(colours).max() == pytest.approx(colours.max(), rel=0.02)
 
@@ -116,7 +124,7 @@ def test_refitting_puts_flux_right():
     halves = np.full((1, 16, 3), np.float16(2).view(np.uint16))
     halves[0, 5] = np.float16(20000).view(np.uint16)
     spoiled = np.zeros((1, 2), np.uint64)  # black: mode 0, all zero
-    refitted = decode_blocks(refit_blocks(spoiled, halves, np.full((1, 3), 5e-4)))
+    refitted = decode_blocks(refit_blocks(spoiled, halves, np.full((1, 3), 5e-4), NO_PEAK))
     flux = refitted.view(np.float16).astype(float).sum(1) / halves.view(np.float16).astype(float).sum(1)
     np.testing.assert_allclose(flux, 1, atol=2e-3)
 
@@ -125,7 +133,8 @@ def test_refitting_keeps_an_exact_block():
     colours = np.full((1, 4, 4, 3), 3.5, np.float32)
     block = encode_bc6h(colours)
     halves = decode_blocks(block)
-    np.testing.assert_array_equal(decode_blocks(refit_blocks(block, halves, np.full((1, 3), 1e-3))), halves)
+    refitted = refit_blocks(block, halves, np.full((1, 3), 1e-3), NO_PEAK)
+    np.testing.assert_array_equal(decode_blocks(refitted), halves)
 
 
 def test_same_bytes_for_every_number_of_threads(monkeypatch):

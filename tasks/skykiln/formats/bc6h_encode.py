@@ -22,6 +22,7 @@ _STRIP = 4096  # blocks that one call encodes
 _OFF = 0.01  # a channel's flux in a block that is wrong by this share is put right,
 _OFF_LEVEL = 5e-4  # or by this share of the whole level's,
 _OFF_TEXEL = 0.02  # or a texel by this share of its block's flux
+_MANY = 384  # blocks of a level (32 x 32 faces) whose peak is kept; few blocks have no bits to spare for it
 _DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
 
 
@@ -31,7 +32,8 @@ def encode_bc6h(colours) -> np.ndarray:
     blocks = _encode(halves)
     off, free = _judge(halves, decode_blocks(blocks))
     if len(off):
-        blocks[off] = refit_blocks(blocks[off], halves[off], free)
+        peak = halves.max((0, 1)).astype(np.int64) if len(halves) >= _MANY else np.zeros(3, np.int64)
+        blocks[off] = refit_blocks(blocks[off], halves[off], free, peak)
     return blocks
 
 
