@@ -1,4 +1,4 @@
-"""The samples hold what they promise: light levels by closed forms, the sun's flux, the script's own pixels."""
+"""The samples hold what they promise: light levels, the sun's flux, the script's own pixels."""
 
 import sys
 from pathlib import Path
