@@ -6,6 +6,7 @@ levels are repeated up to a block.
 """
 
 from concurrent.futures import ThreadPoolExecutor
+from typing import NamedTuple
 
 import numba
 import numpy as np
@@ -18,7 +19,7 @@ from skykiln.jit import exact
 
 _PROFILE = "basic"
 _ONE = 0x3C00  # half bits of the alpha that the encoder leaves unread
-_STRIP = 4096  # blocks that one call encodes
+_STRIP = 2048  # blocks that one call encodes, about
 _OFF = 0.01  # a channel's flux in a block that is wrong by this share is put right,
 _OFF_LEVEL = 5e-4  # or by this share of the whole level's,
 _OFF_TEXEL = 0.02  # or a texel by this share of its block's flux
@@ -26,23 +27,55 @@ _MANY = 384  # blocks of a level (32 x 32 faces) whose peak is kept; few blocks 
 _DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
 
 
+class _Band(NamedTuple):
+    """Some rows of blocks of one picture: what was wanted, what was made, and how far that is off."""
+
+    halves: np.ndarray  # (count, 16, 3) uint16
+    blocks: np.ndarray  # (count, 2) uint64
+    flux: np.ndarray  # (count, 3) float64, the sum of the values wanted
+    error: np.ndarray  # the error of that sum
+    worst: np.ndarray  # the largest error of one texel
+
+
 def encode_bc6h(colours) -> np.ndarray:
     """(..., h, w, 3) float32 -> (blocks, 2) uint64, low half first, picture by picture, row by row."""
-    halves = _cut_into_blocks(nearest_half(colours).view(np.uint16))
-    blocks = _encode(halves)
-    off, free = _judge(halves, decode_blocks(blocks))
+    encoder = _encoder()
+    with ThreadPoolExecutor(numba.get_num_threads()) as threads:
+        bands = list(threads.map(lambda band: _encode_band(encoder, band), _bands(colours)))
+    level = _Band(*(np.concatenate(parts) for parts in zip(*bands, strict=True)))
+    off, free = _judge(level)
     if len(off):
-        peak = halves.max((0, 1)).astype(np.int64) if len(halves) >= _MANY else np.zeros(3, np.int64)
-        blocks[off] = refit_blocks(blocks[off], halves[off], free, peak)
-    return blocks
+        many = len(level.halves) >= _MANY
+        peak = level.halves.max((0, 1)).astype(np.int64) if many else np.zeros(3, np.int64)
+        level.blocks[off] = refit_blocks(level.blocks[off], level.halves[off], free, peak)
+    return level.blocks
 
 
-def _cut_into_blocks(pictures) -> np.ndarray:
-    """(..., h, w, 3) -> (blocks, 16, 3); partial blocks are filled by repeating texels."""
-    *_, height, width, _ = pictures.shape
-    rows, columns = _texel_numbers(height), _texel_numbers(width)
-    whole = pictures.reshape(-1, height, width, 3)[:, rows][:, :, columns]
-    cut = whole.reshape(-1, len(rows) // 4, 4, len(columns) // 4, 4, 3).transpose(0, 1, 3, 2, 4, 5)
+def _bands(colours):
+    """Rows of pictures, in the blocks' order: each some `_STRIP` blocks."""
+    *_, height, width, _ = colours.shape
+    rows = 4 * max(1, _STRIP * 4 // width)
+    for picture in colours.reshape(-1, height, width, 3):
+        for row in range(0, height, rows):
+            yield picture[row : row + rows]
+
+
+def _encode_band(encoder, colours) -> _Band:
+    halves = _cut_into_blocks(nearest_half(colours).view(np.uint16))
+    encoded = _call_encoder(encoder, halves)
+    blocks = np.frombuffer(encoded, "<u8").reshape(-1, 2)
+    flux, error, worst = (np.empty((len(halves), 3)) for _ in range(3))
+    _compare(halves, decode_blocks(blocks), flux, error, worst)
+    return _Band(halves, blocks, flux, error, worst)
+
+
+def _cut_into_blocks(picture) -> np.ndarray:
+    """(h, w, 3) -> (blocks, 16, 3); partial blocks are filled by repeating texels."""
+    height, width, _ = picture.shape
+    if height % 4 or width % 4:
+        picture = picture[_texel_numbers(height)][:, _texel_numbers(width)]
+    rows, columns = picture.shape[0] // 4, picture.shape[1] // 4
+    cut = picture.reshape(rows, 4, columns, 4, 3).transpose(0, 2, 1, 3, 4)
     return np.ascontiguousarray(cut).reshape(-1, 16, 3)
 
 
@@ -53,16 +86,7 @@ def _texel_numbers(size: int) -> np.ndarray:
     return whole % size if size < 4 else np.minimum(whole, size - 1)
 
 
-def _encode(halves) -> np.ndarray:
-    """Blocks of the encoder's own choice, in strips on as many threads as the kernels may use."""
-    encoder = _encoder()
-    strips = [halves[i : i + _STRIP] for i in range(0, len(halves), _STRIP)]
-    with ThreadPoolExecutor(numba.get_num_threads()) as threads:
-        encoded = b"".join(threads.map(lambda strip: _encode_strip(encoder, strip), strips))
-    return np.frombuffer(encoded, "<u8").reshape(-1, 2).copy()
-
-
-def _encode_strip(encoder, halves) -> bytes:
+def _call_encoder(encoder, halves) -> bytes:
     """Lay the blocks side by side as a picture of four rows, RGBA."""
     count = len(halves)
     picture = np.full((4, count, 4, 4), _ONE, "<u2")
@@ -81,16 +105,14 @@ def _encoder():
     return ispc_texcomp
 
 
-def _judge(halves, decoded) -> tuple[np.ndarray, np.ndarray]:
+def _judge(level: _Band) -> tuple[np.ndarray, np.ndarray]:
     """Numbers of the blocks that are off, and of each the share of flux that may stay so: less, the
     more of the level's flux the block holds. (count,) int and (count, 3) float64."""
-    flux, error, worst = (np.empty((len(halves), 3)) for _ in range(3))
-    _compare(halves, decoded, flux, error, worst)
-    floor = np.maximum(flux, _DIM * flux.max(1, keepdims=True)) + 1e-9
-    level = flux.sum(0) + 1e-9
-    off = (error > _OFF * floor) | (error > _OFF_LEVEL * level) | (worst > _OFF_TEXEL * floor)
+    floor = np.maximum(level.flux, _DIM * level.flux.max(1, keepdims=True)) + 1e-9
+    whole = level.flux.sum(0) + 1e-9
+    off = (level.error > np.minimum(_OFF * floor, _OFF_LEVEL * whole)) | (level.worst > _OFF_TEXEL * floor)
     numbers = np.flatnonzero(off.any(1))
-    free = np.clip(_OFF_LEVEL * level / np.maximum(flux[numbers], 1e-9), _OFF_LEVEL, _OFF)
+    free = np.clip(_OFF_LEVEL * whole / np.maximum(level.flux[numbers], 1e-9), _OFF_LEVEL, _OFF)
     return numbers, free
 
 

@@ -39,6 +39,7 @@ _FLUX_COSTS = np.array([1.0, 10.0, 100.0, 300.0])  # K, round by round: first ne
 _DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
 _STEPS = np.array([32, 16, 8, 4, 2, 1])
 _CHEAP = 1.05  # an improved block that costs about what its own errors did before is kept at once
+_SCALES = np.ldexp(1.0, np.maximum(np.arange(32), 1) - 25)  # of a half float's mantissa, by exponent
 _FLUX, _SCALE, _FREE, _PEAK = 0, 1, 2, 3  # columns of `_facts`
 _REACH = 4  # steps around both ends of a subset that are tried together at last
 # Where the texels' spread ends: not at the last weight, values between it and the end can be hit finer.
@@ -91,9 +92,7 @@ def _refit(blocks, targets, frees, peak, refitted):
 @exact
 def half_value(bits):
     """The value of a half float's bits."""
-    if bits < 1024:
-        return bits * 2.0**-24
-    return math.ldexp(float(1024 + (bits & 1023)), (bits >> 10) - 25)
+    return ((bits & 1023) + (1024 if bits >= 1024 else 0)) * _SCALES[bits >> 10]
 
 
 @exact
