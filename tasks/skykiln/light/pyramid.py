@@ -18,7 +18,7 @@ import numba
 import numpy as np
 
 from skykiln.jit import formula, parallel
-from skykiln.light.directions import FACE_AXES, cube_texel_solid_angles
+from skykiln.light.directions import FACE_AXES
 
 # What a node's record holds, and where: first, in one cache line, what decides whether it is opened.
 # Variances and moments are per unit of flux, of the directions' distances d from MEAN.
@@ -60,13 +60,33 @@ def build_pyramid(faces):
     counts = [6 * (size >> level) ** 2 for level in range(1, levels + 1)]
     offsets = np.concatenate([[0, 0], np.cumsum(counts, dtype=np.int64)]).astype(np.int64)
     nodes = np.zeros((int(offsets[-1]), RECORD), np.float32)
-    mean = np.einsum("fjic,ji->c", faces, cube_texel_solid_angles(size)) / (4 * np.pi)
+    mean = _row_fluxes(faces).sum(axis=0) / (4 * np.pi)
     weights = np.divide(1.0, mean, out=np.zeros(3), where=mean > 0)
     if levels:
         _gather_texels(faces, nodes, weights, FACE_AXES)
     for level in range(2, levels + 1):
         _gather_level(nodes, offsets[level - 1], offsets[level], offsets[level + 1], weights)
     return Pyramid(faces, nodes, offsets, mean)
+
+
+@parallel
+def _row_fluxes(faces):
+    """Flux of every row of texels, (6 n, 3) float64, by the area element (1 + a^2 + b^2)^-3/2."""
+    size = faces.shape[1]
+    fluxes = np.zeros((6 * size, 3))
+    for line in numba.prange(6 * size):
+        face, j = np.int64(line) // size, np.int64(line) % size
+        b = (2.0 * j + 1.0) / size - 1.0
+        red, green, blue = 0.0, 0.0, 0.0
+        for i in range(size):
+            a = (2.0 * i + 1.0) / size - 1.0
+            inverse = 1.0 / (1.0 + a * a + b * b)
+            area = 4.0 / (size * size) * inverse * math.sqrt(inverse)
+            red += area * faces[face, j, i, 0]
+            green += area * faces[face, j, i, 1]
+            blue += area * faces[face, j, i, 2]
+        fluxes[line, 0], fluxes[line, 1], fluxes[line, 2] = red, green, blue
+    return fluxes
 
 
 @parallel
@@ -79,17 +99,17 @@ def _gather_texels(faces, nodes, weights, face_axes):
         first = np.int64(line) * block
         children = np.zeros((4, RECORD), np.float32)
         solid_angles = np.empty(4)
+        width = 2.0 / size
         for p in range(first, min(count, first + block)):
+            j, i = 2 * every_other_bit(p >> 1), 2 * every_other_bit(p)
             for k in range(4):
-                j, i = every_other_bit((4 * p + k) >> 1), every_other_bit(4 * p + k)
-                width = 2.0 / size
-                a, b = (i + 0.5) * width - 1.0, (j + 0.5) * width - 1.0
+                a, b = (i + (k & 1) + 0.5) * width - 1.0, (j + (k >> 1) + 0.5) * width - 1.0
                 solid_angles[k] = _patch_moments(a, b, width, children[k])
             for face in range(6):
                 for k in range(4):
-                    j, i = every_other_bit((4 * p + k) >> 1), every_other_bit(4 * p + k)
                     for c in range(3):
-                        children[k, FLUX + c] = faces[face, j, i, c] * solid_angles[k]
+                        radiance = faces[face, j + (k >> 1), i + (k & 1), c]
+                        children[k, FLUX + c] = radiance * solid_angles[k]
                 node = nodes[face * count + p]
                 _join(children, weights, node)
                 _turn(node, face_axes[face])
@@ -106,75 +126,80 @@ def _gather_level(nodes, below, first, last, weights):
 
 @formula
 def _join(children, weights, node):
-    """Moments of four children about their common mean (parallel-axis theorem, to fourth order)."""
-    share = np.empty(4)
-    total = 0.0
+    """Moments of four children about their common mean (parallel-axis theorem, to fourth order), into a
+    record of zeros."""
+    total, mx, my, mz = 0.0, 0.0, 0.0, 0.0
     for k in range(4):
-        share[k] = 0.0
-        for c in range(3):
-            share[k] += weights[c] * children[k, FLUX + c]
-        total += share[k]
+        share = _share(children, weights, k)
+        total += share
+        mx += share * children[k, MEAN]
+        my += share * children[k, MEAN + 1]
+        mz += share * children[k, MEAN + 2]
     if total <= 0.0:
         return
-    mean = np.zeros(3)
+    mx, my, mz = mx / total, my / total, mz / total
+    node[MEAN], node[MEAN + 1], node[MEAN + 2] = mx, my, mz
     for k in range(4):
-        share[k] /= total
-        for x in range(3):
-            mean[x] += share[k] * children[k, MEAN + x]
-    for x in range(3):
-        node[MEAN + x] = mean[x]
-    d = np.empty(3)
-    for k in range(4):
-        for x in range(3):
-            d[x] = children[k, MEAN + x] - mean[x]
-        _add_moments(children[k], share[k], d, node)
-    _join_colours(children, mean, node)
+        share = _share(children, weights, k) / total
+        dx, dy, dz = children[k, MEAN] - mx, children[k, MEAN + 1] - my, children[k, MEAN + 2] - mz
+        _add_moments(children[k], share, dx, dy, dz, node)
+    for c in range(3):
+        _join_channel(children, mx, my, mz, c, node)
     _sum_up(node)
 
 
 @formula
-def _add_moments(child, share, d, node):
-    """Adds a child that stands off the common mean by d."""
-    square = d[0] * d[0] + d[1] * d[1] + d[2] * d[2]
+def _share(children, weights, k):
+    """A child's weight in the common mean: its flux, all channels alike."""
+    return (
+        weights[0] * children[k, FLUX] + weights[1] * children[k, FLUX + 1] + weights[2] * children[k, FLUX + 2]
+    )
+
+
+@formula
+def _add_moments(child, share, dx, dy, dz, node):
+    """Adds a child that stands off the common mean by (dx, dy, dz)."""
+    square = dx * dx + dy * dy + dz * dz
     if share > 0.0:
         node[RADIUS] = max(node[RADIUS], np.float32(math.sqrt(square)) + child[RADIUS])
-    spread = child[SPREAD]
-    along = child[LOPSIDED] * d[0] + child[LOPSIDED + 1] * d[1] + child[LOPSIDED + 2] * d[2]
+    spread = np.float64(child[SPREAD])
+    along = child[LOPSIDED] * dx + child[LOPSIDED + 1] * dy + child[LOPSIDED + 2] * dz
     node[SPREAD] += share * (spread + square)
     # Inside the child directions are taken as spread alike across the tangent plane: hence the
     # factors 2 and 4, of (1 + 2/2) and of (2 + 4/2).
     node[FOURTH] += share * (child[FOURTH] + 4 * along + 4 * spread * square + square * square)
-    for x in range(3):
-        node[COVARIANCE + x] += share * (child[COVARIANCE + x] + d[x] * d[x])
-        node[LOPSIDED + x] += share * (child[LOPSIDED + x] + (2 * spread + square) * d[x])
-    node[COVARIANCE + 3] += share * (child[COVARIANCE + 3] + d[0] * d[1])
-    node[COVARIANCE + 4] += share * (child[COVARIANCE + 4] + d[0] * d[2])
-    node[COVARIANCE + 5] += share * (child[COVARIANCE + 5] + d[1] * d[2])
+    pull = 2 * spread + square
+    node[LOPSIDED] += share * (child[LOPSIDED] + pull * dx)
+    node[LOPSIDED + 1] += share * (child[LOPSIDED + 1] + pull * dy)
+    node[LOPSIDED + 2] += share * (child[LOPSIDED + 2] + pull * dz)
+    node[COVARIANCE] += share * (child[COVARIANCE] + dx * dx)
+    node[COVARIANCE + 1] += share * (child[COVARIANCE + 1] + dy * dy)
+    node[COVARIANCE + 2] += share * (child[COVARIANCE + 2] + dz * dz)
+    node[COVARIANCE + 3] += share * (child[COVARIANCE + 3] + dx * dy)
+    node[COVARIANCE + 4] += share * (child[COVARIANCE + 4] + dx * dz)
+    node[COVARIANCE + 5] += share * (child[COVARIANCE + 5] + dy * dz)
 
 
 @formula
-def _join_colours(children, mean, node):
-    """Each channel's own flux and mean direction; a channel's spread follows from 1 - |mean|^2."""
-    shift = np.empty(3)
-    for c in range(3):
-        flux = 0.0
-        shift[:] = 0.0
-        for k in range(4):
-            f = children[k, FLUX + c]
-            flux += f
-            for x in range(3):
-                shift[x] += f * (children[k, MEAN + x] - mean[x] + children[k, COLOUR_SHIFT + 3 * c + x])
-        node[FLUX + c] = flux
-        if flux <= 0.0:
-            continue
-        square, radial = 0.0, 0.0
-        for x in range(3):
-            shift[x] /= flux
-            square += shift[x] * shift[x]
-            radial += shift[x] * mean[x]
-            node[COLOUR_SHIFT + 3 * c + x] = shift[x]
-        node[SHIFT] = max(node[SHIFT], np.float32(math.sqrt(square)))
-        node[SPREAD_GAP] = max(node[SPREAD_GAP], np.float32(abs(2.0 * radial + square)))
+def _join_channel(children, mx, my, mz, c, node):
+    """One channel's own flux and mean direction; its spread follows from 1 - |mean|^2."""
+    at = COLOUR_SHIFT + 3 * c
+    flux, sx, sy, sz = 0.0, 0.0, 0.0, 0.0
+    for k in range(4):
+        f = np.float64(children[k, FLUX + c])
+        flux += f
+        sx += f * (children[k, MEAN] - mx + children[k, at])
+        sy += f * (children[k, MEAN + 1] - my + children[k, at + 1])
+        sz += f * (children[k, MEAN + 2] - mz + children[k, at + 2])
+    node[FLUX + c] = flux
+    if flux <= 0.0:
+        return
+    sx, sy, sz = sx / flux, sy / flux, sz / flux
+    node[at], node[at + 1], node[at + 2] = sx, sy, sz
+    square = sx * sx + sy * sy + sz * sz
+    node[SHIFT] = max(node[SHIFT], np.float32(math.sqrt(square)))
+    gap = abs(2.0 * (sx * mx + sy * my + sz * mz) + square)
+    node[SPREAD_GAP] = max(node[SPREAD_GAP], np.float32(gap))
 
 
 @formula
@@ -252,22 +277,20 @@ def _patch_moments(a, b, width, node):
 
 @formula
 def _turn(node, axes):
-    """From a face's own axes to the world's: each face axis is one world axis, up to its sign."""
-    to, sign = np.empty(3, np.int64), np.empty(3, np.float32)
-    for k in range(3):
-        for x in range(3):
-            if axes[k, x] != 0.0:
-                to[k], sign[k] = x, axes[k, x]
-    old = np.empty(9, np.float32)
+    """From a face's own axes to the world's. Each face axis is one world axis, up to its sign."""
     for first in (MEAN, LOPSIDED, COLOUR_SHIFT, COLOUR_SHIFT + 3, COLOUR_SHIFT + 6):
-        for k in range(3):
-            old[k] = node[first + k]
-        for k in range(3):
-            node[first + to[k]] = sign[k] * old[k]
-    for k in range(6):
-        old[k] = node[COVARIANCE + k]
-    for k in range(3):
-        node[COVARIANCE + to[k]] = old[k]
-    for k in range(3):  # xy, xz, yz stand at 3, 4, 5: the sum of the axes plus 2
-        for m in range(k + 1, 3):
-            node[COVARIANCE + 2 + to[k] + to[m]] = sign[k] * sign[m] * old[2 + k + m]
+        u, v, w = node[first], node[first + 1], node[first + 2]
+        for x in range(3):
+            node[first + x] = axes[0, x] * u + axes[1, x] * v + axes[2, x] * w
+    xx, yy, zz = node[COVARIANCE], node[COVARIANCE + 1], node[COVARIANCE + 2]
+    xy, xz, yz = node[COVARIANCE + 3], node[COVARIANCE + 4], node[COVARIANCE + 5]
+    for x in range(3):
+        a, b, c = axes[0, x], axes[1, x], axes[2, x]
+        node[COVARIANCE + x] = a * a * xx + b * b * yy + c * c * zz
+        # The product of two world axes is plus or minus that of two of the face's.
+        y, z = (x + 1) % 3, (x + 2) % 3
+        node[COVARIANCE + 2 + y + z] = (
+            (axes[0, y] * axes[1, z] + axes[1, y] * axes[0, z]) * xy
+            + (axes[0, y] * axes[2, z] + axes[2, y] * axes[0, z]) * xz
+            + (axes[1, y] * axes[2, z] + axes[2, y] * axes[1, z]) * yz
+        )

@@ -18,7 +18,7 @@ import numba
 import numpy as np
 
 from skykiln.jit import formula, parallel
-from skykiln.light.directions import FACE_AXES, cube_directions
+from skykiln.light.directions import FACE_AXES
 from skykiln.light.ggx import ggx_norm
 from skykiln.light.lobe_sums import ENTRY, append, sum_above, sum_across, sum_coloured
 from skykiln.light.pyramid import RADIUS, RECORD
@@ -65,9 +65,8 @@ def filter_level(pyramid, face_size, alpha, tolerance):
     tile = _tile_edge(face_size, alpha)
     group = _group_edge(face_size, tile, alpha)
     sums = _sum_groups(
-        pyramid.faces, pyramid.nodes, pyramid.offsets, FACE_AXES,
-        cube_directions(face_size).astype(np.float32), tile, group, float(alpha),
-        tolerance / _ERRORS_PER_TEXEL, _DARK * brightest * norm,
+        pyramid.faces, pyramid.nodes, pyramid.offsets, FACE_AXES, face_size, tile, group,
+        float(alpha), tolerance / _ERRORS_PER_TEXEL, _DARK * brightest * norm,
     )  # fmt: skip
     return sums * np.float32(1.0 / norm)
 
@@ -90,27 +89,25 @@ def _group_edge(face_size, tile, alpha):
 
 
 @parallel
-def _sum_groups(faces, nodes, offsets, face_axes, directions, tile, group, alpha, part, floor):
-    size = directions.shape[1]
+def _sum_groups(faces, nodes, offsets, face_axes, size, tile, group, alpha, part, floor):
     across = size // group
     result = np.empty((6, size, size, 3), np.float32)
     for g in numba.prange(6 * across * across):
         face = np.int64(g) // (across * across)
         j0 = np.int64(g) // across % across * group
         i0 = np.int64(g) % across * group
-        window = directions[face, j0 : j0 + group, i0 : i0 + group]
+        texels = _texels_by_tiles(face_axes[face], size, tile, group, j0, i0)
         target = result[face, j0 : j0 + group, i0 : i0 + group]
-        _sum_group(faces, nodes, offsets, face_axes, window, tile, alpha, part, floor, target)
+        _sum_group(faces, nodes, offsets, face_axes, texels, tile, alpha, part, floor, target)
     return result
 
 
 @formula
-def _sum_group(faces, nodes, offsets, face_axes, window, tile, alpha, part, floor, target):
+def _sum_group(faces, nodes, offsets, face_axes, texels, tile, alpha, part, floor, target):
     """All texels of a group: one walk for what its tiles share, then one per tile for the rest."""
     b, a2 = 1.0 - alpha * alpha, 2.0 * alpha * alpha
-    tiles, area = window.shape[0] // tile, tile * tile
+    tiles, area = target.shape[0] // tile, tile * tile
     count = tiles * tiles
-    texels = _by_tiles(window, tile)
     sums = np.zeros((count * area, 3), np.float32)
     centre = np.empty(3)
     radius = _bounds(texels, centre)
@@ -142,13 +139,18 @@ def _sum_group(faces, nodes, offsets, face_axes, window, tile, alpha, part, floo
 
 
 @formula
-def _by_tiles(window, tile):
-    """The texels of a group, tile after tile. (texels, 3) float32."""
-    tiles, area = window.shape[0] // tile, tile * tile
+def _texels_by_tiles(axes, size, tile, group, j0, i0):
+    """Directions of a group's texel centres, tile after tile. (texels, 3) float32."""
+    tiles, area = group // tile, tile * tile
     texels = np.empty((tiles * tiles * area, 3), np.float32)
     for k in range(texels.shape[0]):
         t, inside = k // area, k % area
-        texels[k] = window[t // tiles * tile + inside // tile, t % tiles * tile + inside % tile]
+        j = j0 + t // tiles * tile + inside // tile
+        i = i0 + t % tiles * tile + inside % tile
+        a, b = (2.0 * i + 1.0) / size - 1.0, (2.0 * j + 1.0) / size - 1.0
+        h = math.sqrt(1.0 + a * a + b * b)
+        for x in range(3):
+            texels[k, x] = (axes[0, x] + a * axes[1, x] + b * axes[2, x]) / h
     return texels
 
 
