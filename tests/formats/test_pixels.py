@@ -5,7 +5,7 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from skykiln.formats.half import nearest_half
+from skykiln.formats.half import half_value, nearest_half
 from skykiln.formats.pixels import PIXELS
 
 
@@ -64,3 +64,8 @@ def test_decoder_undoes_the_encoder(name):
     assert decoded.flags.writeable
     # Half a step of the coarsest coding, relative to the brightest channel.
     assert (np.abs(decoded - values) <= values.max(-1, keepdims=True) / 63).all()
+
+
+def test_half_bits_have_numpys_values():
+    bits = np.arange(0, 0x7C00, 7, dtype=np.uint16)
+    assert [half_value(int(b)) for b in bits] == bits.view(np.float16).astype(float).tolist()

@@ -13,8 +13,8 @@ import numpy as np
 
 from skykiln.errors import SkykilnError
 from skykiln.formats.bc6h import decode_blocks
-from skykiln.formats.bc6h_refit import half_value, refit_blocks
-from skykiln.formats.half import nearest_half
+from skykiln.formats.bc6h_refit import refit_blocks
+from skykiln.formats.half import half_value, nearest_half
 from skykiln.jit import exact
 
 _PROFILE = "basic"

@@ -23,14 +23,15 @@ import numpy as np
 
 from skykiln.formats.bc6h import half_between, is_anchor, subset_of, unpack_block, unquantise
 from skykiln.formats.bc6h_layout import (
-    DELTA_BITS,
     ENDPOINT_BITS,
     PARTITION,
     SUBSETS,
     WEIGHTS_3,
     WEIGHTS_4,
 )
+from skykiln.formats.bc6h_least_squares import least_squares
 from skykiln.formats.bc6h_pack import fits, pack_block
+from skykiln.formats.half import half_value
 from skykiln.jit import exact
 
 _VALUE_COST = 0.3  # P: keeps a sun's own texels near their values
@@ -39,7 +40,6 @@ _FLUX_COSTS = np.array([1.0, 10.0, 100.0, 300.0])  # K, round by round: first ne
 _DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
 _STEPS = np.array([32, 16, 8, 4, 2, 1])
 _CHEAP = 1.05  # an improved block that costs about what its own errors did before is kept at once
-_SCALES = np.ldexp(1.0, np.maximum(np.arange(32), 1) - 25)  # of a half float's mantissa, by exponent
 _FLUX, _SCALE, _FREE, _PEAK = 0, 1, 2, 3  # columns of `_facts`
 _REACH = 4  # steps around both ends of a subset that are tried together at last
 # Where the texels' spread ends: not at the last weight, values between it and the end can be hit finer.
@@ -82,17 +82,11 @@ def _refit(blocks, targets, frees, peak, refitted):
         for start in range(len(_ONE_SUBSET_MODES) * len(_SPREADS) * 2):
             mode = _ONE_SUBSET_MODES[start // 2 % len(_ONE_SUBSET_MODES)]
             spread = _SPREADS[start // 2 // len(_ONE_SUBSET_MODES)]
-            _least_squares(mode, targets[i], start % 2 == 1, spread, values, indices)
+            least_squares(mode, targets[i], start % 2 == 1, spread, values, indices)
             cost = _improve(mode, values, indices, targets[i], facts)
             if cost < best:
                 best = cost
                 pack_block(mode, values, indices, refitted[i])
-
-
-@exact
-def half_value(bits):
-    """The value of a half float's bits."""
-    return ((bits & 1023) + (1024 if bits >= 1024 else 0)) * _SCALES[bits >> 10]
 
 
 @exact
@@ -243,108 +237,3 @@ def _choose_index(texel, palette, indices, target, total, facts, strength):
             best, indices[texel] = cost, index
     for c in range(3):
         total[c] += half_value(palette[indices[texel], c])
-
-
-@exact
-def _least_squares(mode, target, by_radiance, spread, values, indices):
-    """A one-subset block: indices along the principal axis, endpoints by least squares, twice."""
-    weights = np.ones(16)
-    if by_radiance:
-        for texel in range(16):
-            weights[texel] = 1e-3 * half_value(target.max()) + half_value(target[texel].max())
-    place = spread * _along_principal_axis(target, weights)
-    low, high = np.empty(3), np.empty(3)
-    for _ in range(2):
-        for texel in range(16):
-            indices[texel] = np.argmin(np.abs(WEIGHTS_4 / 64.0 - place[texel]))
-        _solve_endpoints(target, weights, indices, low, high)
-        _project(target, low, high, place)
-    for texel in range(16):
-        indices[texel] = np.argmin(np.abs(WEIGHTS_4 / 64.0 - place[texel]))
-    if indices[0] >= 8:  # the anchor's index has no top bit: turn the block's ends around
-        indices[:] = 15 - indices
-        _quantise_ends(mode, high, low, values)
-    else:
-        _quantise_ends(mode, low, high, values)
-    values[PARTITION] = 0
-
-
-@exact
-def _along_principal_axis(target, weights):
-    """Where each texel lies between the ends of the texels' spread, 0..1: (16,) float64."""
-    mean, axis = np.zeros(3), np.array([1.0, 1.0, 1.0])
-    for c in range(3):
-        mean[c] = (weights * target[:, c]).sum() / weights.sum()
-    for _ in range(8):  # power iteration on the weighted covariance
-        turned = np.zeros(3)
-        for texel in range(16):
-            along = 0.0
-            for c in range(3):
-                along += (target[texel, c] - mean[c]) * axis[c]
-            for c in range(3):
-                turned[c] += weights[texel] * along * (target[texel, c] - mean[c])
-        length = math.sqrt((turned * turned).sum())
-        if length == 0.0:
-            break
-        axis[:] = turned / length
-    place = np.zeros(16)
-    for texel in range(16):
-        for c in range(3):
-            place[texel] += (target[texel, c] - mean[c]) * axis[c]
-    low, high = place.min(), place.max()
-    return (place - low) / (high - low) if high > low else np.zeros(16)
-
-
-@exact
-def _solve_endpoints(target, weights, indices, low, high):
-    """Ends in 0..65535 that make the weighted squared differences least, the indices given."""
-    aa, ab, bb = 0.0, 0.0, 0.0
-    at, bt = np.zeros(3), np.zeros(3)
-    for texel in range(16):
-        b = WEIGHTS_4[indices[texel]] / 64.0
-        a, w = 1.0 - b, weights[texel]
-        aa, ab, bb = aa + w * a * a, ab + w * a * b, bb + w * b * b
-        for c in range(3):
-            v = target[texel, c] * 64.0 / 31.0 + 1.0
-            at[c], bt[c] = at[c] + w * a * v, bt[c] + w * b * v
-    det = aa * bb - ab * ab
-    for c in range(3):
-        mean = (at[c] + bt[c]) / (aa + 2 * ab + bb)
-        singular = det <= 1e-9 * (aa + bb) ** 2
-        low[c] = mean if singular else (bb * at[c] - ab * bt[c]) / det
-        high[c] = mean if singular else (aa * bt[c] - ab * at[c]) / det
-        low[c], high[c] = min(max(low[c], 0.0), 65535.0), min(max(high[c], 0.0), 65535.0)
-
-
-@exact
-def _project(target, low, high, place):
-    """Where each texel lies between the two ends."""
-    length = 0.0
-    for c in range(3):
-        length += (high[c] - low[c]) ** 2
-    for texel in range(16):
-        along = 0.0
-        for c in range(3):
-            along += (target[texel, c] * 64.0 / 31.0 + 1.0 - low[c]) * (high[c] - low[c])
-        place[texel] = along / length if length > 0 else 0.0
-
-
-@exact
-def _quantise_ends(mode, low, high, values):
-    """Ends as the mode can store them; the second is moved to where its difference fits."""
-    bits = ENDPOINT_BITS[mode]
-    most = (np.int64(1) << bits) - 1
-    for c in range(3):
-        first = _quantise(low[c], bits)
-        second = _quantise(high[c], bits)
-        delta_bits = DELTA_BITS[mode, c]
-        if delta_bits:
-            reach = np.int64(1) << (delta_bits - 1)
-            second = min(max(second, first - reach), first + reach - 1)
-        values[c], values[3 + c] = first, min(max(second, np.int64(0)), most)
-
-
-@exact
-def _quantise(v, bits):
-    """The inverse of `unquantise` (KDF 1.4, 20.2), to nearest."""
-    return min(max(np.int64(math.floor(v * 2.0 ** (bits - 16))), np.int64(0)), (np.int64(1) << bits) - 1)

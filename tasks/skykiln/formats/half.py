@@ -2,7 +2,10 @@
 
 import numpy as np
 
+from skykiln.jit import exact
+
 LARGEST = 65504.0
+_SCALES = np.ldexp(1.0, np.maximum(np.arange(32), 1) - 25)  # of a mantissa, by exponent bits
 
 
 def nearest_half(values) -> np.ndarray:
@@ -33,3 +36,9 @@ def encode_rg(values) -> np.ndarray:
 def decode_rg(blocks: bytes, shape) -> np.ndarray:
     """Bytes of texels -> (*shape, 2) float32."""
     return np.frombuffer(blocks, "<f2").reshape(*shape, 2).astype(np.float32)
+
+
+@exact
+def half_value(bits):
+    """The value of a half float's bits."""
+    return ((bits & 1023) + (1024 if bits >= 1024 else 0)) * _SCALES[bits >> 10]
