@@ -1,15 +1,18 @@
 """Cube faces from a panorama: the exact mean of the piecewise constant source over every texel.
 
-In the equal-area coordinates x (column, 0..W) and y (the sine of latitude) a solid angle is
-(2 pi / W) dx dy. With G(x, y), the integral of the radiance L from y up to the pole, Green's theorem
-turns the flux of a texel into an integral along its outline,
+With longitude t, the sine of latitude y, and G(t, y) the radiance L integrated from y up to the pole, a
+solid angle is dt dy and Green's theorem turns the flux of a texel into an integral along its outline,
 
-    flux = (2 pi / W) closed integral of G dx.
+    flux = closed integral of G dt.
 
-G is constant in x and linear in y inside a source pixel, and a texel's edges are great circles,
-tan(latitude) = A cos(longitude) + B sin(longitude), so each edge is cut where it enters another pixel
-and summed piece by piece. Neighbouring texels share their edges: flux is conserved to rounding, no
-source pixel is missed however small, and a constant sky stays constant. Meridians add nothing.
+G is constant in t and linear in y inside a source pixel. A texel's edges are great circles,
+T = tan(latitude) = a cos t + b sin t, along which with S = a sin t - b cos t
+
+    integral of y dt = atan(S / sqrt(1 + T^2)),
+
+so each edge is cut where it enters another pixel and summed piece by piece, in closed form. Neighbouring
+texels share their edges: flux is conserved to rounding, no source pixel is missed however small, and a
+constant sky stays constant. Meridians add nothing.
 
 Conventions: `directions`.
 """
@@ -39,19 +42,22 @@ def extract_faces(panorama, face_size, yaw=0.0):
     -------
     (6, face_size, face_size, 3) float32, radiance.
 
-    Source: Green's theorem in the cylindrical equal-area chart (Archimedes; Lambert 1772).
+    Source: Green's theorem in the cylindrical equal-area chart (Lambert 1772).
     """
     factor = math.ceil(4 * face_size / panorama.shape[1])
     if factor > 1:
         panorama = interpolated_panorama(panorama, factor)
     panorama = np.ascontiguousarray(panorama, dtype=np.float32)
     height, width, _ = panorama.shape
-    heights = np.cos(np.pi * np.arange(height + 1) / height)
-    from_pole = _integrals_from_pole(panorama, heights)
-    across, along = _edge_integrals(panorama, from_pole, heights, FACE_AXES, face_size, yaw)
+    polar_angles = np.pi * np.arange(height + 1) / height
+    columns = np.pi - 2 * np.pi * np.arange(width + 1) / width
+    tangents = np.concatenate([[np.inf], 1 / np.tan(polar_angles[1:-1]), [-np.inf]])
+    grid = (np.cos(polar_angles), tangents, np.cos(columns), np.sin(columns))
+    from_pole = _integrals_from_pole(panorama, grid[0])
+    across, along = _edge_integrals(panorama, from_pole, grid, FACE_AXES, face_size, yaw)
     flux = across[:, :-1] - across[:, 1:]
     flux[_UP : _DOWN + 1] += along[:, :, 1:] - along[:, :, :-1]
-    radiance = flux * (2 * np.pi / width / cube_texel_solid_angles(face_size)[:, :, None])
+    radiance = flux / cube_texel_solid_angles(face_size)[:, :, None]
     return np.maximum(radiance, 0.0).astype(np.float32)  # rounding may leave -1e-16 of a bright sun
 
 
@@ -91,136 +97,118 @@ def _integrals_from_pole(panorama, heights):
 
 
 @parallel
-def _edge_integrals(panorama, from_pole, heights, face_axes, size, yaw):
-    """Integrals of G dx along texel edges.
+def _edge_integrals(panorama, from_pole, grid, face_axes, size, yaw):
+    """Integrals of G dt along texel edges, in the direction of falling t.
 
     Returns those along s, (6, size + 1, size, 3), and, for the two faces around the poles, those along
     t, (2, size, size + 1, 3); on the other faces these are meridians and zero.
     """
     across = np.zeros((6, size + 1, size, 3))
-    along = np.zeros((2, size, size + 1, 3))
+    along = np.zeros((2, size + 1, size, 3))
     cos_yaw, sin_yaw = math.cos(yaw), math.sin(yaw)
     for line in numba.prange(6 * (size + 1)):
-        face = np.int64(line) // (size + 1)
-        k = np.int64(line) % (size + 1)
+        face, k = np.int64(line) // (size + 1), np.int64(line) % (size + 1)
         polar = face == _UP or face == _DOWN
-        fixed = 2.0 * k / size - 1.0
         if polar and 2 * k == size:
             continue  # through the pole: meridians
-        axes = face_axes[face]
-        ends = np.empty((2, 3))
-        for i in range(size):
-            for e in range(2):
-                _point(axes, 2.0 * (i + e) / size - 1.0, fixed, cos_yaw, sin_yaw, ends[e])
-            _add_edge(panorama, from_pole, heights, ends, face == _DOWN, across[face, k, i])
-            if polar:
-                for e in range(2):
-                    _point(axes, fixed, 2.0 * (i + e) / size - 1.0, cos_yaw, sin_yaw, ends[e])
-                _add_edge(panorama, from_pole, heights, ends, face == _DOWN, along[face - _UP, i, k])
-    return across, along
+        axes = np.empty((3, 3))  # turned back by the yaw, into the source's own frame
+        for x in range(3):
+            axes[x, 0] = face_axes[face, x, 0] * cos_yaw - face_axes[face, x, 2] * sin_yaw
+            axes[x, 1] = face_axes[face, x, 1]
+            axes[x, 2] = face_axes[face, x, 2] * cos_yaw + face_axes[face, x, 0] * sin_yaw
+        fixed = 2.0 * k / size - 1.0
+        below = face == _DOWN
+        _add_line(panorama, from_pole, grid, axes[0], axes[1], axes[2], fixed, below, across[face, k])
+        if polar:
+            _add_line(panorama, from_pole, grid, axes[0], axes[2], axes[1], fixed, below, along[face - _UP, k])
+    return across, along.transpose(0, 2, 1, 3)
 
 
 @formula
-def _point(axes, a, b, cos_yaw, sin_yaw, out):
-    """Direction (not unit) of face coordinates, turned back by the yaw into the source's own axes."""
-    x = axes[0, 0] + axes[1, 0] * a + axes[2, 0] * b
-    z = axes[0, 2] + axes[1, 2] * a + axes[2, 2] * b
-    out[0] = x * cos_yaw - z * sin_yaw
-    out[1] = axes[0, 1] + axes[1, 1] * a + axes[2, 1] * b
-    out[2] = z * cos_yaw + x * sin_yaw
+def _add_line(panorama, from_pole, grid, major, moving, other, fixed, below, out):
+    """The edges of one line of texels into out (size, 3). No edge is cut by the middle of its face,
+    where a great circle turns: one texel's edges are taken in halves."""
+    size = out.shape[0]
+    parts = 1 if size % 2 == 0 else 2
+    px, py, pz = major[0] + other[0] * fixed, major[1] + other[1] * fixed, major[2] + other[2] * fixed
+    # Normal of the great circle's plane, and with it a and b of T = a cos t + b sin t.
+    nx, ny, nz = py * moving[2] - pz * moving[1], pz * moving[0] - px * moving[2], px * moving[1] - py * moving[0]
+    a, b = -nz / ny, -nx / ny
+    for i in range(size * parts):
+        u0, u1 = 2.0 * i / (size * parts) - 1.0, 2.0 * (i + 1) / (size * parts) - 1.0
+        x0, z0 = px + moving[0] * u0, pz + moving[2] * u0
+        x1, z1 = px + moving[0] * u1, pz + moving[2] * u1
+        if x0 * z1 - z0 * x1 > 0.0:  # t falls from the first end to the second
+            _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, 1.0, below, out[i // parts])
+        else:
+            _add_edge(panorama, from_pole, grid, a, b, x1, z1, x0, z0, -1.0, below, out[i // parts])
 
 
 @formula
-def _add_edge(panorama, from_pole, heights, ends, below, out):
-    """Adds the integral of G dx along the great-circle arc between two directions.
-
-    Around the lower pole G is measured from there, so that it vanishes at the pole that a texel touches.
-    """
-    width = panorama.shape[1]
-    per_radian = width / (2 * math.pi)
-    normal_x = ends[0, 1] * ends[1, 2] - ends[0, 2] * ends[1, 1]
-    normal_y = ends[0, 2] * ends[1, 0] - ends[0, 0] * ends[1, 2]
-    normal_z = ends[0, 0] * ends[1, 1] - ends[0, 1] * ends[1, 0]
-    a, b = -normal_z / normal_y, -normal_x / normal_y
-    start = (math.pi - math.atan2(ends[0, 0], ends[0, 2])) * per_radian
-    end = (math.pi - math.atan2(ends[1, 0], ends[1, 2])) * per_radian
-    if end - start > width / 2:
-        end -= width
-    elif start - end > width / 2:
-        end += width
-    sign = 1.0
-    if end < start:
-        start, end, sign = end, start, -1.0
-    # Where the arc is highest or lowest it would enter a row twice: cut there.
-    top = (math.pi - math.atan2(b, a)) * per_radian
-    top += math.ceil((start - top) * 2 / width) * width / 2
-    x = start
-    while x < end:
-        column = math.floor(x)
-        stop = min(end, column + 1.0)
-        if x < top < stop:
-            stop = top
-        _add_column_piece(panorama, from_pole, heights, a, b, x, stop, column, below, sign, out)
-        x = stop
+def _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, sign, below, out):
+    """Adds the integral of G along a great circle, between two points given by the horizontal parts of
+    their directions, t falling, the height rising or falling throughout."""
+    heights, tangents, cos_columns, sin_columns = grid
+    rows, width, _ = panorama.shape
+    length0, length1 = math.sqrt(x0 * x0 + z0 * z0), math.sqrt(x1 * x1 + z1 * z1)
+    cos_t, sin_t = z0 / length0, x0 / length0
+    cos_end, sin_end = z1 / length1, x1 / length1
+    tangent, tangent_end = a * cos_t + b * sin_t, a * cos_end + b * sin_end
+    step = 1 if tangent_end < tangent else -1
+    row = _row_of(tangent, tangents, step)
+    start = (math.pi - math.atan2(sin_t, cos_t)) * (width / (2.0 * math.pi))
+    span = math.atan2(sin_t * cos_end - cos_t * sin_end, cos_t * cos_end + sin_t * sin_end)
+    last = start + span * (width / (2.0 * math.pi))
+    column = int(math.floor(start))
+    radius2 = a * a + b * b
+    while True:
+        at_end = column + 1 >= last
+        if at_end:
+            cos_next, sin_next = cos_end, sin_end
+        else:
+            edge = (column + 1) % width
+            cos_next, sin_next = cos_columns[edge], sin_columns[edge]
+        tangent_next = a * cos_next + b * sin_next
+        i = column % width
+        while (step > 0 and tangent_next < tangents[row + 1]) or (step < 0 and tangent_next > tangents[row]):
+            crossed = tangents[row + 1] if step > 0 else tangents[row]
+            side = math.sqrt(max(0.0, radius2 - crossed * crossed))
+            if a * (sin_t + sin_next) - b * (cos_t + cos_next) < 0.0:
+                side = -side
+            cos_cut, sin_cut = (a * crossed - b * side) / radius2, (b * crossed + a * side) / radius2
+            _add_piece(panorama, from_pole, heights, a, b, cos_t, sin_t, cos_cut, sin_cut, row, i, sign, below, out)
+            cos_t, sin_t = cos_cut, sin_cut
+            row += step
+        _add_piece(panorama, from_pole, heights, a, b, cos_t, sin_t, cos_next, sin_next, row, i, sign, below, out)
+        if at_end:
+            return
+        cos_t, sin_t = cos_next, sin_next
+        column += 1
 
 
 @formula
-def _height_at(a, b, x, width):
-    """Sine of latitude of the great circle at column coordinate x."""
-    longitude = math.pi - x * (2 * math.pi / width)
-    tangent = a * math.cos(longitude) + b * math.sin(longitude)
-    return tangent / math.sqrt(1.0 + tangent * tangent)
-
-
-@formula
-def _row_of(y, heights):
-    """The row that holds a height, heights falling from 1 to -1."""
-    rows = heights.shape[0] - 1
-    row = min(rows - 1, max(0, int(math.acos(max(-1.0, min(1.0, y))) * rows / math.pi)))
-    while row > 0 and y > heights[row]:
+def _row_of(tangent, tangents, step):
+    """The row that holds a latitude, or that an edge which starts there enters (step 1: downwards)."""
+    rows = tangents.shape[0] - 1
+    row = min(rows - 1, max(0, int(math.atan2(1.0, tangent) * rows / math.pi)))
+    while row > 0 and (tangent > tangents[row] or (step < 0 and tangent == tangents[row])):
         row -= 1
-    while row < rows - 1 and y < heights[row + 1]:
+    while row < rows - 1 and (tangent < tangents[row + 1] or (step > 0 and tangent == tangents[row + 1])):
         row += 1
     return row
 
 
 @formula
-def _add_column_piece(panorama, from_pole, heights, a, b, x0, x1, column, below, sign, out):
-    """Adds the part of an arc within one source column, along which its height is monotone."""
-    rows, width, _ = panorama.shape
-    i = column % width
-    y0, y1 = _height_at(a, b, x0, width), _height_at(a, b, x1, width)
-    row, last = _row_of(y0, heights), _row_of(y1, heights)
-    step = 1 if last > row else -1
-    while True:
-        if row == last:
-            x, y = x1, y1
-        else:
-            y = heights[row + 1] if step > 0 else heights[row]
-            x = min(x1, max(x0, _crossing(a, b, y, x0, width)))
-        middle = _height_at(a, b, 0.5 * (x0 + x), width)
-        mean = (y0 + 4.0 * middle + y) / 6.0  # Simpson: pieces are at most one pixel wide
-        for c in range(3):
-            g = from_pole[row, i, c] + panorama[row, i, c] * (heights[row] - mean)
-            if below:
-                g -= from_pole[rows, i, c]
-            out[c] += sign * g * (x - x0)
-        if row == last:
-            break
-        x0, y0 = x, y
-        row += step
-
-
-@formula
-def _crossing(a, b, y, near, width):
-    """Column coordinate at which the great circle has height y: the one of the two closest to `near`
-    and beyond it."""
-    per_radian = width / (2 * math.pi)
-    tangent = y / math.sqrt(1.0 - y * y)
-    spread = math.acos(max(-1.0, min(1.0, tangent / math.sqrt(a * a + b * b)))) * per_radian
-    middle = (math.pi - math.atan2(b, a)) * per_radian
-    first = middle - spread
-    first += math.ceil((near - first) / width - 1e-12) * width
-    second = middle + spread
-    second += math.ceil((near - second) / width - 1e-12) * width
-    return min(first, second)
+def _add_piece(panorama, from_pole, heights, a, b, cos0, sin0, cos1, sin1, row, i, sign, below, out):
+    """Adds the part of an edge inside one source pixel. Around the lower pole G is measured from there,
+    so that it vanishes at the pole that a texel touches."""
+    angle = math.atan2(sin0 * cos1 - cos0 * sin1, cos0 * cos1 + sin0 * sin1)
+    t0, s0 = a * cos0 + b * sin0, a * sin0 - b * cos0
+    t1, s1 = a * cos1 + b * sin1, a * sin1 - b * cos1
+    r0, r1 = math.sqrt(1.0 + t0 * t0), math.sqrt(1.0 + t1 * t1)
+    height = math.atan2(s0 * r1 - s1 * r0, r0 * r1 + s0 * s1)  # integral of y over falling t
+    for c in range(3):
+        g = from_pole[row, i, c]
+        if below:
+            g -= from_pole[heights.shape[0] - 1, i, c]
+        out[c] += sign * (g * angle + panorama[row, i, c] * (heights[row] * angle - height))
