@@ -19,7 +19,7 @@ def test_values_change_only_with_the_stage_s_version(outputs, name):
     assert version == stored[f"{name} version"], "store the new version's values with golden.py"
     assert array.shape == stored[name].shape
     # Vector units of other CPUs sum in other orders; half floats then round the other way now and then.
-    tolerance = 6e-4 if "ktx2" in name else 1e-4
+    tolerance = 1e-3 if "ktx2" in name else 1e-4
     scale = np.abs(stored[name]).max()
     np.testing.assert_allclose(array, stored[name], rtol=tolerance, atol=1e-6 * scale)
 
