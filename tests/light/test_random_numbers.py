@@ -22,7 +22,7 @@ def test_numbers_are_even_and_streams_differ():
         a = np.array([next_uniform(first) for _ in range(4000)])
         b = np.array([next_uniform(second) for _ in range(4000)])
     for values in (a, b):
-        assert 0 <= values.min() and values.max() < 1
+        assert values.min() >= 0 and values.max() < 1
         counts = np.histogram(values, bins=16, range=(0, 1))[0]
         assert ((counts - 250) ** 2 / 250).sum() < 40  # chi-square with 15 degrees of freedom
     assert abs(np.corrcoef(a, b)[0, 1]) < 0.06

@@ -4,6 +4,7 @@ Chi-square tests of samples against densities: Subr and Arvo 2007, "Statistical 
 assessing Monte Carlo estimators: applications to image synthesis" (Pacific Graphics).
 """
 
+import itertools
 import math
 
 import numpy as np
@@ -31,7 +32,7 @@ def chi_square(directions, normal, density):
     found, _, _ = np.histogram2d(c, turn, bins=[edges, np.linspace(-np.pi, np.pi, 9)])
     rings = [
         integrate.quad(density, a, b, epsabs=1e-12)[0]
-        for a, b in zip(edges[:-1], edges[1:], strict=True)
+        for a, b in itertools.pairwise(edges)
     ]
     expected = len(directions) * 2 * np.pi * np.repeat(np.array(rings)[:, None] / 8, 8, axis=1)
     full = expected > 10

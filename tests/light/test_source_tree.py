@@ -2,9 +2,9 @@
 
 import numpy as np
 import pytest
+from panorama_reference import many_lamps, pixel_points, small_sun
 from scipy import stats
 
-from panorama_reference import many_lamps, pixel_points, small_sun
 from skykiln.light.directions import panorama_row_solid_angles
 from skykiln.light.source_tree import pixel_at, source_samples, source_tree
 

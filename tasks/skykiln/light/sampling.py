@@ -15,8 +15,6 @@ import math
 
 import numpy as np
 
-from skykiln.jit import formula
-
 
 def ggx_cosine(u, alpha):
     """Cosine n.l of a GGX sample. u in 0..1; may be negative (below the horizon). Scalars or arrays."""
@@ -61,9 +59,3 @@ def tangent_frame(normals):
     b = x * y * a
     tangent = np.stack([1.0 + sign * x * x * a, sign * b, -sign * x], axis=-1)
     return tangent, np.stack([b, sign + y * y * a, -y], axis=-1)
-
-
-@formula
-def fraction(x):
-    """The part of x >= 0 behind the point."""
-    return x - math.floor(x)

@@ -172,7 +172,7 @@ def node_brightness(tree, level, j, i):
 def descend(tree, level, j, i, u):
     """The pixel below a node of level 0 or above that u in 0..1 falls on.
 
-    Without branches: which child it is can't be predicted.
+    Without branches: which child it is can't be predicted. The fourth child takes what is left.
     """
     u *= node_brightness(tree, level, j, i)
     while level > 0:
@@ -181,7 +181,6 @@ def descend(tree, level, j, i, u):
         a = node_brightness(tree, level, j, i)
         b = node_brightness(tree, level, j, i + 1) if beside else 0.0
         c = node_brightness(tree, level, j + 1, i) if below else 0.0
-        d = node_brightness(tree, level, j + 1, i + 1) if below and beside else 0.0
         upper = a + b
         down = (u >= upper) & below
         u -= upper if down else 0.0
