@@ -102,5 +102,5 @@ def test_mended_values_lie_between_the_valid_ones(pixels):
     np.testing.assert_array_equal(mended[valid], pixels[valid])
     for channel in range(3):
         known = pixels[..., channel][valid[..., channel]]
-        assert mended[..., channel].min() >= known.min()
-        assert mended[..., channel].max() <= float(known.max()) * (1 + 1e-6)
+        assert float(mended[..., channel].min()) >= float(known.min())
+        assert float(mended[..., channel].max()) <= float(known.max()) * (1 + 1e-6)
