@@ -15,7 +15,6 @@ from typing import NamedTuple
 import numpy as np
 
 from skykiln.light.faces import interpolated_panorama
-from skykiln.light.photometry import mean_radiance
 from skykiln.light.source_tree import source_tree
 from skykiln.light.strata import stratified_estimate
 from skykiln.light.texel_draw import (
@@ -102,7 +101,8 @@ def look(panorama, charts, seed, yaw, quantum, step, per_face, precision):
     sizes = [chart.faces.shape[1] for chart in charts]
     alphas = np.array([chart.alpha for chart in charts])
     texels = draw_texels(tree, sizes, alphas, per_face, yaw, random)
-    floor = max(DARK * mean_radiance(panorama).max(), BLACK)
+    mean = tree.flux[-1, :3].max() / (4.0 * math.pi)
+    floor = max(DARK * mean, BLACK)
     tolerance = np.array([chart.tolerance for chart in charts])[texels.chart]
     inputs = (
         texel_normals(sizes, texels, yaw),

@@ -9,7 +9,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from skykiln.light.directions import FACE_AXES, cube_directions, cube_texel_solid_angles
+from skykiln.light.directions import FACE_AXES, cube_texel_solid_angles
 from skykiln.light.sampling import around, ggx_cosine
 from skykiln.light.source_tree import source_samples
 
@@ -38,27 +38,28 @@ def draw_texels(tree, sizes, alphas, per_face, yaw, random):
     -------
     Texels, in the order of cube maps.
     """
+    face = np.repeat(np.arange(6), per_face)
+    alphas = np.asarray(alphas, dtype=np.float64)
+    lit = _towards_light(tree, alphas, face.size, yaw, random)
     drawn = []
-    for chart, (size, alpha) in enumerate(zip(sizes, alphas, strict=True)):
-        face = np.repeat(np.arange(6), per_face)
+    for chart, size in enumerate(sizes):
         row, column = random.integers(0, size, (2, face.size))
-        lit = _where_light_is(tree, size, alpha, face.size, yaw, random)
-        texels = np.concatenate([np.stack([face, row, column]), lit], axis=1)
-        texels = np.unique(texels, axis=1)
+        texels = np.stack([face, row, column])
+        texels = np.unique(np.concatenate([texels, texel_at(lit[chart], size)], axis=1), axis=1)
         drawn.append(np.concatenate([np.full((1, texels.shape[1]), chart), texels]))
     return Texels(*np.concatenate(drawn, axis=1))
 
 
-def _where_light_is(tree, size, alpha, count, yaw, random):
-    """Face, row and column (3, count) of texels in proportion to their light; none of a black source."""
+def _towards_light(tree, alphas, count, yaw, random):
+    """Directions (charts, count, 3) in proportion to the light they should hold; none of a black source."""
     seed = random.integers(0, 2**64, dtype=np.uint64)
-    u, turns = random.random((2, count))
+    u, turns = random.random((2, alphas.size, count))
     if not tree.pixels.any():
-        return np.empty((3, 0), dtype=np.int64)
-    lights = source_samples(tree, count, seed)[0] @ yaw_rotation(yaw).T
-    if alpha > 0:
-        lights = around(lights, np.abs(ggx_cosine(u, alpha)), turns)
-    return texel_at(lights, size)
+        return np.empty((alphas.size, 0, 3))
+    lights = source_samples(tree, alphas.size * count, seed)[0] @ yaw_rotation(yaw).T
+    lights = lights.reshape(alphas.size, count, 3)
+    moved = around(lights, np.abs(ggx_cosine(u, alphas[:, None])), turns)
+    return np.where(alphas[:, None, None] > 0, moved, lights)
 
 
 def texel_at(directions, size):
@@ -79,12 +80,12 @@ def yaw_rotation(yaw):
 
 def texel_normals(sizes, texels, yaw):
     """Directions (T, 3) of texel centres in the panorama's axes."""
-    normals = np.empty((texels.face.size, 3))
-    for chart, size in enumerate(sizes):
-        chosen = texels.chart == chart
-        indices = texels.face[chosen], texels.row[chosen], texels.column[chosen]
-        normals[chosen] = cube_directions(size)[indices]
-    return normals @ yaw_rotation(yaw)
+    size = np.asarray(sizes)[texels.chart][:, None]
+    major, right, down = np.moveaxis(FACE_AXES[texels.face], 1, 0)
+    across = (2.0 * texels.column[:, None] + 1.0) / size - 1.0
+    along = (2.0 * texels.row[:, None] + 1.0) / size - 1.0
+    normals = (major + across * right + along * down) @ yaw_rotation(yaw)
+    return normals / np.linalg.norm(normals, axis=1, keepdims=True)
 
 
 def texel_edges(sizes, texels, yaw):
