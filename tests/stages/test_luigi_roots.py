@@ -7,10 +7,10 @@ import textwrap
 
 import luigi
 import pytest
-from tiny_pipeline import TinyPipeline, everything, published, write_sky
 
 import skykiln
 from skykiln.stages.snapshot import Snapshot
+from tiny_pipeline import TinyPipeline, everything, published, write_sky
 
 
 @pytest.fixture

@@ -8,9 +8,9 @@ import sys
 import time
 
 import pytest
-from tiny_pipeline import TinyPipeline, published, write_sky
 
 from skykiln.engine.stamps import read_stamp
+from tiny_pipeline import TinyPipeline, published, write_sky
 
 PROBES = [f"berth_{number}" for number in range(6)]
 
