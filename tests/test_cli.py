@@ -36,7 +36,7 @@ def test_bake_takes_the_pipeline_of_the_working_folder_and_prints_a_line_per_pro
     assert status == ALL_WELL
     *lines, total = out.splitlines()
     assert {line.split(":")[0] for line in lines} == {"all probes", "ferry_noon", "quay_night"}
-    assert re.fullmatch(r"3 rebuilt, 0 unchanged, 0 failed; 15 stages ran in [0-9.]+ s", total)
+    assert re.fullmatch(r"3 rebuilt, 0 unchanged, 0 failed; 17 stages ran in [0-9.]+ s", total)
 
 
 def test_bake_of_bad_source_ends_with_1_and_names_file_and_cause(pipeline, capsys):
@@ -80,9 +80,11 @@ def test_plan_says_in_words_what_would_run_and_why(pipeline, capsys):
     assert status == ALL_WELL
     assert out.splitlines() == [
         "will run: specular level 1 of ferry_noon: roughness was 0.5, is 0.4286",
-        "may run: pack specular.rgba16f.ktx2 of ferry_noon: runs if level 1 changes",
-        "will run: published files of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
-        "2 will run, 1 may run, 5 up to date",
+        "will run: pack specular.rgba16f.ktx2 of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
+        "will run: judgement of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
+        "may run: published files of ferry_noon: runs if judgement, specular.rgba16f.ktx2, "
+        "irradiance.rgba16f.ktx2 or probe.json changes",
+        "3 will run, 1 may run, 5 up to date",
     ]
 
 
@@ -106,9 +108,9 @@ def test_plan_tells_a_whole_chain_in_one_line_and_changes_nothing_on_disk(pipeli
     _, out, _ = _run(capsys, "plan")
     assert out.splitlines() == [
         "will run: BRDF table of all probes: was never baked",
-        "will run: all 7 stages of ferry_noon: was never baked",
-        "will run: all 7 stages of quay_night: was never baked",
-        "15 will run, 0 may run, 0 up to date",
+        "will run: all 8 stages of ferry_noon: was never baked",
+        "will run: all 8 stages of quay_night: was never baked",
+        "17 will run, 0 may run, 0 up to date",
     ]
     assert not pipeline.build.exists()
 
@@ -141,7 +143,7 @@ def test_schema_prints_a_schema_that_takes_the_pipeline(pipeline, capsys):
 def test_again_reruns_one_probe_when_named(pipeline, capsys):
     _run(capsys, "bake")
     _, out, _ = _run(capsys, "bake", "--again", "quay_night")
-    assert out.splitlines()[-1].startswith("2 rebuilt, 0 unchanged, 0 failed; 8 stages ran")
+    assert out.splitlines()[-1].startswith("2 rebuilt, 0 unchanged, 0 failed; 9 stages ran")
 
 
 def _python(code, folder):

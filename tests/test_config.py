@@ -69,6 +69,9 @@ sources:
     each: {stair_02: {exposure_ev: 0.5, extra: {room: stair}}, upper/desk: {recipe: landmark}}
 gates: {}
 """
+PLAIN_PACK = Pack(
+    "specular.rgba16f.ktx2", "ktx2", "rgba16f", "negate_x", 0, "irradiance.rgba16f.ktx2", "rgba16f"
+)
 FILES = ["concourse/stair_02.exr", "concourse/upper/desk.exr", "concourse/upper/lounge.v2.exr"]
 
 
@@ -90,8 +93,7 @@ def test_every_key_of_the_pipeline_file_reaches_the_probe(load):
         tolerance=0.005,
         irradiance_face_size=32,
         irradiance_sh_order=2,
-        irradiance_pixels="rgba16f",
-        packs=(Pack("specular.rgba16f.ktx2", "ktx2", "rgba16f", "negate_x"),),
+        packs=(PLAIN_PACK,),
     )
 
 
@@ -121,7 +123,59 @@ def test_auto_face_size_listed_roughness_and_named_pack(load):
     probe = load(DESIGNED, FILES).probes()[0]
     assert probe.face_size == 0
     assert probe.roughness == (0.0, 0.25, 1.0)
-    assert probe.packs[1] == Pack("specular.unflipped.ktx2", "ktx2", "rgba16f", "direct")
+    assert probe.packs[1] == Pack(
+        "specular.unflipped.ktx2", "ktx2", "rgba16f", "direct", 0, "irradiance.unflipped.ktx2", "rgba16f"
+    )
+
+
+PACKS = """
+skykiln: 1
+cube_axes: negate_z
+recipes:
+  all:
+    face_size: 64
+    specular: {levels: full}
+    irradiance: {pixels: rgb9e5}
+    pack:
+      - {container: ktx2, pixels: bc6h, compress: 19}
+      - {container: dds, pixels: r11g11b10f}
+      - {container: exr, pixels: half}
+      - {container: exr, pixels: float, name: grading, cube_axes: direct}
+sources: {sky: {file: sky.exr, recipe: all}}
+"""
+
+
+def test_packs_name_their_files_by_coding_or_name_and_exr_keeps_its_own_for_irradiance(load):
+    (probe,) = load(PACKS).probes()
+    assert [(pack.name, pack.irradiance, pack.irradiance_pixels) for pack in probe.packs] == [
+        ("specular.bc6h.ktx2", "irradiance.rgb9e5.ktx2", "rgb9e5"),
+        ("specular.r11g11b10f.dds", "irradiance.rgb9e5.dds", "rgb9e5"),
+        ("specular.half.exr", "irradiance.half.exr", "half"),
+        ("specular.grading.exr", "irradiance.grading.exr", "float"),
+    ]
+    assert [pack.compress for pack in probe.packs] == [19, 0, 0, 0]
+    assert [pack.cube_axes for pack in probe.packs] == ["negate_z"] * 3 + ["direct"]
+
+
+def test_full_chain_goes_down_to_one_texel(load):
+    assert load(PACKS).probes()[0].roughness == tuple(level / 6 for level in range(7))
+
+
+@pytest.mark.parametrize(
+    ("text", "size"),
+    [
+        ("8388608", 8 * 2**20),
+        ("8 MiB", 8 * 2**20),
+        ("8MiB", 8 * 2**20),
+        ("1.5 GB", 1_500_000_000),
+        ("900 kB", 900_000),
+        ("3 B", 3),
+    ],
+)
+def test_limits_of_size_are_numbers_of_bytes_or_have_a_unit(load, text, size):
+    head = HEAD + f"gates: {{bytes: {{probe_gpu: {text}}}}}\n"
+    pipeline = load(head + "sources: {sky: {file: sky.hdr, recipe: plain}}")
+    assert pipeline.gates == {"bytes.probe_gpu": size}
 
 
 def test_defaults_are_the_documented_ones(load, tmp_path):

@@ -40,8 +40,10 @@ def lines(**changed):
 
 NUMBERS = "auto, 1, 2, 4, 8, 16, 32, 64, 128, 256, 512, 1024, 2048, 4096"
 
+CODINGS = "rgba16f, rgb9e5, r11g11b10f, bc6h, half, float"
 SETTINGS = "layout, yaw_deg, exposure_ev, horizontal_lux, extra, file, recipe"
 RISING = "allowed: numbers that start with 0 and rise to at most 1"
+SIZES = "a number of bytes such as 8388608, or a size such as 8 MiB or 1.5 GB"
 OUTSIDE = "allowed: a folder that doesn't hold the pipeline file"
 
 VALUES = [
@@ -52,10 +54,10 @@ VALUES = [
     ("colour.working", "acescg", "found 'acescg'; allowed: rec709"),
     ("colour.working", "rec2020", "found 'rec2020'; allowed: rec709"),
     ("sun.action", "separate", "found 'separate'; allowed: keep"),
-    ("specular.levels", "0", "found 0; allowed: a whole number from 1 to 13"),
-    ("specular.levels", "14", "found 14; allowed: a whole number from 1 to 13"),
-    ("specular.levels", "many", "found 'many'; allowed: a whole number from 1 to 13"),
-    ("specular.levels", "7.5", "found 7.5; allowed: a whole number from 1 to 13"),
+    ("specular.levels", "0", "found 0; allowed: a whole number from 1 to 13 or full"),
+    ("specular.levels", "14", "found 14; allowed: a whole number from 1 to 13 or full"),
+    ("specular.levels", "many", "found 'many'; allowed: a whole number from 1 to 13 or full"),
+    ("specular.levels", "7.5", "found 7.5; allowed: a whole number from 1 to 13 or full"),
     ("specular.tolerance", "0", "found 0; allowed: a number above 0.0001 and below 0.5"),
     ("specular.tolerance", ".nan", "found NaN; allowed: a number above 0.0001 and below 0.5"),
     ("specular.tolerance", "1", "found 1; allowed: a number above 0.0001 and below 0.5"),
@@ -72,9 +74,12 @@ VALUES = [
     ("irradiance.face_size", "33", "found 33; allowed: 1, 2, 4, 8, 16, 32, 64, 128, 256"),
     ("irradiance.sh_order", "3", "found 3; allowed: 2"),
     ("irradiance.sh_order", "true", "found true; allowed: 2"),
-    ("irradiance.pixels", "bc6h", "found 'bc6h'; allowed: rgba16f"),
-    ("pack[0].container", "dds", "found 'dds'; allowed: ktx2"),
-    ("pack[0].pixels", "rgb9e5", "found 'rgb9e5'; allowed: rgba16f"),
+    ("irradiance.pixels", "bc6h", "found 'bc6h'; allowed: rgba16f, rgb9e5, r11g11b10f"),
+    ("pack[0].container", "png", "found 'png'; allowed: ktx2, dds, exr"),
+    ("pack[0].pixels", "bc7", f"found 'bc7'; allowed: {CODINGS}"),
+    ("pack[0].pixels", "half", "found 'half'; allowed in ktx2: rgba16f, rgb9e5, r11g11b10f, bc6h"),
+    ("pack[0].compress", "23", "found 23; allowed: a whole number from 1 to 22 or null"),
+    ("pack[0].compress", "true", "found true; allowed: a whole number from 1 to 22 or null"),
     ("pack[0].cube_axes", "up", "found 'up'; allowed: negate_x, negate_z, direct or null"),
     ("pack[0].name", "../x", "found '../x'; allowed: text that matches ^[A-Za-z0-9_-]{1,64}$ or null"),
 ]
@@ -131,7 +136,13 @@ def test_wrong_setting_of_a_source_is_told_at_its_line(problems, setting, told):
         ("skykiln: true", "skykiln: found true; allowed: 1"),
         ("brdf: {size: 2}\nskykiln: 1", "brdf.size: found 2; allowed: a whole number from 4 to 1024"),
         ("cube_axes: up\nskykiln: 1", "cube_axes: found 'up'; allowed: negate_x, negate_z, direct"),
-        ("gates: {audit: 1}\nskykiln: 1", "gates.audit: unknown key; known here: none"),
+        ("gates: {audit: 1}\nskykiln: 1", "gates.audit: unknown key; known here: bytes"),
+        (
+            "gates: {bytes: {probe_gpu: 8 megs}}\nskykiln: 1",
+            f"gates.bytes.probe_gpu: found '8 megs'; allowed: {SIZES}",
+        ),
+        ("gates: {bytes: {night_disk: 0}}\nskykiln: 1", f"gates.bytes.night_disk: found 0; allowed: {SIZES}"),
+        ("gates: {bytes: {probe_gpu: .5}}\nskykiln: 1", f"gates.bytes.probe_gpu: found 0.5; allowed: {SIZES}"),
         ("cube_axis: direct\nskykiln: 1", "cube_axis: unknown key; did you mean 'cube_axes'?"),
         ("source: {}\nskykiln: 1", "source: unknown key; did you mean 'sources'?"),
         ("build_dir: .\nskykiln: 1", f"build_dir: found '.'; {OUTSIDE}"),
@@ -181,6 +192,48 @@ def test_same_pack_twice_needs_a_name(problems):
     ]
 
 
+def pack_lines(*entries):
+    return lines(recipe="\n".join(["recipes:\n  plain:\n    pack:", *(f"      - {{{e}}}" for e in entries)]))
+
+
+@pytest.mark.parametrize(
+    ("entry", "told"),
+    [
+        ("container: exr, pixels: bc6h", "pixels: found 'bc6h'; allowed in exr: half, float"),
+        (
+            "container: dds, pixels: float",
+            "pixels: found 'float'; allowed in dds: rgba16f, rgb9e5, r11g11b10f, bc6h",
+        ),
+        ("container: dds, pixels: bc6h, compress: 3", "compress: found 3; allowed in ktx2 alone"),
+        ("container: exr, pixels: half, compress: 3", "compress: found 3; allowed in ktx2 alone"),
+    ],
+)
+def test_containers_take_their_own_codings_and_only_ktx2_is_compressed(problems, entry, told):
+    assert problems(pack_lines(entry)) == [f"pipeline.yaml:5: recipes.plain.pack[0].{told}"]
+
+
+def test_packs_that_would_share_an_irradiance_file_agree_on_cube_axes(problems):
+    one, other = "container: ktx2, pixels: rgba16f", "container: ktx2, pixels: bc6h, cube_axes: direct"
+    assert problems(pack_lines(one, other)) == [
+        "pipeline.yaml:6: recipes.plain.pack[1]: gives the file irradiance.rgba16f.ktx2 as pack[0] does, "
+        "with another cube_axes; give one a name:"
+    ]
+
+
+def test_full_chain_of_an_automatic_face_size_is_refused(problems):
+    assert problems(lines(recipe="recipes:\n  plain:\n    specular:\n      levels: full")) == [
+        "pipeline.yaml:5: recipes.plain.specular.levels: found 'full' with face_size auto; "
+        "allowed: a whole number, or give face_size a number"
+    ]
+
+
+def test_list_of_roughness_must_fit_a_full_chain(problems):
+    recipe = "recipes:\n  plain:\n    face_size: 4\n    specular: {levels: full, roughness: [0, 1]}"
+    assert problems(lines(recipe=recipe)) == [
+        "pipeline.yaml:5: recipes.plain.specular.roughness: found 2 numbers; allowed: one per level, 3"
+    ]
+
+
 def test_empty_pack_list_is_refused(problems):
     assert problems(lines(recipe="recipes: {plain: {pack: []}}")) == [
         "pipeline.yaml:2: recipes.plain.pack: found an empty list; allowed: a list with at least 1 item"
@@ -189,7 +242,9 @@ def test_empty_pack_list_is_refused(problems):
 
 def test_pack_without_its_pixels_is_told_what_is_missing(problems):
     assert problems(lines(recipe="recipes:\n  plain:\n    pack:\n      - {container: ktx2}")) == [
-        "pipeline.yaml:5: recipes.plain.pack[0].pixels: missing. Pixel coding of the specular chain."
+        "pipeline.yaml:5: recipes.plain.pack[0].pixels: missing. Pixel coding of the specular chain: "
+        "half or float for exr, one of the others for ktx2 and dds. "
+        "bc6h needs the extra: pip install 'skykiln[bc6h]'."
     ]
 
 
@@ -266,7 +321,7 @@ recipes:
     face_size: 300
     specular: {level: 8}
     pack:
-      - {container: dds, pixels: rgba16f}
+      - {container: png, pixels: rgba16f}
   interior:
     face_size: 32
     sun: {action: separate}

@@ -18,7 +18,9 @@ PACKED = {
     "pixels": "rgba16f",
     "cube_axes": "negate_x",
     "bytes": 1000,
+    "gpu_bytes": 2000,
     "digest": DIGEST,
+    "coding_error": {"flux": 0.0001, "log2_rms": 0.01},
 }
 PROBE = {
     "schema": 1,
@@ -41,8 +43,8 @@ PROBE = {
     "storage_ev": 0,
     "specular": {
         "levels": [
-            {"level": 0, "roughness": 0.0, "face_size": 64},
-            {"level": 1, "roughness": 1.0, "face_size": 32},
+            {"level": 0, "roughness": 0.0, "face_size": 64, "seam": 1.2},
+            {"level": 1, "roughness": 1.0, "face_size": 1, "seam": None},
         ],
         "files": [PACKED],
     },
@@ -59,6 +61,7 @@ PROBE = {
         "horizontal_illuminance": 2.0,
         "lost_to_clamping": 0.0,
     },
+    "bytes": {"disk": 1000, "gpu": 2000},
     "audit": None,
 }
 BRDF = {
@@ -73,23 +76,37 @@ BRDF = {
     "average_albedo": [1.0, 0.9, 0.7, 0.5],
 }
 STAGE = {"stage": "specular level 3", "reason": "roughness was 0.4286, is 0.4", "seconds": 0.2}
+HEAVY = {"gate": "bytes.probe_gpu", "why": "5 MiB on the GPU, the limit is 4 MiB"}
+NIGHT_ENTRY = {
+    "state": "unchanged",
+    "stages": [],
+    "failure": None,
+    "gates": [],
+    "accepted": False,
+    "bytes": {"disk": 500, "gpu": 1000},
+}
 NIGHT = {
     "schema": 1,
     "skykiln": "0.1.0",
     "started": "2031-05-01T02:00:00+02:00",
     "seconds": 12.5,
     "exit_status": 1,
-    "totals": {"probes": 3, "rebuilt": 1, "unchanged": 1, "failed": 1},
+    "totals": {"probes": 4, "rebuilt": 1, "unchanged": 1, "held": 1, "failed": 1},
+    "bytes": {"disk": 1000, "gpu": 2000},
+    "gates": [{"gate": "bytes.night_disk", "why": "2 GiB on disk, the limit is 1 GiB"}],
     "stages_run": 1,
     "probes": [
-        {"name": "ferry_noon", "state": "rebuilt", "stages": [STAGE], "failure": None},
-        {"name": "night_quay", "state": "unchanged", "stages": [], "failure": None},
+        {**NIGHT_ENTRY, "name": "ferry_noon", "state": "rebuilt", "stages": [STAGE]},
+        {**NIGHT_ENTRY, "name": "night_quay", "gates": [HEAVY], "accepted": True},
         {
+            **NIGHT_ENTRY,
             "name": "overcast_quay",
             "state": "failed",
             "stages": [],
             "failure": {"file": "overcast_quay.exr", "stage": "DecodeSource", "cause": "the file ends early"},
+            "bytes": None,
         },
+        {**NIGHT_ENTRY, "name": "pier", "state": "held", "gates": [HEAVY]},
     ],
 }
 PIPELINE = yaml.safe_load("""
@@ -131,6 +148,15 @@ MISTAKES = [
     ("night", ("probes", 0, "stages"), []),
     ("night", ("probes", 1, "stages"), [STAGE]),
     ("night", ("probes", 2, "failure"), None),
+    ("night", ("probes", 3, "gates"), []),
+    ("night", ("probes", 3, "accepted"), True),
+    ("night", ("gates", 0, "why"), ""),
+    ("night", ("bytes", "disk"), -1),
+    ("probe", ("specular", "levels", 0, "seam"), -1),
+    ("probe", ("specular", "files", 0, "pixels"), "rg16f"),
+    ("probe", ("irradiance", "files", 0, "pixels"), "bc6h"),
+    ("pipeline", ("gates", "bytes"), {"probe_gpu": "8 megs"}),
+    ("pipeline", ("recipes", "plain", "pack"), [{"container": "ktx2", "pixels": "rgba16f", "compress": 23}]),
     ("night", ("probes", 0, "stages", 0, "seconds"), -1),
 ]
 

@@ -47,7 +47,7 @@ class TinyPipeline:
 
     def bake(self, *names, workers=1, again=False):
         """Bake. Returns: the labels of the stages that ran."""
-        self.night = bake(self.snapshot(*names), workers, again, False, shown=nothing_shown)
+        self.night, _ = bake(self.snapshot(*names), workers, again, False, shown=nothing_shown)
         return [stage.label for outcome in self.night.outcomes for stage, _ in outcome.ran]
 
     def plan(self):

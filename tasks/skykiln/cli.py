@@ -4,9 +4,7 @@ import argparse
 import json
 import sys
 
-from .errors import PipelineError, SkykilnError
-
-ALL_WELL, SOURCE_FAILED, WRONG = 0, 1, 2
+from .errors import ALL_WELL, SOURCE_FAILED, WRONG, PipelineError, SkykilnError
 
 
 def main(arguments=None) -> int:
@@ -37,12 +35,27 @@ def _bake(options):
     from .stages.nights import bake
 
     snapshot = _snapshot(options)
-    night = bake(snapshot, options.workers, options.again, options.verbose, shown)
+    if options.accept:
+        _accept(options.names, snapshot)
+    night, record = bake(snapshot, options.workers, options.again, options.verbose, shown)
     for owner, failure in night.failures:
         cause = failure.traceback or failure.cause.replace(f"{snapshot.pipeline.root}/", "")
         print(f"{owner}: {cause}", file=sys.stderr)
+    for owner, sentences in night.held:
+        print(f"{owner}: held: {'; '.join(sentences)}", file=sys.stderr)
+    for gate in record["gates"]:
+        print(f"the night: {gate['gate']}: {gate['why']}", file=sys.stderr)
     print(night_sentence(night))
-    return SOURCE_FAILED if night.failures else ALL_WELL
+    return record["exit_status"]
+
+
+def _accept(names, snapshot):
+    from .stages.nights import accept_held
+
+    if not names:
+        raise PipelineError(["--accept: name the probes whose held files are to be published, or '*'"])
+    if not accept_held(snapshot):
+        print(f"nothing is held of {', '.join(names)}", file=sys.stderr)
 
 
 def _plan(options):
@@ -89,6 +102,9 @@ def _parser():
     bake = _command(commands, "bake", _bake, "bring probes up to date and publish them")
     _names(bake, "*")
     bake.add_argument("--again", action="store_true", help="run every stage, up to date or not")
+    bake.add_argument(
+        "--accept", action="store_true", help="publish what a gate holds of the probes named, as it is packed"
+    )
     bake.add_argument(
         "--workers", type=_positive, default=1, metavar="N", help="processes that share the cores (1)"
     )

@@ -1,4 +1,9 @@
-"""The errors whose message alone is shown to the user; anything else is a bug and keeps its traceback."""
+"""The errors whose message alone is shown to the user; anything else is a bug and keeps its traceback.
+
+And how the command ends: its exit statuses.
+"""
+
+ALL_WELL, SOURCE_FAILED, WRONG, GATE_BROKEN = 0, 1, 2, 3
 
 
 class SkykilnError(Exception):

@@ -4,9 +4,9 @@ import os
 
 import numpy as np
 import pytest
-from tiny_pipeline import TinyPipeline, published, sky_pixels, write_sky
 
 from skykiln.engine.stage import Stage
+from tiny_pipeline import TinyPipeline, published, sky_pixels, write_sky
 
 
 def _cut(path):
@@ -39,7 +39,7 @@ def test_bad_source_is_named_and_the_others_are_baked(tmp_path, spoil, workers):
     pipeline.bake(workers=workers)
     record = pipeline.night_record()
     assert record["exit_status"] == 1
-    assert record["totals"] == {"probes": 3, "rebuilt": 2, "unchanged": 0, "failed": 1}
+    assert record["totals"] == {"probes": 3, "rebuilt": 2, "unchanged": 0, "held": 0, "failed": 1}
     entry = record["probes"][1]
     assert (entry["name"], entry["state"], entry["stages"]) == ("ferry_noon", "failed", [])
     assert entry["failure"]["file"] == "ferry_noon.exr"

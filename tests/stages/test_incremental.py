@@ -17,6 +17,7 @@ CHAIN = [
     "specular level 1 of ferry_noon",
     "specular level 2 of ferry_noon",
     "pack specular.rgba16f.ktx2 of ferry_noon",
+    "judgement of ferry_noon",
     "published files of ferry_noon",
 ]
 
@@ -42,7 +43,8 @@ def test_second_bake_runs_nothing_and_leaves_every_file_alone(pipeline):
     assert pipeline.bake() == []
     assert everything(pipeline.build) == before
     assert pipeline.night_record() != first_night
-    assert pipeline.night_record()["totals"] == {"probes": 2, "rebuilt": 0, "unchanged": 2, "failed": 0}
+    totals = {"probes": 2, "rebuilt": 0, "unchanged": 2, "held": 0, "failed": 0}
+    assert pipeline.night_record()["totals"] == totals
 
 
 def test_edited_sky_reruns_its_chain_alone(pipeline):
@@ -54,8 +56,8 @@ def test_one_level_s_roughness_reruns_that_level_its_packing_and_publishing(pipe
     pipeline.settings["sources"].pop("quay_night")
     pipeline.recipe["specular"]["roughness"] = [0, 0.4, 1]
     assert pipeline.plan()["specular level 1 of ferry_noon"] == (WILL_RUN, "roughness was 0.5, is 0.4")
-    assert pipeline.plan()["pack specular.rgba16f.ktx2 of ferry_noon"] == (MAY_RUN, "runs if level 1 changes")
-    assert pipeline.bake() == [CHAIN[3], CHAIN[5], CHAIN[6]]
+    assert pipeline.plan()["published files of ferry_noon"][0] == MAY_RUN
+    assert pipeline.bake() == [CHAIN[3], CHAIN[5], CHAIN[6], CHAIN[7]]
 
 
 def test_touched_source_reruns_nothing(pipeline):
@@ -83,11 +85,13 @@ def test_reordered_and_commented_pipeline_reruns_nothing(pipeline):
 def test_equal_pixels_under_another_header_rerun_decoding_and_rewrite_probe_json(pipeline):
     write_sky(pipeline.folder / "ferry_noon.exr", seed=0, comments="exported again")
     before = everything(pipeline.build)
-    assert pipeline.bake() == [CHAIN[0], CHAIN[6]]
+    assert pipeline.bake() == [CHAIN[0], CHAIN[6], CHAIN[7]]
     after = everything(pipeline.build)
     changed = {name for name in after if after[name] != before.get(name)}
     assert {name for name in changed if not name.endswith((".stamp", ".pins.json"))} == {
         "work/ferry_noon/source.json",
+        "work/ferry_noon/record.json",
+        "work/ferry_noon/judgement.json",
         "probes/ferry_noon/probe.json",
     }
 
@@ -98,7 +102,7 @@ def test_another_pack_runs_its_packing_and_the_publishing(pipeline):
         {"container": "ktx2", "pixels": "rgba16f"},
         {"container": "ktx2", "pixels": "rgba16f", "name": "mirrored", "cube_axes": "direct"},
     ]
-    assert pipeline.bake() == ["pack specular.mirrored.ktx2 of ferry_noon", CHAIN[6]]
+    assert pipeline.bake() == ["pack specular.mirrored.ktx2 of ferry_noon", CHAIN[6], CHAIN[7]]
 
 
 def test_dropped_pack_takes_its_published_files_along(pipeline):
@@ -116,11 +120,15 @@ def test_dropped_pack_takes_its_published_files_along(pipeline):
 
 def test_extra_and_the_recipe_s_name_only_touch_probe_json(pipeline):
     pipeline.settings["sources"]["ferry_noon"]["extra"] = {"position": [1, 2, 3]}
-    assert pipeline.bake() == ["published files of ferry_noon"]
+    assert pipeline.bake() == ["judgement of ferry_noon", "published files of ferry_noon"]
     pipeline.settings["recipes"]["renamed"] = pipeline.settings["recipes"].pop("tiny")
     for source in pipeline.settings["sources"].values():
         source["recipe"] = "renamed"
-    assert pipeline.bake() == ["published files of ferry_noon", "published files of quay_night"]
+    assert pipeline.bake() == [
+        f"{title} of {name}"
+        for name in ("ferry_noon", "quay_night")
+        for title in ("judgement", "published files")
+    ]
 
 
 def test_spoiled_and_deleted_outputs_come_back(pipeline):

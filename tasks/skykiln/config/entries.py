@@ -5,20 +5,23 @@ A wrong key is reported and the rest of its entry judged on without it, so that 
 
 import itertools
 
-from .expand import pack_name
-from .model import FileSource, GlobSource, Recipe
+from .expand import chain_length, pack_of
+from .model import CODINGS, FileSource, GlobSource, Recipe
 from .problems import nearest, shown, validated
 
 
-def valid_recipes(entries, report):
-    """Recipe objects by name; `report(path, text)` is called for each mistake."""
+def valid_recipes(entries, cube_axes, report):
+    """Recipe objects by name; `report(path, text)` is called for each mistake.
+
+    Parameters: cube_axes : those at the top of the file
+    """
     recipes = {}
     for name, entry in entries.items():
         path = ("recipes", name)
         recipe, wrong = _judged(Recipe, entry, path, report)
         if recipe is not None:
             recipes[name] = recipe
-            for steps, text in _recipe_faults(recipe, wrong):
+            for steps, text in _recipe_faults(recipe, wrong, cube_axes):
                 report((*path, *steps), text)
     return recipes
 
@@ -53,41 +56,62 @@ def _judged(model, entry, path, report):
     return judged, wrong
 
 
-def _recipe_faults(recipe, wrong):
+def _recipe_faults(recipe, wrong, cube_axes):
     if "specular" not in wrong:
-        yield from _roughness_faults(recipe.specular)
+        levels = None if "face_size" in wrong else chain_length(recipe)
+        yield from _roughness_faults(recipe.specular.roughness, levels)
     if not wrong & {"specular", "face_size"}:
         yield from _level_faults(recipe)
     if "pack" not in wrong:
-        yield from _pack_faults(recipe.pack)
+        yield from _coding_faults(recipe.pack)
+        yield from _pack_faults(recipe, cube_axes)
 
 
 def _level_faults(recipe):
-    levels, size = recipe.specular.levels, recipe.face_size
-    if size != "auto" and levels > size.bit_length():
+    steps, size, levels = ("specular", "levels"), recipe.face_size, chain_length(recipe)
+    if levels is None:
+        yield steps, "found 'full' with face_size auto; allowed: a whole number, or give face_size a number"
+    elif size != "auto" and levels > size.bit_length():
         most = f"a face of {size} texels has at most {size.bit_length()} levels, down to 1 texel"
-        yield ("specular", "levels"), f"found {levels}; {most}"
+        yield steps, f"found {levels}; {most}"
 
 
-def _roughness_faults(specular):
-    steps, numbers = ("specular", "roughness"), specular.roughness
+def _roughness_faults(numbers, levels):
+    """`levels` is None where it isn't known."""
+    steps = ("specular", "roughness")
     if numbers == "linear":
         return
-    if len(numbers) != specular.levels:
-        yield steps, f"found {len(numbers)} numbers; allowed: one per level, {specular.levels}"
+    if len(numbers) != (levels or len(numbers)):
+        yield steps, f"found {len(numbers)} numbers; allowed: one per level, {levels}"
     rising = all(low < high for low, high in itertools.pairwise(numbers))
     if not (numbers[0] == 0 and rising and numbers[-1] <= 1):
         found = ", ".join(f"{number:g}" for number in numbers)
         yield steps, f"found {found}; allowed: numbers that start with 0 and rise to at most 1"
 
 
-def _pack_faults(entries):
-    first = {}
+def _coding_faults(entries):
     for index, entry in enumerate(entries):
-        name = pack_name(entry)
-        other = first.setdefault(name.casefold(), index)
+        container, allowed = entry.container, CODINGS[entry.container]
+        if entry.pixels not in allowed:
+            text = f"found {shown(entry.pixels)}; allowed in {container}: {', '.join(allowed)}"
+            yield ("pack", index, "pixels"), text
+        if entry.compress and container != "ktx2":
+            yield ("pack", index, "compress"), f"found {entry.compress}; allowed in ktx2 alone"
+
+
+def _pack_faults(recipe, cube_axes):
+    """Two packs may not give one file, unless it is the same irradiance."""
+    packs = [pack_of(entry, recipe.irradiance.pixels, cube_axes) for entry in recipe.pack]
+    first, first_irradiance = {}, {}
+    for index, pack in enumerate(packs):
+        other = first.setdefault(pack.name.casefold(), index)
         if other != index:
-            yield ("pack", index), f"gives the file {name} as pack[{other}] does; give one a name:"
+            yield ("pack", index), f"gives the file {pack.name} as pack[{other}] does; give one a name:"
+            continue
+        other = first_irradiance.setdefault(pack.irradiance.casefold(), index)
+        if pack.cube_axes != packs[other].cube_axes:
+            text = f"gives the file {pack.irradiance} as pack[{other}] does, with another cube_axes"
+            yield ("pack", index), f"{text}; give one a name:"
 
 
 def _source(entry, path, report):

@@ -108,26 +108,39 @@ def _recipe_part(head, recipe: Recipe):
     """The fields of a probe that its recipe decides."""
     specular, irradiance = recipe.specular, recipe.irradiance
     linear = specular.roughness == "linear"
+    levels = chain_length(recipe) or 1  # a chain of unknown length has been reported
     return {
         "working": recipe.colour.working,
         "sun_action": recipe.sun.action,
         "face_size": 0 if recipe.face_size == "auto" else recipe.face_size,
-        "roughness": linear_roughness(specular.levels) if linear else tuple(specular.roughness),
+        "roughness": linear_roughness(levels) if linear else tuple(specular.roughness),
         "tolerance": specular.tolerance,
         "irradiance_face_size": irradiance.face_size,
         "irradiance_sh_order": irradiance.sh_order,
-        "irradiance_pixels": irradiance.pixels,
-        "packs": tuple(_pack(entry, head.cube_axes) for entry in recipe.pack),
+        "packs": tuple(pack_of(entry, irradiance.pixels, head.cube_axes) for entry in recipe.pack),
     }
 
 
-def pack_name(entry):
-    """File name of a pack's specular chain: its own name stands where the pixel coding would."""
-    return f"specular.{entry.name or entry.pixels}.{entry.container}"
+def chain_length(recipe: Recipe):
+    """Number of levels of a recipe's chain; None for a full one of faces whose size isn't known yet."""
+    levels, size = recipe.specular.levels, recipe.face_size
+    if levels != "full":
+        return levels
+    return None if size == "auto" else size.bit_length()
 
 
-def _pack(entry, cube_axes):
-    return Pack(pack_name(entry), entry.container, entry.pixels, entry.cube_axes or cube_axes)
+def pack_of(entry, irradiance_pixels, cube_axes):
+    """The Pack of an entry: its own name stands in the names of files where the pixel coding would."""
+    own = entry.pixels if entry.container == "exr" else irradiance_pixels
+    return Pack(
+        name=f"specular.{entry.name or entry.pixels}.{entry.container}",
+        container=entry.container,
+        pixels=entry.pixels,
+        cube_axes=entry.cube_axes or cube_axes,
+        compress=entry.compress or 0,
+        irradiance=f"irradiance.{entry.name or own}.{entry.container}",
+        irradiance_pixels=own,
+    )
 
 
 def _probe(source, member, recipe, recipe_part):

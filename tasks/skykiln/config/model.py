@@ -4,6 +4,7 @@ A value that is not listed here is an error. Descriptions are written for the pe
 """
 
 import math
+import re
 from typing import Annotated, Any, Literal
 
 from pydantic import (
@@ -21,11 +22,32 @@ CubeAxes = Literal["negate_x", "negate_z", "direct"]
 FaceSize = Literal["auto", 1, 2, 4, 8, 16, 32, 64, 128, 256, 512, 1024, 2048, 4096]
 SmallFaceSize = Literal[1, 2, 4, 8, 16, 32, 64, 128, 256]
 
+# Which pixel codings a container takes.
+CODINGS = {
+    "ktx2": ("rgba16f", "rgb9e5", "r11g11b10f", "bc6h"),
+    "dds": ("rgba16f", "rgb9e5", "r11g11b10f", "bc6h"),
+    "exr": ("half", "float"),
+}
+
 ROUGHNESS_SCHEMA = {
     "anyOf": [
         {"const": "linear"},
         {"type": "array", "items": {"type": "number", "minimum": 0, "maximum": 1}, "minItems": 1},
     ]
+}
+
+UNITS = {
+    **{"B": 1, "kB": 1000, "MB": 1000**2, "GB": 1000**3, "TB": 1000**4},
+    **{"KiB": 1024, "MiB": 1024**2, "GiB": 1024**3, "TiB": 1024**4},
+}
+SIZE = re.compile(rf"([0-9]+(?:\.[0-9]+)?) ?({'|'.join(UNITS)})")
+SIZE_SCHEMA = {
+    "anyOf": [
+        {"type": "integer", "minimum": 1},
+        {"type": "string", "pattern": f"^{SIZE.pattern}$"},
+        {"type": "null"},
+    ],
+    "examples": [8388608, "8 MiB", "1.5 GB"],
 }
 
 
@@ -56,7 +78,18 @@ def _finite(value):
     return value
 
 
+def _size(value):
+    """A number of bytes, or None; from a number or a text with a unit."""
+    if value is None or (type(value) is int and value > 0):
+        return value
+    found = SIZE.fullmatch(value) if isinstance(value, str) else None
+    if found is None or float(found[1]) == 0:
+        raise PydanticCustomError("size", "not a size")
+    return round(float(found[1]) * UNITS[found[2]])
+
+
 Roughness = Annotated[Any, PlainValidator(_roughness), WithJsonSchema(ROUGHNESS_SCHEMA)]
+Size = Annotated[Any, PlainValidator(_size), WithJsonSchema(SIZE_SCHEMA)]
 Extra = Annotated[dict[str, Any], BeforeValidator(_finite)]
 Path = Annotated[str, StringConstraints(min_length=1)]
 
@@ -82,8 +115,10 @@ class Sun(Section):
 class Specular(Section):
     """The chain of GGX-filtered mip levels."""
 
-    levels: int = Field(
-        8, ge=1, le=13, description="Number of mip levels; level 0 is the unfiltered mirror."
+    levels: Annotated[int, Field(ge=1, le=13)] | Literal["full"] = Field(
+        8,
+        description="Number of mip levels; level 0 is the unfiltered mirror. full: down to 1 texel, "
+        "for a face_size that is a number.",
     )
     roughness: Roughness = Field(
         "linear",
@@ -107,14 +142,27 @@ class Irradiance(Section):
     sh_order: Annotated[Literal[2], BeforeValidator(_whole)] = Field(
         2, description="Order of the spherical harmonics in probe.json; 2 gives nine rows."
     )
-    pixels: Literal["rgba16f"] = Field("rgba16f", description="Pixel coding of the irradiance cube.")
+    pixels: Literal["rgba16f", "rgb9e5", "r11g11b10f"] = Field(
+        "rgba16f", description="Pixel coding of the irradiance cube; packs to exr use their own."
+    )
 
 
 class PackEntry(Section):
     """One pair of container and pixel coding that a probe is packed to."""
 
-    container: Literal["ktx2"] = Field(description="Texture container.")
-    pixels: Literal["rgba16f"] = Field(description="Pixel coding of the specular chain.")
+    container: Literal["ktx2", "dds", "exr"] = Field(
+        description="ktx2 and dds: textures for renderers; exr: one part per level, for programs that "
+        "compose and grade."
+    )
+    pixels: Literal["rgba16f", "rgb9e5", "r11g11b10f", "bc6h", "half", "float"] = Field(
+        description="Pixel coding of the specular chain: half or float for exr, one of the others for "
+        "ktx2 and dds. bc6h needs the extra: pip install 'skykiln[bc6h]'."
+    )
+    compress: Annotated[int, Field(ge=1, le=22)] | None = Field(
+        None,
+        description="Packs every level of a ktx2 chain with Zstandard: from 1, quick, to 22, small. "
+        "The irradiance cube stays plain. null: nothing is packed.",
+    )
     cube_axes: CubeAxes | None = Field(
         None, description="Overrides the cube_axes at the top of the file for this pack; null does not."
     )
@@ -200,8 +248,28 @@ class Brdf(Section):
     size: int = Field(128, ge=4, le=1024, description="Edge of the BRDF table in texels.")
 
 
+class ByteGates(Section):
+    """Limits of size."""
+
+    probe_gpu: Size = Field(
+        None, description="What the largest pack of a probe may take on the GPU, its irradiance counted."
+    )
+    night_disk: Size = Field(
+        None, description="What the published files of all probes may take on disk. Holds no single probe."
+    )
+
+
 class Gates(Section):
     """Limits; a probe that crosses one is held."""
+
+    bytes: ByteGates = Field(
+        ByteGates(), description="Limits of size: a number of bytes, or a size such as 8 MiB or 1.5 GB."
+    )
+
+    def limits(self) -> dict:
+        """The limits that are given, by their dotted keys below `gates`."""
+        sections = self.model_dump(exclude_none=True)
+        return {f"{name}.{key}": limit for name, keys in sections.items() for key, limit in keys.items()}
 
 
 class PipelineHead(Section):

@@ -20,7 +20,7 @@ class Pipeline:
     """A valid pipeline file.
 
     path : as given; root : its folder, absolute; build_dir : absolute
-    recipes : name -> Recipe; gates : the limits, a mapping
+    recipes : name -> Recipe; gates : the limits that are given, by their dotted keys below `gates`
     """
 
     path: Path
@@ -98,11 +98,11 @@ def _pipeline(path, data, report):
     head = _head(rest, report)
     build_dir = _build_dir(head, root, report)
     raw_recipes, raw_sources = (_section(data, key, report) for key in ("recipes", "sources"))
-    recipes = valid_recipes(raw_recipes, report)
+    recipes = valid_recipes(raw_recipes, head.cube_axes, report)
     sources = valid_sources(raw_sources, raw_recipes, report)
     probes = expanded_probes(head, recipes, sources, root, build_dir, report)
     return Pipeline(
-        path, root, build_dir, head.cube_axes, head.brdf.size, head.gates.model_dump(), recipes, probes
+        path, root, build_dir, head.cube_axes, head.brdf.size, head.gates.limits(), recipes, probes
     )
 
 

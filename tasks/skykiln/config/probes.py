@@ -16,12 +16,18 @@ def canonical_json(value) -> str:
 
 @dataclasses.dataclass(frozen=True)
 class Pack:
-    """One entry of a recipe's `pack` list; `name` is the specular file's."""
+    """One entry of a recipe's `pack` list; `name` is the specular file's.
+
+    Packs may share an irradiance file: then they agree on all that decides it.
+    """
 
     name: str
     container: str
     pixels: str
     cube_axes: str
+    compress: int  # 0: not
+    irradiance: str  # the irradiance file's name
+    irradiance_pixels: str
 
 
 @dataclasses.dataclass(frozen=True)
@@ -43,7 +49,6 @@ class Probe:
     tolerance: float
     irradiance_face_size: int
     irradiance_sh_order: int
-    irradiance_pixels: str
     packs: tuple[Pack, ...]
 
     def to_json(self) -> str:

@@ -118,6 +118,9 @@ def _resolved(node, whole):
 
 def _allowed(schema):
     """What a value may be, in words, from its JSON Schema."""
+    if "examples" in schema:
+        number, *texts = schema["examples"]
+        return f"a number of bytes such as {number}, or a size such as {' or '.join(texts)}"
     if "anyOf" in schema:
         return " or ".join(_allowed(branch) for branch in schema["anyOf"])
     if "enum" in schema or "const" in schema:

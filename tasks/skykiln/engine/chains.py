@@ -3,7 +3,7 @@
 from typing import NamedTuple
 
 from .stage import Stage
-from .staleness import Verdict, staleness
+from .staleness import HELD, Verdict, staleness
 
 
 class Chain(NamedTuple):
@@ -15,7 +15,13 @@ class Chain(NamedTuple):
     @property
     def stale(self) -> list[Verdict]:
         """The stages that will or may run."""
-        return [verdict for verdict in self.verdicts if not verdict.up_to_date]
+        return [verdict for verdict in self.verdicts if not verdict.settled]
+
+    @property
+    def held_by(self) -> tuple:
+        """Why the target is held; empty when it isn't."""
+        last = self.verdicts[-1]
+        return last.reasons if last.state == HELD else ()
 
 
 def chain_of(target: Stage) -> Chain:

@@ -32,7 +32,7 @@ def bake_depth_first(stage, memo: dict):
     for dependency in stage.requires().values():
         bake_depth_first(dependency, memo)
     verdict = staleness(stage, memo)
-    if not verdict.up_to_date:
+    if not verdict.settled:
         run_stage(stage, verdict)
         del memo[stage.stamp_path]
         staleness(stage, memo)

@@ -9,9 +9,11 @@ from .atomic import sweep, write_atomically
 from .chains import Chain, chain_of
 from .digests import json_bytes
 from .failures import Failure, forget_failure, read_failure
+from .staleness import HELD
 from .stamps import read_stamp
 
 UNCHANGED, REBUILT, FAILED = "unchanged", "rebuilt", "failed"
+STATES = (REBUILT, UNCHANGED, HELD, FAILED)
 
 
 def now() -> str:
@@ -24,6 +26,7 @@ class Outcome:
 
     chain : its chain as it was judged before; ran : the new stamps, with the stages they are of
     failure : why it is not up to date, or None
+    held_by : the sentences that hold it back, if any
     """
 
     def __init__(self, before: Chain):
@@ -31,12 +34,16 @@ class Outcome:
         self.target = before.target
         stamps = [(verdict, read_stamp(verdict.stage.stamp_path)) for verdict in stale]
         self.ran = [(verdict.stage, stamp) for verdict, stamp in stamps if stamp not in (None, verdict.stamp)]
-        self.failure = _failure(before.target) if stale else None
+        after = chain_of(before.target) if stale else before
+        self.failure = _failure(after)
+        self.held_by = after.held_by
 
     @property
     def state(self) -> str:
         if self.failure:
             return FAILED
+        if self.held_by:
+            return HELD
         return REBUILT if self.ran else UNCHANGED
 
     def stages(self) -> list:
@@ -85,13 +92,18 @@ class Night:
         return [(outcome.target.owner, outcome.failure) for outcome in self.outcomes if outcome.failure]
 
     @property
+    def held(self) -> list:
+        """Pairs of the name of a target that is held, and the sentences why."""
+        return [(outcome.target.owner, outcome.held_by) for outcome in self.outcomes if outcome.held_by]
+
+    @property
     def seconds(self) -> float:
         return round(time.monotonic() - self._began, 3)
 
 
-def _failure(target) -> Failure | None:
+def _failure(after: Chain) -> Failure | None:
     """Why a target is not up to date: the first stage that left a cause, else the first unfinished one."""
-    unfinished = [verdict.stage for verdict in chain_of(target).stale]
+    unfinished = [verdict.stage for verdict in after.stale]
     for stage in unfinished:
         failure = read_failure(stage)
         if failure:

@@ -8,6 +8,7 @@ A stage declares
     requires()  role -> the stage that is read; one with several outputs gives the one named like the role
     settings()  the parameters that its run itself reads, as JSON would give them back
     make(inputs)  role -> Input in; role -> array, dict (for JSON) or bytes out
+    held_by()   sentences, if something that it reads forbids it to run: it is held then
 
 Parameters that are only handed down to other stages stay out of `settings`: their effect arrives
 through the digests of the inputs.
@@ -61,6 +62,10 @@ class Stage(luigi.Task):
         """Role -> digest of inputs that no stage makes."""
         return {}
 
+    def held_by(self) -> tuple:
+        """Sentences that tell what forbids this stage to run; asked when all that it reads is ready."""
+        return ()
+
     def superseded(self) -> list:
         """Files of earlier runs that this run no longer writes."""
         return []
@@ -79,12 +84,12 @@ class Stage(luigi.Task):
         return {role: luigi.LocalTarget(path) for role, path in self.files().items()}
 
     def complete(self) -> bool:
-        return staleness(self, {}).up_to_date
+        return staleness(self, {}).settled
 
     def run(self):
-        # Luigi has scheduled what may run before it was known whether it must: the early cut-off.
+        # Luigi has scheduled what may run before it was known whether it must, or is held: the cut-off.
         verdict = staleness(self, {})
-        if not verdict.up_to_date:
+        if not verdict.settled:
             run_stage(self, verdict)
 
     def __repr__(self):

@@ -10,14 +10,15 @@ UP_TO_DATE = "up to date"
 WILL_RUN = "will run"
 UNREADABLE = "unreadable"  # how the pin of a file begins that can't be read
 MAY_RUN = "may run"  # what it reads is to be made anew, and may come out as it was
+HELD = "held"  # would run, but something forbids it; what it made before stays
 
 
 class Verdict(NamedTuple):
     """Whether a stage must run.
 
     stage : the stage that was judged
-    state : UP_TO_DATE, WILL_RUN or MAY_RUN
-    reasons : sentences, one for each cause; empty when up to date
+    state : UP_TO_DATE, WILL_RUN, MAY_RUN or HELD
+    reasons : sentences, one for each cause, or for each that forbids it; empty when up to date
     inputs : role -> digest as it stands now, None where the maker of the input is itself stale
     stamp : the stage's stamp, None if there is none
     """
@@ -31,6 +32,11 @@ class Verdict(NamedTuple):
     @property
     def up_to_date(self) -> bool:
         return self.state == UP_TO_DATE
+
+    @property
+    def settled(self) -> bool:
+        """Whether a bake has nothing to do here."""
+        return self.state in (UP_TO_DATE, HELD)
 
 
 def staleness(stage, memo: dict) -> Verdict:
@@ -55,7 +61,8 @@ def _verdict(stage, memo):
     stamp = read_stamp(stage.stamp_path)
     reasons = tuple(_reasons(stage, stamp, inputs))
     if reasons:
-        return Verdict(stage, WILL_RUN, reasons, inputs, stamp)
+        held = stage.held_by() if None not in inputs.values() else ()
+        return Verdict(stage, HELD if held else WILL_RUN, held or reasons, inputs, stamp)
     waiting = [_words(role) for role, digest in inputs.items() if digest is None]
     if waiting:
         return Verdict(stage, MAY_RUN, (f"runs if {_listed(waiting)} changes",), inputs, stamp)

@@ -3,26 +3,27 @@
 from collections import Counter
 
 from .failures import read_failure
-from .night import FAILED, REBUILT, UNCHANGED
-from .staleness import MAY_RUN, UP_TO_DATE, WILL_RUN
+from .night import STATES
+from .staleness import HELD, MAY_RUN, UP_TO_DATE, WILL_RUN
 
 
 def plan_lines(chains):
-    """A line for every stage that would run and why, and the count of all."""
+    """A line for every stage that would run and why, for every one that is held, and the count of all."""
     for chain in chains:
-        yield from _stale_lines(chain)
+        yield from _lines(chain)
     states = Counter(verdict.state for chain in chains for verdict in chain.verdicts)
-    yield f"{states[WILL_RUN]} will run, {states[MAY_RUN]} may run, {states[UP_TO_DATE]} up to date"
+    held = f", {states[HELD]} held" if states[HELD] else ""
+    yield f"{states[WILL_RUN]} will run, {states[MAY_RUN]} may run, {states[UP_TO_DATE]} up to date{held}"
 
 
-def _stale_lines(chain):
-    """A line per stale stage, or one for all of them when all would run for the same reason."""
+def _lines(chain):
+    """A line per stage that isn't up to date, or one for all when all would run for the same reason."""
     whole = {(verdict.state, verdict.reasons) for verdict in chain.verdicts}
     if len(whole) == 1 < len(chain.stale):
         state, reasons = whole.pop()
         yield f"{state}: all {len(chain.verdicts)} stages of {chain.target.owner}: {'; '.join(reasons)}"
         return
-    for verdict in chain.stale:
+    for verdict in [verdict for verdict in chain.verdicts if not verdict.up_to_date]:
         yield f"{verdict.state}: {verdict.stage.label}: {'; '.join(verdict.reasons)}"
 
 
@@ -51,7 +52,7 @@ def night_sentence(night) -> str:
     """What a night did, in a line."""
     states = Counter(outcome.state for outcome in night.outcomes)
     ran = sum(len(outcome.ran) for outcome in night.outcomes)
-    told = ", ".join(f"{states[state]} {state}" for state in (REBUILT, UNCHANGED, FAILED))
+    told = ", ".join(f"{states[state]} {state}" for state in STATES if states[state] or state != HELD)
     return f"{told}; {ran} stages ran in {night.seconds:.1f} s"
 
 
@@ -59,3 +60,11 @@ def _last_run(stamp):
     if stamp is None:
         return "no finished run on record"
     return f"ran {stamp.ended} ({stamp.seconds:.2f} s): {stamp.reason}"
+
+
+def bytes_in_words(count: int) -> str:
+    """A number of bytes: '812 bytes', '5.33 MiB'."""
+    if count < 1024:
+        return f"{count} bytes"
+    power = min((count.bit_length() - 1) // 10, 4)
+    return f"{count / 1024**power:.4g} {('KiB', 'MiB', 'GiB', 'TiB')[power - 1]}"

@@ -20,7 +20,7 @@ class BakeLot(luigi.Task):
     number = luigi.IntParameter()
 
     def complete(self):
-        return all(staleness(target, {}).up_to_date for target in self._targets())
+        return all(staleness(target, {}).settled for target in self._targets())
 
     def run(self):
         failed = bake_lot(self._targets())

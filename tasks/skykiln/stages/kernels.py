@@ -1,8 +1,16 @@
 """Compiled kernels, made ready once for a machine instead of once for each worker."""
 
 import fcntl
+import importlib.util
 import os
 import sys
+
+EXTRAS = {"bc6h": "ispc_texcomp"}  # pixel coding -> the package that its extra installs
+
+
+def is_installed(pixels: str) -> bool:
+    """Whether what a pixel coding needs beyond skykiln's own set-up is there."""
+    return pixels not in EXTRAS or importlib.util.find_spec(EXTRAS[pixels]) is not None
 
 
 def warm_kernels(again: bool):
@@ -38,6 +46,17 @@ def _run_every_kernel():
     harmonics.irradiance_coefficients(sky)
     photometry.horizontal_illuminance(sky)
     brdf.brdf_table(4)
+    _run_every_coding(np.ones((6, 4, 4, 3), np.float32))
+
+
+def _run_every_coding(level):
+    """Encode and decode a level in every coding that is installed."""
+    from ..formats.pixels import PIXELS
+
+    for name in filter(is_installed, PIXELS):
+        coding = PIXELS[name]
+        blocks = coding.encode(level[..., : coding.channels]).tobytes()
+        coding.decode(blocks, level.shape[:3])
 
 
 def share_cores(workers: int):

@@ -1,14 +1,18 @@
 """A night over a pipeline: what comes before the stages run, and night.json after."""
 
+import json
 from pathlib import Path
 
 from ..config import Pipeline
 from ..engine.atomic import told_as_file_error
 from ..engine.chains import chain_of
-from ..engine.night import FAILED, REBUILT, UNCHANGED, Night, now, write_night
+from ..engine.night import STATES, Night, now, write_night
 from ..engine.release import release
 from ..engine.stamps import void_stamp
 from ..engine.waves import build_wave, waves_of
+from ..errors import ALL_WELL, GATE_BROKEN, SOURCE_FAILED
+from .gates import NIGHT_GATES, broken_gates
+from .judge_probe import accept_judgement, read_judgement
 from .kernels import warm_kernels
 from .shares import luigi_tasks, manifests_removed
 from .snapshot import Snapshot
@@ -19,12 +23,12 @@ def night_file(pipeline: Pipeline) -> Path:
     return pipeline.build_dir / "night.json"
 
 
-def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) -> Night:
+def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) -> tuple[Night, dict]:
     """One night from the skykiln command.
 
     Parameters: again : run every stage; verbose : let Luigi log
                 shown : context manager that shows the progress of stale chains
-    Returns:    the night; its outcomes stand in night.json too
+    Returns:    the night, and the values of the night.json that tells of it
     """
     if again:
         call_for_all(snapshot)
@@ -35,8 +39,16 @@ def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) ->
         with shown(night.stale), manifests_removed(tasks):
             for wave in waves_of(tasks):
                 build_wave(wave, workers, verbose)
-    write_record(night, snapshot)
-    return night
+    return night, write_record(night, snapshot)
+
+
+def accept_held(snapshot: Snapshot) -> list:
+    """Let what gates hold be published as it is packed now. Returns: the names of those that are held."""
+    held = [target for target in snapshot.probes if chain_of(target).held_by]
+    for target in held:
+        with told_as_file_error(target.pinned.work):
+            accept_judgement(target.pinned)
+    return [target.owner for target in held]
 
 
 def call_for_all(snapshot: Snapshot):
@@ -56,38 +68,63 @@ def prepare(night: Night, snapshot: Snapshot, workers: int):
     warm_kernels(again=workers > 1)
 
 
-def write_record(night: Night, snapshot: Snapshot):
-    """Write night.json."""
-    write_night(night_file(snapshot.pipeline), night_record(night, snapshot.pipeline))
+def write_record(night: Night, snapshot: Snapshot) -> dict:
+    """Write night.json. Returns: its values."""
+    record = night_record(night, snapshot.pipeline)
+    write_night(night_file(snapshot.pipeline), record)
+    return record
 
 
 def night_record(night: Night, pipeline: Pipeline) -> dict:
     """The values of night.json."""
     table, *outcomes = night.outcomes
     states = [outcome.state for outcome in outcomes]
-    counts = {state: states.count(state) for state in (REBUILT, UNCHANGED, FAILED)}
-    return {
+    entries = [_probe_entry(outcome, f"{pipeline.root}/") for outcome in outcomes]
+    sizes = [entry["bytes"] for entry in entries if entry["bytes"]]
+    record = {
         "schema": 1,
         "skykiln": release(),
         "started": night.started,
         "seconds": night.seconds,
-        "exit_status": 1 if night.failures else 0,
-        "totals": {"probes": len(states), **counts},
+        "exit_status": ALL_WELL,
+        "totals": {"probes": len(states), **{state: states.count(state) for state in STATES}},
+        "bytes": {kind: sum(size[kind] for size in sizes) for kind in ("disk", "gpu")},
         "stages_run": sum(len(outcome.ran) for outcome in (table, *outcomes)),
         "shared": table.stages(),
-        "probes": [_probe_entry(outcome, f"{pipeline.root}/") for outcome in outcomes],
+        "probes": entries,
     }
+    gates = broken_gates(NIGHT_GATES, record, pipeline.gates)
+    return {**record, "gates": gates, "exit_status": _exit_status(night, gates)}
+
+
+def _exit_status(night, gates):
+    if night.failures:
+        return SOURCE_FAILED
+    return GATE_BROKEN if night.held or gates else ALL_WELL
 
 
 def _probe_entry(outcome, root):
+    target = outcome.target
     failure = outcome.failure and {
-        "file": outcome.target.probe.file,
+        "file": target.probe.file,
         "stage": outcome.failure.stage,
         "cause": outcome.failure.cause.replace(root, ""),
     }
+    judgement = read_judgement(target.pinned)
     return {
-        "name": outcome.target.owner,
+        "name": target.owner,
         "state": outcome.state,
         "stages": outcome.stages(),
         "failure": failure,
+        "gates": [] if failure else judgement["broken"],
+        "accepted": not failure and judgement["accepted"] and bool(judgement["broken"]),
+        "bytes": _published_bytes(Path(target.pinned.published) / "probe.json"),
     }
+
+
+def _published_bytes(path):
+    """What a probe's published files take; None if there are none."""
+    try:
+        return json.loads(path.read_bytes())["bytes"]
+    except (OSError, ValueError, KeyError):
+        return None

@@ -11,11 +11,11 @@ from .probe_stage import ProbeStage
 class PackProbe(ProbeStage):
     """The files of one entry of the recipe's `pack`, and facts about them.
 
-    Outputs go by the names of the files. Packs that would give the same irradiance file leave it to
-    the first of them by name.
+    Outputs go by the names of the files. Packs that share an irradiance file leave it to the first of
+    them by name.
     """
 
-    version = 1
+    version = 2
     pack = luigi.Parameter()
 
     @property
@@ -35,50 +35,69 @@ class PackProbe(ProbeStage):
         return {name: self.work_file(f"packed/{name}") for name in (*names, f"{self.pack}.json")}
 
     def settings(self):
-        entry = self._entry()
+        entry, probe = self._entry(), self.probe
         return {
+            "name": probe.name,
             "container": entry.container,
             "pixels": entry.pixels,
+            "irradiance_pixels": entry.irradiance_pixels,
+            "compress": entry.compress,
             "cube_axes": entry.cube_axes,
-            "irradiance_pixels": self.probe.irradiance_pixels,
+            "roughness": list(probe.roughness),
+            "units": units_of(probe),
         }
 
     def make(self, inputs):
-        from .packing import pack_faces, share_lost, shared_storage_ev
+        from .packing import share_lost, shared_storage_ev
 
         *chain, cube = [source.array() for source in inputs.values()]
         stops = shared_storage_ev([*chain, cube])
-        entry = self._entry()
-        # Not the release: files would change with every one of them.
-        shared = entry.cube_axes, stops, f"skykiln PackProbe {self.version}"
-        specular, *irradiance = packed_names(self.probe)[self.pack]
-        contents = {specular: pack_faces(chain, entry.pixels, *shared)}
-        for name in irradiance:
-            contents[name] = pack_faces([cube], self.probe.irradiance_pixels, *shared)
+        names = packed_names(self.probe)[self.pack]
+        packed = {name: self._packed(name, chain, cube, stops) for name in names}
         facts = {
             "storage_ev": stops,
             "face_sizes": [level.shape[1] for level in chain],
             "irradiance_face_size": cube.shape[1],
             "lost_to_clamping": share_lost(chain[0], stops),
+            "files": {name: facts for name, (_, facts) in packed.items()},
         }
-        return {**contents, f"{self.pack}.json": facts}
+        return {**{name: data for name, (data, _) in packed.items()}, f"{self.pack}.json": facts}
+
+    def _packed(self, name, chain, cube, stops):
+        """(bytes, facts) of one file."""
+        from .packing import pack_images, packed_facts, stored_images
+
+        entry, content = self._entry(), name.partition(".")[0]
+        levels, pixels, compress = {
+            "specular": (chain, entry.pixels, entry.compress),
+            "irradiance": ([cube], entry.irradiance_pixels, 0),
+        }[content]
+        images = stored_images(levels, entry.cube_axes, stops)
+        # Not the release: files would change with every one of them.
+        writer = f"skykiln PackProbe {self.version}"
+        about = self._about(content, stops)
+        data = pack_images(images, entry.container, pixels, compress, about, writer)
+        return data, packed_facts(data, name, images)
+
+    def _about(self, content, stops):
+        """What a loader must know of a file, for the file itself to tell."""
+        told = ("name", "cube_axes", "units") + (("roughness",) if content == "specular" else ())
+        settings = self.settings()
+        return {"content": content, "storage_ev": stops, **{key: settings[key] for key in told}}
 
     def _entry(self):
         return next(entry for entry in self.probe.packs if entry.name == self.pack)
+
+
+def units_of(probe) -> str:
+    """Of radiance in the probe's files: a calibrated source is absolute."""
+    return "relative" if probe.horizontal_lux is None else "cd/m2"
 
 
 def packed_names(probe) -> dict:
     """Names of the files of each pack: name of the pack -> (specular[, irradiance])."""
     names, taken = {}, set()
     for entry in sorted(probe.packs, key=lambda entry: entry.name):
-        irradiance = _irradiance_name(entry, probe.irradiance_pixels)
-        names[entry.name] = (entry.name,) if irradiance in taken else (entry.name, irradiance)
-        taken.add(irradiance)
+        names[entry.name] = (entry.name,) if entry.irradiance in taken else (entry.name, entry.irradiance)
+        taken.add(entry.irradiance)
     return names
-
-
-def _irradiance_name(entry, pixels):
-    """As the pack names itself, or after the irradiance's own pixel coding."""
-    if entry.name == f"specular.{entry.pixels}.{entry.container}":
-        return f"irradiance.{pixels}.{entry.container}"
-    return entry.name.replace("specular.", "irradiance.", 1)

@@ -1,15 +1,18 @@
-"""The values of probe.json, from the settings of PublishProbe and the facts of the stages before it."""
+"""The values of probe.json, from the settings of JudgeProbe and the facts of the stages before it."""
 
 
 def probe_record(settings, packed_names, inputs) -> dict:
     """What probe.json holds.
 
-    Parameters: settings : those of PublishProbe; packed_names : name of the pack -> names of its files
+    Parameters: settings : those of JudgeProbe; packed_names : name of the pack -> names of its files
                 inputs : role -> Input
     """
     facts, totals = inputs["facts"].json(), inputs["totals"].json()
     packs = {name: inputs[f"{name}.json"].json() for name in packed_names}
     shared = next(iter(packs.values()))
+    files = {name: facts for pack in packs.values() for name, facts in pack["files"].items()}
+    kinds = ("specular", "irradiance")
+    listed = {kind: _files(settings, packed_names, inputs, files, kind) for kind in kinds}
     return {
         "schema": 1,
         "name": settings["name"],
@@ -20,12 +23,12 @@ def probe_record(settings, packed_names, inputs) -> dict:
         "units": settings["units"],
         "storage_ev": shared["storage_ev"],
         "specular": {
-            "levels": _levels(settings["roughness"], shared["face_sizes"]),
-            "files": _files(settings, packed_names, inputs, "specular"),
+            "levels": _levels(settings["roughness"], shared["face_sizes"], [files[name] for name in packs]),
+            "files": listed["specular"],
         },
         "irradiance": {
             "face_size": shared["irradiance_face_size"],
-            "files": _files(settings, packed_names, inputs, "irradiance"),
+            "files": listed["irradiance"],
             **{key: totals[key] for key in ("sh", "sh_smallest", "sh_window")},
         },
         "sun": None,
@@ -33,6 +36,7 @@ def probe_record(settings, packed_names, inputs) -> dict:
             **{key: totals[key] for key in ("mean_radiance", "level_irradiance", "horizontal_illuminance")},
             "lost_to_clamping": max(pack["lost_to_clamping"] for pack in packs.values()),
         },
+        "bytes": _bytes(settings["packs"], listed),
         "audit": None,
     }
 
@@ -41,20 +45,29 @@ def _source(settings, facts):
     return {"file": settings["file"], **facts, "yaw_deg": settings["yaw_deg"]}
 
 
-def _levels(roughness, face_sizes):
-    pairs = zip(roughness, face_sizes, strict=True)
+def _levels(roughness, face_sizes, files):
+    """A level's seam is the worst that any file shows; None where a face has one texel."""
+    seams = zip(*(facts["seams"] for facts in files), strict=True)
     return [
-        {"level": level, "roughness": rough, "face_size": size} for level, (rough, size) in enumerate(pairs)
+        {"level": level, "roughness": rough, "face_size": size, "seam": max(seam) if size > 1 else None}
+        for level, (rough, size, seam) in enumerate(zip(roughness, face_sizes, seams, strict=True))
     ]
 
 
-def _files(settings, packed_names, inputs, kind):
+def _bytes(packs, listed):
+    """What all files take on disk, and what the largest pack takes on the GPU: a renderer loads one."""
+    entries = {entry["file"]: entry for kind in listed.values() for entry in kind}
+    gpu = (entries[pack["name"]]["gpu_bytes"] + entries[pack["irradiance"]]["gpu_bytes"] for pack in packs)
+    return {"disk": sum(entry["bytes"] for entry in entries.values()), "gpu": max(gpu)}
+
+
+def _files(settings, packed_names, inputs, facts, kind):
     """One entry for each file whose name starts with `kind`."""
     entries = []
     for pack in settings["packs"]:
         for name in packed_names[pack["name"]]:
             if name.startswith(f"{kind}."):
-                pixels = pack["pixels"] if kind == "specular" else settings["irradiance_pixels"]
+                pixels = pack["pixels"] if kind == "specular" else pack["irradiance_pixels"]
                 entries.append(
                     {
                         "file": name,
@@ -62,7 +75,9 @@ def _files(settings, packed_names, inputs, kind):
                         "pixels": pixels,
                         "cube_axes": pack["cube_axes"],
                         "bytes": inputs[name].path.stat().st_size,
+                        "gpu_bytes": facts[name]["gpu_bytes"],
                         "digest": inputs[name].digest,
+                        "coding_error": facts[name]["coding_error"],
                     }
                 )
     return entries

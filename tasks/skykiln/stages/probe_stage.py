@@ -21,6 +21,7 @@ class PinnedProbe:
     """A probe, the digest of its source, and the folders of its pipeline.
 
     root, build_dir : absolute paths; cube_axes : the pipeline's, which packs may override
+    gates : canonical JSON of the limits that a probe is judged by, by their dotted keys
     """
 
     probe: Probe
@@ -28,6 +29,7 @@ class PinnedProbe:
     root: str
     build_dir: str
     cube_axes: str
+    gates: str
 
     def __post_init__(self):
         if ".." in PurePath(self.probe.name).parts or PurePath(self.probe.name).is_absolute():

@@ -3,27 +3,26 @@
 import json
 from pathlib import Path
 
-from .decode_source import DecodeSource
-from .gather_irradiance import GatherIrradiance
+from .judge_probe import JudgeProbe, read_judgement
 from .pack_probe import PackProbe, packed_names
-from .probe_record import probe_record
 from .probe_stage import ProbeStage
 
 
 class PublishProbe(ProbeStage):
-    """All published files of a probe."""
+    """All published files of a probe. While a gate holds it, those of an earlier night stay."""
 
-    version = 1
+    version = 2
     title = "published files"
     published = True
 
     def requires(self):
-        packs = [self.of_same(PackProbe, pack=name) for name in packed_names(self.probe)]
-        return {
-            "facts": self.of_same(DecodeSource),
-            "totals": self.of_same(GatherIrradiance),
-            **{role: pack for pack in packs for role in pack.files()},
+        judgement = self.of_same(JudgeProbe)
+        packed = {
+            name: self.of_same(PackProbe, pack=pack)
+            for pack, names in packed_names(self.probe).items()
+            for name in names
         }
+        return {"judgement": judgement, **packed, "probe.json": judgement}
 
     def files(self):
         names = [name for names in packed_names(self.probe).values() for name in names]
@@ -33,25 +32,14 @@ class PublishProbe(ProbeStage):
     def stamp_path(self):
         return self.work_file("probe.json.stamp")
 
-    def settings(self):
-        probe, packs = self.probe, sorted(self.probe.packs, key=lambda entry: entry.name)
-        return {
-            "name": probe.name,
-            "file": probe.file,
-            "recipe": probe.recipe,
-            "extra": json.loads(probe.extra),
-            "cube_axes": self.pinned.cube_axes,
-            "units": "relative" if probe.horizontal_lux is None else "cd/m2",
-            "yaw_deg": probe.yaw_deg,
-            "roughness": list(probe.roughness),
-            "irradiance_pixels": probe.irradiance_pixels,
-            "packs": [vars(entry) for entry in packs],
-        }
+    def held_by(self):
+        judgement = read_judgement(self.pinned)
+        if judgement["accepted"]:
+            return ()
+        return tuple(f"{broken['gate']}: {broken['why']}" for broken in judgement["broken"])
 
     def make(self, inputs):
-        names = list(self.files())[:-1]
-        packed = {name: inputs[name].bytes() for name in names}
-        return {**packed, "probe.json": probe_record(self.settings(), packed_names(self.probe), inputs)}
+        return {name: inputs[name].bytes() for name in self.files()}
 
     def superseded(self):
         """Files that the standing probe.json names and the new one doesn't: packs no longer asked for."""

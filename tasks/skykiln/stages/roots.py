@@ -12,15 +12,17 @@ from pathlib import Path
 import luigi
 
 from ..config import load_pipeline
+from ..engine.chains import chain_of
 from ..engine.night import Night, now
 from ..engine.staleness import staleness
+from ..errors import SkykilnError
 from .nights import night_file, prepare, write_record
 from .shares import luigi_tasks, manifests_removed
 from .snapshot import Snapshot
 
 
 class BakeProbe(luigi.Task):
-    """One probe and the BRDF table. `output()` is its probe.json."""
+    """One probe and the BRDF table. `output()` is its probe.json; a probe that a gate holds fails."""
 
     task_namespace = "skykiln"
     pipeline = luigi.Parameter()
@@ -35,6 +37,11 @@ class BakeProbe(luigi.Task):
         if self._snapshot is None:
             self.complete()
         return [target.full() for target in self._snapshot.targets]
+
+    def run(self):
+        held_by = [why for target in self._snapshot.targets for why in chain_of(target).held_by]
+        if held_by:
+            raise SkykilnError(f"{self.name}: held: {'; '.join(held_by)}")
 
     def output(self):
         return luigi.LocalTarget(_loaded(self.pipeline).build_dir / "probes" / self.name / "probe.json")

@@ -3,9 +3,11 @@
 import difflib
 import fnmatch
 
-from ..config import Pipeline
+from ..config import Pipeline, canonical_json
 from ..engine.pins import Pins
 from ..errors import PipelineError
+from .gates import PROBE_GATES
+from .kernels import EXTRAS, is_installed
 from .probe_stage import PinnedProbe
 from .publish_probe import PublishProbe
 from .tabulate_brdf import TabulateBrdf
@@ -21,7 +23,11 @@ class Snapshot:
         self.pipeline = pipeline
         self.pins = Pins(pipeline.build_dir / "work" / ".pins.json")
         self.brdf = TabulateBrdf.sketch(build_dir=str(pipeline.build_dir), size=pipeline.brdf_size)
-        pinned = [self._pinned(probe) for probe in matching(pipeline.probes(), patterns)]
+        limits = {key: limit for key, limit in pipeline.gates.items() if key in PROBE_GATES}
+        self._gates = canonical_json(limits)
+        chosen = matching(pipeline.probes(), patterns)
+        check_extras(pipeline, chosen)
+        pinned = [self._pinned(probe) for probe in chosen]
         self.probes = [PublishProbe.sketch(pinned=probe) for probe in pinned]
 
     @property
@@ -36,7 +42,25 @@ class Snapshot:
             root=str(root),
             build_dir=str(self.pipeline.build_dir),
             cube_axes=self.pipeline.cube_axes,
+            gates=self._gates,
         )
+
+
+def check_extras(pipeline: Pipeline, probes):
+    """See that every coding that the probes ask for can be made, before any stage runs.
+
+    Raises: PipelineError naming each recipe and the extra that it needs
+    """
+    asked = {(probe.recipe, pack.pixels) for probe in probes for pack in probe.packs}
+    lost = sorted((recipe, pixels) for recipe, pixels in asked if not is_installed(pixels))
+    if lost:
+        told = (f"recipes.{recipe}.pack: {_needed(pixels)}" for recipe, pixels in lost)
+        raise PipelineError([f"{pipeline.path}: {sentence}" for sentence in told])
+
+
+def _needed(pixels):
+    install = f"install the extra: pip install 'skykiln[{pixels}]'"
+    return f"pixels: {pixels} needs the package {EXTRAS[pixels]}; {install}"
 
 
 def matching(probes, patterns) -> list:

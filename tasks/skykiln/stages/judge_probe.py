@@ -1,0 +1,89 @@
+"""JudgeProbe: probe.json as it would be published, and the gates that hold it back."""
+
+import json
+from pathlib import Path
+
+from ..engine.atomic import write_atomically
+from ..engine.digests import digest_chunks, json_bytes
+from .decode_source import DecodeSource
+from .gates import PROBE_GATES, broken_gates
+from .gather_irradiance import GatherIrradiance
+from .pack_probe import PackProbe, packed_names, units_of
+from .probe_record import probe_record
+from .probe_stage import ProbeStage
+
+
+class JudgeProbe(ProbeStage):
+    """`probe.json`: its values to be. `judgement`: the gates that they break, and whether the user has
+    accepted them for what is packed now.
+
+    The limits are in neither output, so that others publish nothing anew as long as all gates hold.
+    """
+
+    version = 1
+    title = "judgement"
+
+    def requires(self):
+        packs = [self.of_same(PackProbe, pack=name) for name in packed_names(self.probe)]
+        return {
+            "facts": self.of_same(DecodeSource),
+            "totals": self.of_same(GatherIrradiance),
+            **{role: pack for pack in packs for role in pack.files()},
+        }
+
+    def files(self):
+        return {"probe.json": self.work_file("record.json"), "judgement": self.work_file("judgement.json")}
+
+    def settings(self):
+        probe, packs = self.probe, sorted(self.probe.packs, key=lambda entry: entry.name)
+        return {
+            "name": probe.name,
+            "file": probe.file,
+            "recipe": probe.recipe,
+            "extra": json.loads(probe.extra),
+            "cube_axes": self.pinned.cube_axes,
+            "units": units_of(probe),
+            "yaw_deg": probe.yaw_deg,
+            "roughness": list(probe.roughness),
+            "packs": [vars(entry) for entry in packs],
+            "gates": json.loads(self.pinned.gates),
+            "accepted": _accepted_subject(self.pinned),
+        }
+
+    def make(self, inputs):
+        settings = self.settings()
+        record = probe_record(settings, packed_names(self.probe), inputs)
+        subject = digest_chunks(f"{role} {file.digest}\n".encode() for role, file in inputs.items())
+        judgement = {
+            "subject": subject,
+            "broken": broken_gates(PROBE_GATES, record, settings["gates"]),
+            "accepted": subject == settings["accepted"],
+        }
+        return {"probe.json": record, "judgement": judgement}
+
+
+def accept_judgement(pinned):
+    """Let what is packed now be published whatever gates it breaks, until it changes."""
+    subject = {"subject": read_judgement(pinned)["subject"]}
+    write_atomically(_acceptance_file(pinned), [json_bytes(subject)])
+
+
+def read_judgement(pinned) -> dict:
+    """The values of a probe's judgement; of one that breaks nothing where there is none."""
+    return _read(Path(f"{pinned.work}/judgement.json")) or {"subject": "", "broken": [], "accepted": False}
+
+
+def _accepted_subject(pinned):
+    return _read(_acceptance_file(pinned)).get("subject")
+
+
+def _acceptance_file(pinned):
+    return Path(f"{pinned.work}/accepted.json")
+
+
+def _read(path) -> dict:
+    try:
+        values = json.loads(path.read_bytes())
+    except (OSError, ValueError):
+        return {}
+    return values if isinstance(values, dict) else {}
