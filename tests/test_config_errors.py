@@ -142,7 +142,10 @@ def test_wrong_setting_of_a_source_is_told_at_its_line(problems, setting, told):
             f"gates.bytes.probe_gpu: found '8 megs'; allowed: {SIZES}",
         ),
         ("gates: {bytes: {night_disk: 0}}\nskykiln: 1", f"gates.bytes.night_disk: found 0; allowed: {SIZES}"),
-        ("gates: {bytes: {probe_gpu: .5}}\nskykiln: 1", f"gates.bytes.probe_gpu: found 0.5; allowed: {SIZES}"),
+        (
+            "gates: {bytes: {probe_gpu: 1.5}}\nskykiln: 1",
+            f"gates.bytes.probe_gpu: found 1.5; allowed: {SIZES}",
+        ),
         ("cube_axis: direct\nskykiln: 1", "cube_axis: unknown key; did you mean 'cube_axes'?"),
         ("source: {}\nskykiln: 1", "source: unknown key; did you mean 'sources'?"),
         ("build_dir: .\nskykiln: 1", f"build_dir: found '.'; {OUTSIDE}"),

@@ -86,6 +86,9 @@ def _probe_stages(asked, name, entry, source):
         settings = (pack.get("cube_axes"), tuple(levels))
         yield f"pack {names[0]} of {name}", "PackProbe", settings, [*chain, cube], packed[-3:]
     said = (entry["recipe"], repr(entry["extra"]), tuple(levels), yaw, repr(recipe["pack"]))
-    files = [file.replace(f"{work}/packed", f"probes/{name}") for file in packed if file.endswith(".ktx2")]
+    judged = [f"{work}/record.json", f"{work}/judgement.json"]
+    yield f"judgement of {name}", "JudgeProbe", said, [facts, totals, *packed], judged
+    packed = [file for file in packed if file.endswith(".ktx2")]
+    files = [file.replace(f"{work}/packed", f"probes/{name}") for file in packed]
     outputs = [*files, f"probes/{name}/probe.json"]
-    yield f"published files of {name}", "PublishProbe", said, [facts, totals, *packed], outputs
+    yield f"published files of {name}", "PublishProbe", tuple(packed), [*packed, *judged], outputs

@@ -28,13 +28,15 @@ from skykiln.stages.decode_source import DecodeSource
 from skykiln.stages.extract_faces import ExtractFaces
 from skykiln.stages.filter_level import FilterLevel
 from skykiln.stages.gather_irradiance import GatherIrradiance
+from skykiln.stages.judge_probe import JudgeProbe
 from skykiln.stages.pack_probe import PackProbe
 from skykiln.stages.publish_probe import PublishProbe
 from skykiln.stages.tabulate_brdf import TabulateBrdf
 from tiny_pipeline import TinyPipeline, published, write_sky
 
 KINDS = [
-    DecodeSource, ExtractFaces, FilterLevel, GatherIrradiance, PackProbe, PublishProbe, TabulateBrdf
+    DecodeSource, ExtractFaces, FilterLevel, GatherIrradiance, PackProbe, JudgeProbe, PublishProbe,
+    TabulateBrdf,
 ]  # fmt: skip
 NAMES = ["ferry_noon", "quay_night", "stair up"]
 PLAIN = {"container": "ktx2", "pixels": "rgba16f"}
