@@ -111,7 +111,7 @@ def _gather_texels(faces, nodes, weights, face_axes):
                         radiance = faces[face, j + (k >> 1), i + (k & 1), c]
                         children[k, FLUX + c] = radiance * solid_angles[k]
                 node = nodes[face * count + p]
-                _join(children, weights, node)
+                _join(children, weights, True, node)
                 _turn(node, face_axes[face])
 
 
@@ -121,13 +121,13 @@ def _gather_level(nodes, below, first, last, weights):
     for line in numba.prange((last - first + block - 1) // block):
         for p in range(np.int64(line) * block, min(last - first, np.int64(line) * block + block)):
             children = nodes[below + 4 * p : below + 4 * p + 4]
-            _join(children, weights, nodes[first + p])
+            _join(children, weights, False, nodes[first + p])
 
 
 @formula
-def _join(children, weights, node):
+def _join(children, weights, plain, node):
     """Moments of four children about their common mean (parallel-axis theorem, to fourth order), into a
-    record of zeros."""
+    record of zeros; `plain` children are of one colour and not lopsided."""
     total, mx, my, mz = 0.0, 0.0, 0.0, 0.0
     for k in range(4):
         share = _share(children, weights, k)
@@ -142,9 +142,9 @@ def _join(children, weights, node):
     for k in range(4):
         share = _share(children, weights, k) / total
         dx, dy, dz = children[k, MEAN] - mx, children[k, MEAN + 1] - my, children[k, MEAN + 2] - mz
-        _add_moments(children[k], share, dx, dy, dz, node)
+        _add_moments(children[k], share, dx, dy, dz, plain, node)
     for c in range(3):
-        _join_channel(children, mx, my, mz, c, node)
+        _join_channel(children, mx, my, mz, c, plain, node)
     _sum_up(node)
 
 
@@ -157,21 +157,26 @@ def _share(children, weights, k):
 
 
 @formula
-def _add_moments(child, share, dx, dy, dz, node):
+def _add_moments(child, share, dx, dy, dz, plain, node):
     """Adds a child that stands off the common mean by (dx, dy, dz)."""
     square = dx * dx + dy * dy + dz * dz
     if share > 0.0:
         node[RADIUS] = max(node[RADIUS], np.float32(math.sqrt(square)) + child[RADIUS])
     spread = np.float64(child[SPREAD])
-    along = child[LOPSIDED] * dx + child[LOPSIDED + 1] * dy + child[LOPSIDED + 2] * dz
+    along = 0.0
+    if not plain:
+        along = child[LOPSIDED] * dx + child[LOPSIDED + 1] * dy + child[LOPSIDED + 2] * dz
+        node[LOPSIDED] += share * child[LOPSIDED]
+        node[LOPSIDED + 1] += share * child[LOPSIDED + 1]
+        node[LOPSIDED + 2] += share * child[LOPSIDED + 2]
     node[SPREAD] += share * (spread + square)
     # Inside the child directions are taken as spread alike across the tangent plane: hence the
     # factors 2 and 4, of (1 + 2/2) and of (2 + 4/2).
     node[FOURTH] += share * (child[FOURTH] + 4 * along + 4 * spread * square + square * square)
-    pull = 2 * spread + square
-    node[LOPSIDED] += share * (child[LOPSIDED] + pull * dx)
-    node[LOPSIDED + 1] += share * (child[LOPSIDED + 1] + pull * dy)
-    node[LOPSIDED + 2] += share * (child[LOPSIDED + 2] + pull * dz)
+    pull = share * (2 * spread + square)
+    node[LOPSIDED] += pull * dx
+    node[LOPSIDED + 1] += pull * dy
+    node[LOPSIDED + 2] += pull * dz
     node[COVARIANCE] += share * (child[COVARIANCE] + dx * dx)
     node[COVARIANCE + 1] += share * (child[COVARIANCE + 1] + dy * dy)
     node[COVARIANCE + 2] += share * (child[COVARIANCE + 2] + dz * dz)
@@ -181,16 +186,20 @@ def _add_moments(child, share, dx, dy, dz, node):
 
 
 @formula
-def _join_channel(children, mx, my, mz, c, node):
+def _join_channel(children, mx, my, mz, c, plain, node):
     """One channel's own flux and mean direction; its spread follows from 1 - |mean|^2."""
     at = COLOUR_SHIFT + 3 * c
     flux, sx, sy, sz = 0.0, 0.0, 0.0, 0.0
     for k in range(4):
         f = np.float64(children[k, FLUX + c])
         flux += f
-        sx += f * (children[k, MEAN] - mx + children[k, at])
-        sy += f * (children[k, MEAN + 1] - my + children[k, at + 1])
-        sz += f * (children[k, MEAN + 2] - mz + children[k, at + 2])
+        sx += f * (children[k, MEAN] - mx)
+        sy += f * (children[k, MEAN + 1] - my)
+        sz += f * (children[k, MEAN + 2] - mz)
+        if not plain:
+            sx += f * children[k, at]
+            sy += f * children[k, at + 1]
+            sz += f * children[k, at + 2]
     node[FLUX + c] = flux
     if flux <= 0.0:
         return

@@ -123,16 +123,17 @@ def _sum_group(faces, nodes, offsets, face_axes, texels, tile, alpha, part, floo
         levels[face] = offsets.shape[0] - 2
         deferred[face] = face
     roots_level, roots = levels[:6].copy(), deferred[:6].copy()
+    space = _workspace()
     left = _sum_nodes(
         faces, nodes, offsets, face_axes, texels, centre, radius, b, a2, per_part[count],
-        roots_level, roots, levels, deferred, sums,
+        roots_level, roots, levels, deferred, space, sums,
     )  # fmt: skip
     for t in range(count):
         own, own_sums = texels[t * area : t * area + area], sums[t * area : t * area + area]
         radius = _bounds(own, centre)
         _sum_nodes(
             faces, nodes, offsets, face_axes, own, centre, radius, b, a2, per_part[t],
-            levels[:left], deferred[:left], none_level, none, own_sums,
+            levels[:left], deferred[:left], none_level, none, space, own_sums,
         )  # fmt: skip
         for k in range(area):
             target[t // tiles * tile + k // tile, t % tiles * tile + k % tile] = own_sums[k]
@@ -189,19 +190,26 @@ def _tile_limits(faces, nodes, offsets, face_axes, texels, tile, centre, radius,
 
 
 @formula
+def _workspace():
+    """What a walk needs besides its result: stack, batch, and the lists of entries."""
+    return (
+        np.empty(STACK, np.int32), np.empty(STACK, np.int64),
+        np.empty(BATCH, np.int64), np.empty(BATCH, np.int64), np.empty(BATCH, np.int32),
+        np.empty((BATCH, RECORD), np.float32),
+        np.empty((ENTRY, _BLOCK), np.float32), np.empty((ENTRY, _BLOCK), np.float32),
+        np.empty((ENTRY, _BLOCK), np.float32),
+    )  # fmt: skip
+
+
+@formula
 def _sum_nodes(faces, nodes, offsets, face_axes, texels, centre, radius, b, a2, per_part,
-               seed_levels, seeds, deferred_levels, deferred, sums):  # fmt: skip
+               seed_levels, seeds, deferred_levels, deferred, space, sums):  # fmt: skip
     """Walks down from the seeds and sums what is taken into sums (texels, 3).
 
     A node to be opened that is smaller than the texels' group is left to its tiles while `deferred` has
     room. Returns how many were.
     """
-    stack_level, stack_node = np.empty(STACK, np.int32), np.empty(STACK, np.int64)
-    batch, rows = np.empty(BATCH, np.int64), np.empty(BATCH, np.int64)
-    verdicts = np.empty(BATCH, np.int32)
-    scratch = np.empty((BATCH, RECORD), np.float32)
-    above = np.empty((ENTRY, _BLOCK), np.float32)
-    coloured, kinked = np.empty_like(above), np.empty_like(above)
+    stack_level, stack_node, batch, rows, verdicts, scratch, above, coloured, kinked = space
     n_above, n_coloured, n_kinked = 0, 0, 0
     left, used, top = 0, 0, 0
     while used < seeds.shape[0] or top > 0:
