@@ -21,6 +21,7 @@ from skykiln.light.faces import extract_faces
 from skykiln.light.photometry import mean_radiance
 from skykiln.light.source_tree import source_tree
 from skykiln.light.strata import stratified_estimate
+from skykiln.light.stratum_kernels import GGX
 from skykiln.light.texel_draw import yaw_rotation
 
 HEIGHT = 64
@@ -71,6 +72,7 @@ def _filtered(panorama, directions, alpha, yaw):
     count = len(normals)
     means, _, _ = stratified_estimate(
         source_tree(panorama),
+        np.full(count, GGX),
         normals,
         np.full(count, alpha),
         np.zeros((count, 4, 3)),

@@ -5,7 +5,7 @@ import math
 
 import numpy as np
 import pytest
-from panorama_reference import SKIES, coloured_linear, filtered_exactly, small_sun
+from panorama_reference import SKIES, coloured_linear, filtered_exactly, pixel_points, small_sun
 from planted_faults import (
     FAULTS,
     HALF_FLOAT,
@@ -21,6 +21,7 @@ from skykiln.light.audit import Chart, audit_charts, scores
 from skykiln.light.directions import cube_directions
 from skykiln.light.faces import extract_faces
 from skykiln.light.pyramid import build_pyramid
+from skykiln.light.sheen import sheen_kernel
 from skykiln.light.specular import filter_level
 
 
@@ -90,6 +91,16 @@ def test_the_production_filter_passes():
     verdict, _ = audit_charts(panorama, charts, 3)
     assert verdict.passed
     assert verdict.share_passed == 1.0
+
+
+def test_a_sheen_map_is_held_against_the_sheen_lobe():
+    panorama, normals = coloured_linear(32), cube_directions(2)
+    points, weights = pixel_points(32, 64, 6)
+    radiance = np.repeat(np.repeat(panorama, 6, 0), 6, 1).reshape(-1, 3)
+    kernel = sheen_kernel(normals.reshape(-1, 3) @ points.T, 0.3) * weights
+    exact = (kernel @ radiance / kernel.sum(axis=1, keepdims=True)).reshape(normals.shape)
+    assert audit_charts(panorama, [Chart("sheen", exact, 0.3, 0.005, "sheen")], 1)[0].passed
+    assert not audit_charts(panorama, [Chart("sheen", exact, 0.3, 0.005, "ggx")], 1)[0].passed
 
 
 def test_estimates_agree_with_plain_summation():

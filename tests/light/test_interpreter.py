@@ -19,6 +19,7 @@ from skykiln.light.repair import repair_pixels
 from skykiln.light.sheen import sheen_albedo
 from skykiln.light.source_tree import source_samples, source_tree
 from skykiln.light.strata import stratified_estimate
+from skykiln.light.stratum_kernels import FOOTPRINT, GGX, SHEEN
 from skykiln.light.texel_draw import Texels, texel_edges, texel_solid_angles
 
 
@@ -34,13 +35,15 @@ def damaged():
     return panorama
 
 
-def estimates(alpha):
+def estimates(kind, alpha):
     normals = np.array([[0, 0, 1.0], [0.6, -0.8, 0], [0, 0.6, -0.8]])
     texels = Texels(*np.array([[0, 0, 0], [0, 2, 5], [0, 1, 1], [1, 0, 1]]))
     edges, angles = texel_edges([2], texels, 0.2), texel_solid_angles([2], texels)
     alphas, precision = np.full(3, alpha), np.full(3, 0.05)
     tree = source_tree(small_panorama())
-    return stratified_estimate(tree, normals, alphas, edges, angles, 1e-3, precision, 500, 7)[:2]
+    return stratified_estimate(
+        tree, np.full(3, kind), normals, alphas, edges, angles, 1e-3, precision, 500, 7
+    )[:2]
 
 
 RESULTS = {
@@ -50,8 +53,9 @@ RESULTS = {
     "photometry": lambda: level_irradiance(small_panorama()),
     "repair": lambda: repair_pixels(damaged())[0],
     "source samples": lambda: source_samples(source_tree(small_panorama()), 20, 3)[0],
-    "lobe strata": lambda: estimates(0.3),
-    "footprint strata": lambda: estimates(0.0),
+    "GGX strata": lambda: estimates(GGX, 0.3),
+    "sheen strata": lambda: estimates(SHEEN, 0.3),
+    "footprint strata": lambda: estimates(FOOTPRINT, 0.0),
     **{name: lambda name=name: noisy_level(source_tree(small_panorama()), 1, 0.3, 8, name, 5).radiance
        for name in TECHNIQUES},
 }  # fmt: skip

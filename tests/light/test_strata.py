@@ -5,18 +5,21 @@ import math
 import numba
 import numpy as np
 import pytest
-from panorama_reference import SKIES, coloured_linear, filtered_exactly, spread_directions
+from panorama_reference import SKIES, coloured_linear, filtered_exactly, pixel_points, spread_directions
 
 from skykiln.light.directions import alpha_from_roughness, panorama_directions
+from skykiln.light.sheen import sheen_kernel
 from skykiln.light.source_tree import source_tree
 from skykiln.light.strata import stratified_estimate
+from skykiln.light.stratum_kernels import FOOTPRINT, GGX, SHEEN
 from skykiln.light.texel_draw import Texels, texel_edges, texel_solid_angles
 
 
-def estimate(panorama, normals, alpha, precision=0.005, seed=1, floor=1e-4, most=10**6):
+def estimate(panorama, normals, alpha, precision=0.005, seed=1, floor=1e-4, most=10**6, kind=GGX):
     count = len(normals)
     return stratified_estimate(
         source_tree(panorama),
+        np.full(count, kind),
         np.asarray(normals, dtype=float),
         np.full(count, float(alpha)),
         np.zeros((count, 4, 3)),
@@ -34,6 +37,7 @@ def footprints(panorama, size, precision=0.002, seed=1):
     count = face.size
     means, errors, _ = stratified_estimate(
         source_tree(panorama),
+        np.full(count, FOOTPRINT),
         np.zeros((count, 3)),
         np.zeros(count),
         texel_edges([size], texels, 0.0),
@@ -89,6 +93,18 @@ def test_estimates_agree_with_plain_summation(sky, alpha):
     means, errors, _ = estimate(panorama, normals, alpha, precision=0.002)
     # The points of the plain sum miss the kernel's kink at the horizon by a little.
     assert (np.abs(means - exact) < 3 * errors + 1e-3 * exact).all()
+
+
+@pytest.mark.parametrize("alpha", [0.05, 0.3, 1.0])
+def test_sheen_agrees_with_a_plain_sum_of_its_own_kernel(alpha):
+    panorama, normals = SKIES["lamps"](32), spread_directions(16)
+    points, weights = pixel_points(32, 64, 8)
+    radiance = np.repeat(np.repeat(panorama, 8, 0), 8, 1).reshape(-1, 3)
+    kernel = sheen_kernel(normals @ points.T, alpha) * weights
+    exact = kernel @ radiance / kernel.sum(axis=1, keepdims=True)
+    means, errors, _ = estimate(panorama, normals, alpha, precision=0.002, kind=SHEEN)
+    assert (np.abs(means - exact) < 3 * errors + 1e-3 * exact).all()
+    assert (errors / means).max() < 0.01
 
 
 @pytest.mark.parametrize("sky", SKIES)

@@ -17,6 +17,7 @@ import numpy as np
 from skykiln.light.faces import interpolated_panorama
 from skykiln.light.source_tree import source_tree
 from skykiln.light.strata import stratified_estimate
+from skykiln.light.stratum_kernels import FOOTPRINT, LOBES
 from skykiln.light.texel_draw import (
     Texels,
     draw_texels,
@@ -44,6 +45,7 @@ class Chart(NamedTuple):
     faces: np.ndarray  # (6, n, n, 3) float32, radiance, world axes; of irradiance E/pi
     alpha: float  # 0: footprint means, 1: also irradiance
     tolerance: float  # relative
+    lobe: str = "ggx"  # one of `stratum_kernels.LOBES`
 
 
 class Findings(NamedTuple):
@@ -104,7 +106,9 @@ def look(panorama, charts, seed, yaw, quantum, step, per_face, precision):
     mean = tree.flux[-1, :3].max() / (4.0 * math.pi)
     floor = max(DARK * mean, BLACK)
     tolerance = np.array([chart.tolerance for chart in charts])[texels.chart]
+    kinds = [LOBES[chart.lobe] if chart.alpha > 0 else FOOTPRINT for chart in charts]
     inputs = (
+        np.array(kinds)[texels.chart],
         texel_normals(sizes, texels, yaw),
         alphas[texels.chart],
         texel_edges(sizes, texels, yaw),
@@ -131,18 +135,18 @@ def look(panorama, charts, seed, yaw, quantum, step, per_face, precision):
 
 def _estimate(panorama, tree, sizes, inputs, floor, random):
     """Means, errors (T, 3) and strata (T,): unfiltered texels from what level 0 is made from."""
-    alphas = inputs[1]
-    means, errors = np.empty((2, alphas.size, 3))
-    strata = np.empty(alphas.size, dtype=np.int64)
+    kinds = inputs[0]
+    means, errors = np.empty((2, kinds.size, 3))
+    strata = np.empty(kinds.size, dtype=np.int64)
     parts = math.ceil(4 * max(sizes) / panorama.shape[1])
     for flat in (False, True):
-        chosen = (alphas == 0) == flat
+        chosen = (kinds == FOOTPRINT) == flat
         seed = random.integers(0, 2**64, dtype=np.uint64)
         if chosen.any():
             source = source_tree(interpolated_panorama(panorama, parts)) if flat and parts > 1 else tree
-            normals, alpha, edges, angles, precision = (values[chosen] for values in inputs)
+            *shapes, precision = (values[chosen] for values in inputs)
             means[chosen], errors[chosen], strata[chosen] = stratified_estimate(
-                source, normals, alpha, edges, angles, floor, precision, MOST_STRATA, seed
+                source, *shapes, floor, precision, MOST_STRATA, seed
             )
     return means, errors, strata
 

@@ -24,12 +24,14 @@ from skykiln.light.directions import cube_directions
 from skykiln.light.ggx import ggx_norm
 from skykiln.light.random_numbers import next_uniform, stream
 from skykiln.light.sampling import ggx_cosine, ggx_density
+from skykiln.light.source_mips import mip_radiance
 from skykiln.light.source_tree import (
     brightness_density,
     pixel_at,
     sample_brightness,
 )
 from skykiln.light.strata import stratified_estimate
+from skykiln.light.stratum_kernels import GGX
 from skykiln.light.texel_draw import yaw_rotation
 
 TECHNIQUES = {"ggx": 0, "filtered": 1, "mis": 2}
@@ -93,7 +95,7 @@ def samples_needed(tree, alpha, errors, floor, seed):
     normals /= np.linalg.norm(normals, axis=1, keepdims=True)
     none, ones = np.zeros((PROBED, 4, 3)), np.ones(PROBED)
     truth, _, _ = stratified_estimate(
-        tree, normals, alpha * ones, none, ones, floor, 0.01 * ones, 10**5, seed
+        tree, np.full(PROBED, GGX), normals, alpha * ones, none, ones, floor, 0.01 * ones, 10**5, seed
     )
     scale = np.maximum(truth, floor)
     variances = _sample_variances(tree, normals, alpha, seed, truth)
@@ -168,7 +170,7 @@ def _sample(tree, normals, alpha, norm, samples, technique, seed, means, squares
                 row, column = pixel_at(tree, x, y, z)
                 for channel in range(3):
                     if technique == _FILTERED:
-                        radiance = _mip(tree, x, y, z, 1.0 / (samples * lobe), channel)
+                        radiance = mip_radiance(tree, x, y, z, 1.0 / (samples * lobe), channel)
                     else:
                         radiance = np.float64(tree.pixels[row, column, channel])
                     added[channel] += factor * radiance
@@ -229,47 +231,3 @@ def _kernel(c, alpha):
     a2 = alpha * alpha
     x = (1.0 - c) * (1.0 - a2) + 2.0 * a2
     return c / (x * x)
-
-
-@inlined
-def _mip(tree, x, y, z, solid_angle, channel):
-    """Radiance in a mip level whose pixels are as large as a solid angle: trilinear between two levels."""
-    height, width = tree.pixels.shape[0], tree.pixels.shape[1]
-    v = math.acos(max(-1.0, min(1.0, y))) / math.pi
-    u = (math.pi - math.atan2(x, z)) / (2.0 * math.pi)
-    row = min(int(v * height), height - 1)
-    pixel = (tree.heights[row] - tree.heights[row + 1]) * 2.0 * math.pi / width
-    level = max(0.0, 0.5 * math.log2(solid_angle / pixel))
-    level = min(level, tree.shapes.shape[0] - 1.001)
-    low = int(level)
-    share = level - low
-    near, far = _bilinear(tree, low, u, v, channel), _bilinear(tree, low + 1, u, v, channel)
-    return (1.0 - share) * near + share * far
-
-
-@inlined
-def _bilinear(tree, level, u, v, channel):
-    """Radiance of a level between its nodes' middles; wraps in longitude, stops at the poles."""
-    rows, columns = tree.shapes[level, 0], tree.shapes[level, 1]
-    down = v * tree.pixels.shape[0] / 2.0**level - 0.5
-    across = u * tree.pixels.shape[1] / 2.0**level - 0.5
-    j, i = math.floor(down), math.floor(across)
-    dj, di = down - j, across - i
-    total = 0.0
-    for k in range(4):
-        row = min(max(int(j) + k // 2, 0), rows - 1)
-        column = (int(i) + k % 2) % columns
-        weight = (dj if k > 1 else 1.0 - dj) * (di if k % 2 else 1.0 - di)
-        total += weight * _mean_radiance(tree, level, row, column, channel)
-    return total
-
-
-@inlined
-def _mean_radiance(tree, level, j, i, channel):
-    if level == 0:
-        return np.float64(tree.pixels[j, i, channel])
-    height, width = tree.pixels.shape[0], tree.pixels.shape[1]
-    top, bottom = j << level, min((j + 1) << level, height)
-    wide = min((i + 1) << level, width) - (i << level)
-    solid_angle = (tree.heights[top] - tree.heights[bottom]) * 2.0 * math.pi * wide / width
-    return tree.flux[tree.offsets[level] + j * tree.shapes[level, 1] + i, channel] / solid_angle

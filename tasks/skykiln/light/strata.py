@@ -1,6 +1,6 @@
 """Filtered radiance, irradiance and footprint means by stratified Monte Carlo over the panorama itself.
 
-    P(n) = ∫ L(l) K(l) dl / ∫ K(l) dl,   K(l) = D(h) max(n.l, 0), or 1 inside a texel's footprint
+    P(n) = ∫ L(l) K(l) dl / ∫ K(l) dl,   K(l) = D(h) max(n.l, 0), or 1 on a texel's footprint
 
 The source is cut into strata, nodes of its tree or parts of its pixels, each of known flux F per channel
 and B of all channels together. In each, one direction l is drawn in proportion to brightness b, and
@@ -21,7 +21,7 @@ make worthless moves the result by more than the standard error seen without it:
 Strata follow from the panorama, the kernel and the precision asked for, not from random numbers, so
 that going on until the error is small enough biases nothing.
 
-K rises with n.l, so its range over a cap around a stratum's middle has a closed form.
+The kernels and their ranges: `stratum_kernels`.
 """
 
 import math
@@ -30,23 +30,26 @@ import numpy as np
 from numba import prange
 
 from skykiln.jit import formula, inlined, parallel
-from skykiln.light.ggx import ggx_norm
 from skykiln.light.random_numbers import next_uniform, stream
 from skykiln.light.source_tree import brightness, descend, direction_in_pixel
+from skykiln.light.stratum_kernels import kernel_at, kernel_norm, kernel_range
 
 RANGES = np.array([0.1, 0.1, 0.01])  # of strata, in the passes before the one that counts
 DEEPEST = -12  # cuts of a pixel per side, as a power of two
 _STACK = 512
 
 
-def stratified_estimate(tree, normals, alphas, edges, solid_angles, floor, precision, most, seed):
+def stratified_estimate(
+    tree, kinds, normals, alphas, edges, solid_angles, floor, precision, most, seed
+):
     """Estimates of P with standard errors that are bounds.
 
     Parameters
     ----------
     tree : SourceTree.
+    kinds : (T,) int64, FOOTPRINT, GGX or SHEEN of `stratum_kernels`.
     normals : (T, 3) float64, unit vectors in the panorama's own axes.
-    alphas : (T,) float64; above 0 the GGX lobe's (1: irradiance / pi), 0: the footprint's mean.
+    alphas : (T,) float64, of lobes (GGX at 1: irradiance / pi).
     edges : (T, 4, 3) float64, unit normals of the planes through a footprint's sides, pointing inwards.
     solid_angles : (T,) float64, of the footprints, sr.
     floor : radiance below which errors need not be smaller.
@@ -61,25 +64,30 @@ def stratified_estimate(tree, normals, alphas, edges, solid_angles, floor, preci
     """
     means, errors = np.empty((2, alphas.size, 3))
     strata = np.empty(alphas.size, dtype=np.int64)
-    norms = np.array([ggx_norm(a) if a > 0 else w for a, w in zip(alphas, solid_angles, strict=True)])
+    shapes = zip(kinds, alphas, solid_angles, strict=True)
+    norms = np.array([kernel_norm(kind, alpha, angle) for kind, alpha, angle in shapes])
     _estimate(
-        tree, normals, alphas, edges, norms, floor, precision, most, np.uint64(seed),
+        tree, kinds, normals, alphas, edges, norms, floor, precision, most, np.uint64(seed),
         means, errors, strata,
     )  # fmt: skip
     return means, errors, strata
 
 
 @parallel
-def _estimate(tree, normals, alphas, edges, norms, floor, precision, most, seed, means, errors, strata):
+def _estimate(
+    tree, kinds, normals, alphas, edges, norms, floor, precision, most, seed, means, errors, strata
+):
     for t in prange(alphas.size):
         strata[t] = _estimate_texel(
-            tree, normals[t], alphas[t], edges[t], norms[t], floor, precision[t], most,
+            tree, kinds[t], normals[t], alphas[t], edges[t], norms[t], floor, precision[t], most,
             stream(seed, np.uint64(t)), means[t], errors[t],
         )  # fmt: skip
 
 
 @formula
-def _estimate_texel(tree, n, alpha, edges, norm, floor, precision, most, state, means, errors):
+def _estimate_texel(
+    tree, kind, n, alpha, edges, norm, floor, precision, most, state, means, errors
+):
     """One texel's means and errors; returns the number of strata.
 
     The first passes draw nothing: they find the scale, and how the error falls with the strata.
@@ -99,7 +107,7 @@ def _estimate_texel(tree, n, alpha, edges, norm, floor, precision, most, state, 
             wanted = max(precision, error * count / most)
             if error > wanted:
                 limit *= (wanted / error) ** 1.5
-        count = _walk(tree, n, alpha, edges, scale, limit, last, state, sums, squares)
+        count = _walk(tree, kind, n, alpha, edges, scale, limit, last, state, sums, squares)
         if not last:
             for c in range(3):
                 scale[c] = max(sums[c], floor * norm)
@@ -110,7 +118,7 @@ def _estimate_texel(tree, n, alpha, edges, norm, floor, precision, most, state, 
 
 
 @inlined
-def _walk(tree, n, alpha, edges, scale, limit, drawn, state, sums, squares):
+def _walk(tree, kind, n, alpha, edges, scale, limit, drawn, state, sums, squares):
     """Sums strata whose range is at most `limit` of the scale, and the squares of the ranges.
 
     K is taken at drawn directions or else in the middle of its range. Returns the number of strata.
@@ -129,7 +137,7 @@ def _walk(tree, n, alpha, edges, scale, limit, drawn, state, sums, squares):
         whole = _load_flux(tree, level, j, i, flux, reach)
         if whole <= 0.0:
             continue
-        lowest, highest = _kernel_range(tree, level, j, i, n, alpha, edges)
+        lowest, highest = kernel_range(_cap(tree, level, j, i), kind, n, alpha, edges)
         if highest <= 0.0:
             continue
         span = highest - lowest
@@ -144,7 +152,7 @@ def _walk(tree, n, alpha, edges, scale, limit, drawn, state, sums, squares):
             squares[c] += (reach[c] * span) ** 2
         if drawn and span > 0.0:
             x, y, z, row, column = _draw(tree, level, j, i, state)
-            off = (_kernel_at(x, y, z, n, alpha, edges) - middle) * whole
+            off = (kernel_at(x, y, z, kind, n, alpha, edges) - middle) * whole
             off /= max(brightness(tree, row, column), 1e-300)  # 0 only where rounding chose a black pixel
             for c in range(3):
                 sums[c] += off * tree.pixels[row, column, c]
@@ -189,37 +197,6 @@ def _latitude_step(tree, level, j):
 
 
 @inlined
-def _kernel_range(tree, level, j, i, n, alpha, edges):
-    """Least and greatest K over a node."""
-    x, y, z, cosine, sine = _cap(tree, level, j, i)
-    if cosine <= -1.0:
-        return 0.0, (_kernel(1.0, alpha) if alpha > 0.0 else 1.0)
-    if alpha > 0.0:
-        least, greatest = _dot_range(n, x, y, z, cosine, sine)
-        if greatest <= 0.0:
-            return 0.0, 0.0
-        return (_kernel(least, alpha) if least > 0.0 else 0.0), _kernel(greatest, alpha)
-    inside = 1.0
-    for e in range(4):
-        least, greatest = _dot_range(edges[e], x, y, z, cosine, sine)
-        if greatest <= 0.0:
-            return 0.0, 0.0
-        if least < 0.0:
-            inside = 0.0
-    return inside, 1.0
-
-
-@inlined
-def _dot_range(n, x, y, z, cosine, sine):
-    """Range of n.l over a cap: around (x, y, z), with that cosine and sine of its angular radius."""
-    c = n[0] * x + n[1] * y + n[2] * z
-    s = math.sqrt(max(0.0, 1.0 - c * c))
-    greatest = 1.0 if c >= cosine else c * cosine + s * sine
-    least = -1.0 if c <= -cosine else c * cosine - s * sine
-    return least, greatest
-
-
-@inlined
 def _cap(tree, level, j, i):
     """Middle of a node, and cosine and sine of the angular radius of a cap there that holds it."""
     if level >= 0:
@@ -246,14 +223,6 @@ def _cap(tree, level, j, i):
 
 
 @inlined
-def _kernel(c, alpha):
-    """GGX D n.l without its constant (`ggx`), for c > 0."""
-    a2 = alpha * alpha
-    x = (1.0 - c) * (1.0 - a2) + 2.0 * a2
-    return c / (x * x)
-
-
-@inlined
 def _draw(tree, level, j, i, state):
     """A direction drawn from a node in proportion to brightness, and its pixel."""
     if level >= 0:
@@ -262,18 +231,6 @@ def _draw(tree, level, j, i, state):
         return x, y, z, row, column
     x, y, z = _direction_in_part(tree, level, j, i, next_uniform(state), next_uniform(state))
     return x, y, z, j >> -level, i >> -level
-
-
-@inlined
-def _kernel_at(x, y, z, n, alpha, edges):
-    """K in one direction."""
-    if alpha > 0.0:
-        c = n[0] * x + n[1] * y + n[2] * z
-        return _kernel(c, alpha) if c > 0.0 else 0.0
-    for e in range(4):
-        if edges[e, 0] * x + edges[e, 1] * y + edges[e, 2] * z < 0.0:
-            return 0.0
-    return 1.0
 
 
 @inlined
