@@ -12,6 +12,7 @@ import numba
 import pytest
 
 from skykiln.cli import ALL_WELL, SOURCE_FAILED, WRONG, main
+from skykiln.errors import GATE_BROKEN
 from tiny_pipeline import TinyPipeline, touch
 
 
@@ -218,3 +219,72 @@ def _read(leader):
         return os.read(leader, 65536)
     except OSError:  # the terminal closed
         return b""
+
+
+def test_held_probe_ends_with_3_and_is_published_by_accept(pipeline, capsys):
+    pipeline.settings["gates"] = {"bytes": {"probe_gpu": "4 KiB"}}
+    pipeline.snapshot()
+    status, out, err = _run(capsys, "bake")
+    assert status == GATE_BROKEN
+    assert "ferry_noon: held: bytes.probe_gpu: 4.125 KiB on the GPU, the limit is 4 KiB" in err
+    assert out.splitlines()[-1].startswith("1 rebuilt, 0 unchanged, 2 held, 0 failed; 15 stages ran")
+    _, out, _ = _run(capsys, "plan")
+    assert out.splitlines() == [
+        "held: published files of ferry_noon: bytes.probe_gpu: 4.125 KiB on the GPU, the limit is 4 KiB",
+        "held: published files of quay_night: bytes.probe_gpu: 4.125 KiB on the GPU, the limit is 4 KiB",
+        "0 will run, 0 may run, 15 up to date, 2 held",
+    ]
+    assert _run(capsys, "bake", "--accept", "ferry_noon")[0] == ALL_WELL
+    assert (pipeline.build / "probes/ferry_noon/probe.json").exists()
+    status, _, err = _run(capsys, "bake", "--accept", "ferry_noon")
+    assert (status, err) == (ALL_WELL, "nothing is held of ferry_noon\n")
+    assert _run(capsys, "bake")[0] == GATE_BROKEN  # the other one
+
+
+def test_accept_needs_a_name(pipeline, capsys):
+    status, _, err = _run(capsys, "bake", "--accept")
+    assert (status, err[:10]) == (WRONG, "--accept: ")
+
+
+def test_gate_of_the_night_ends_with_3(pipeline, capsys):
+    pipeline.settings["gates"] = {"bytes": {"night_disk": "2 kB"}}
+    pipeline.snapshot()
+    status, _, err = _run(capsys, "bake")
+    assert status == GATE_BROKEN
+    assert err.startswith("the night: bytes.night_disk: ")
+
+
+def test_inspect_shows_a_packed_file_and_checks_it(pipeline, capsys):
+    _run(capsys, "bake", "ferry_noon")
+    packed = "build/probes/ferry_noon/specular.rgba16f.ktx2"
+    status, out, _ = _run(capsys, "inspect", packed, "--picture", "levels.png")
+    assert status == ALL_WELL
+    assert out.startswith(f"{packed}: ktx2, rgba16f, cube map of 6 x 8 x 8, 3 levels, ")
+    assert (pipeline.folder / "levels.png").exists()
+    assert _run(capsys, "inspect", packed, "--check") == (ALL_WELL, f"{packed}: sound\n", "")
+
+
+def test_inspect_samples_a_vector_that_begins_with_a_minus(pipeline, capsys):
+    _run(capsys, "bake", "ferry_noon")
+    packed = "build/probes/ferry_noon/specular.rgba16f.ktx2"
+    status, out, _ = _run(capsys, "inspect", packed, "--at", "-1,0.5,0", "--level", "1.5")
+    assert status == ALL_WELL
+    assert len([float(number) for number in out.split()]) == 3
+
+
+def test_inspect_of_broken_files_ends_with_1(pipeline, capsys):
+    _run(capsys, "bake", "ferry_noon")
+    packed = pipeline.build / "probes/ferry_noon/specular.rgba16f.ktx2"
+    packed.write_bytes(packed.read_bytes() + b"\0")
+    status, out, _ = _run(capsys, "inspect", str(packed), "--check")
+    assert (status, out) == (SOURCE_FAILED, f"{packed}: 1 bytes stand behind the base level\n")
+    status, out, err = _run(capsys, "inspect", str(packed))
+    assert (status, out) == (SOURCE_FAILED, "")
+    assert "1 bytes stand behind the base level" in err
+
+
+@pytest.mark.parametrize("vector", ["0,0,0", "1,2", "up", "nan,0,1"])
+def test_inspect_refuses_what_is_no_vector(vector, capsys):
+    with pytest.raises(SystemExit) as end:
+        main(["inspect", "x.ktx2", "--at", vector])
+    assert end.value.code == WRONG

@@ -20,7 +20,7 @@ ALLOWED = {
     "engine": {"errors"},
     "report": {"light", "formats", "errors"},
     "stages": {"engine", "report", "config", "formats", "light", "errors", "jit"},
-    "cli": {"stages", "engine", "config", "errors"},
+    "cli": {"stages", "engine", "report", "config", "errors"},
     "__init__": {"stages"},
     "__main__": {"cli"},
 }

@@ -9,7 +9,7 @@ from .errors import ALL_WELL, SOURCE_FAILED, WRONG, PipelineError, SkykilnError
 
 def main(arguments=None) -> int:
     """Run a command. Returns: the exit status."""
-    options = _parser().parse_args(arguments)
+    options = _parser().parse_args(_joined(sys.argv[1:] if arguments is None else arguments))
     try:
         return options.run(options)
     except PipelineError as error:
@@ -79,6 +79,23 @@ def _why(options):
     return ALL_WELL
 
 
+def _inspect(options):
+    from pathlib import Path
+
+    from .report.inspection import Inspection, broken_file_rules
+
+    path = Path(options.packed)
+    if options.check:
+        broken = broken_file_rules(path)
+        print("\n".join(f"{path}: {rule}" for rule in broken) or f"{path}: sound")
+        return SOURCE_FAILED if broken else ALL_WELL
+    found = Inspection(path)
+    if options.picture:
+        found.draw(Path(options.picture))
+    print(found.samples(options.at, options.level) if options.at else "\n".join(found.lines()))
+    return ALL_WELL
+
+
 def _schema(options):
     from .config import pipeline_schema
 
@@ -114,6 +131,14 @@ def _parser():
     plan.add_argument("--json", action="store_true", help="every stage and its state, as JSON")
     why = _command(commands, "why", _why, "say why stages ran last, or would run next")
     _names(why, "+")
+    inspect = _command(commands, "inspect", _inspect, "show what a packed file holds", pipeline=False)
+    inspect.add_argument("packed", metavar="FILE", help="a KTX2, DDS or OpenEXR file")
+    inspect.add_argument("--check", action="store_true", help="name every broken rule of the format")
+    inspect.add_argument("--picture", metavar="PNG", help="draw all levels, unfolded")
+    inspect.add_argument(
+        "--at", type=_direction, metavar="X,Y,Z", help="print what a sampler gives for a vector of cube space"
+    )
+    inspect.add_argument("--level", type=float, default=0.0, metavar="K", help="level of detail for --at (0)")
     _command(commands, "schema", _schema, "print the JSON Schema of pipeline.yaml", pipeline=False)
     return parser
 
@@ -131,6 +156,24 @@ def _command(commands, name, run, text, pipeline=True):
 def _names(command, count):
     text = "a probe, or a pattern such as 'concourse/*'"
     command.add_argument("names", nargs=count, metavar="NAME", help=text)
+
+
+def _joined(arguments):
+    """`--at -1,0,0` as one argument: argparse would take the vector for an option."""
+    joined = []
+    for argument in arguments:
+        if joined and joined[-1] == "--at":
+            joined[-1] = f"--at={argument}"
+        else:
+            joined.append(argument)
+    return joined
+
+
+def _direction(text):
+    numbers = [float(part) for part in text.split(",")]
+    if len(numbers) != 3 or not all(abs(number) < 1e30 for number in numbers) or not any(numbers):
+        raise argparse.ArgumentTypeError(f"{text!r} is no vector x,y,z")
+    return numbers
 
 
 def _positive(text):

@@ -33,7 +33,7 @@ class DdsTexture(NamedTuple):
     levels: tuple[np.ndarray, ...]
 
 
-class _Header(NamedTuple):
+class Header(NamedTuple):
     """By Microsoft's names, in the file's order."""
 
     dwSize: int
@@ -58,6 +58,11 @@ class _Header(NamedTuple):
     miscFlags2: int
 
 
+def read_header(data: bytes) -> Header:
+    """The headers of data that holds them."""
+    return Header(*_LAYOUT.unpack_from(data, len(_MAGIC)))
+
+
 def write_dds(texture: DdsTexture) -> bytes:
     """The file's bytes: six faces make a cube map, one a 2-D texture."""
     coding = PIXELS[texture.pixels]
@@ -75,7 +80,7 @@ def read_dds(data: bytes, name: str) -> DdsTexture:
     """
     for rule in broken_dds_rules(data):
         raise FileError(f"{name}: not a sound DDS texture: {rule}; bake it again")
-    header = _Header(*_LAYOUT.unpack_from(data, len(_MAGIC)))
+    header = read_header(data)
     pixels, faces = _coding_name(header.dxgiFormat), _faces(header)
     coding, start = PIXELS[pixels], HEADER_BYTES
     images = [[] for _ in range(header.dwMipMapCount)]
@@ -96,14 +101,14 @@ def broken_dds_rules(data: bytes) -> Iterator[str]:
     if len(data) < HEADER_BYTES:
         yield f"the file ends after {len(data)} bytes, inside its headers"
         return
-    header = _Header(*_LAYOUT.unpack_from(data, len(_MAGIC)))
+    header = read_header(data)
     broken = list(_size_rules(header))
     yield from broken
     if broken:
         return
     coding = PIXELS[_coding_name(header.dxgiFormat)]
     expected = _header(coding, _faces(header), header.dwWidth, header.dwHeight, header.dwMipMapCount)
-    for field, found, wanted in zip(_Header._fields, header, expected, strict=True):
+    for field, found, wanted in zip(Header._fields, header, expected, strict=True):
         if found != wanted and not (field == "miscFlags2" and found == 3):  # 3: opaque
             yield f"{field} is {_shown(found)}, not {_shown(wanted)}"
     size = HEADER_BYTES + _faces(header) * sum(_level_lengths(coding, header))
@@ -111,7 +116,7 @@ def broken_dds_rules(data: bytes) -> Iterator[str]:
         yield f"the file has {len(data)} bytes, not the {size} that its headers ask for"
 
 
-def _size_rules(h: _Header) -> Iterator[str]:
+def _size_rules(h: Header) -> Iterator[str]:
     """What the expected header and the length of the data are worked out from."""
     if _coding_name(h.dxgiFormat) is None:
         yield f"dxgiFormat {h.dxgiFormat} is none of {', '.join(str(c.dxgi_format) for c in PIXELS.values())}"
@@ -126,12 +131,12 @@ def _size_rules(h: _Header) -> Iterator[str]:
         yield f"dwMipMapCount must be 1 to {most} for {h.dwWidth} x {h.dwHeight}, but is {h.dwMipMapCount}"
 
 
-def _header(coding: Coding, faces: int, width: int, height: int, levels: int) -> _Header:
+def _header(coding: Coding, faces: int, width: int, height: int, levels: int) -> Header:
     plain = coding.block_side == 1
     flags = _CAPS_HEIGHT_WIDTH_FORMAT | (_PITCH if plain else _LINEAR_SIZE) | (_MIPS if levels > 1 else 0)
     caps = _TEXTURE | (_COMPLEX if faces == 6 or levels > 1 else 0) | (_MIPMAP if levels > 1 else 0)
     pitch = coding.level_bytes(1, 1 if plain else height, width)
-    return _Header(
+    return Header(
         124, flags, height, width, pitch, 0, levels,
         32, _FOURCC, b"DX10",
         caps, _ALL_FACES if faces == 6 else 0, 0, 0, 0,
@@ -139,7 +144,7 @@ def _header(coding: Coding, faces: int, width: int, height: int, levels: int) ->
     )  # fmt: skip
 
 
-def _level_lengths(coding: Coding, header: _Header) -> list[int]:
+def _level_lengths(coding: Coding, header: Header) -> list[int]:
     sizes = (level_size(header.dwWidth, header.dwHeight, p) for p in range(header.dwMipMapCount))
     return [coding.level_bytes(1, height, width) for width, height in sizes]
 
@@ -154,7 +159,7 @@ def _coding_name(dxgi_format: int) -> str | None:
     return next((name for name, coding in PIXELS.items() if coding.dxgi_format == dxgi_format), None)
 
 
-def _faces(header: _Header) -> int:
+def _faces(header: Header) -> int:
     return 6 if header.miscFlag == _TEXTURE_CUBE else 1
 
 

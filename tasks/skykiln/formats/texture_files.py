@@ -7,11 +7,14 @@ from typing import NamedTuple
 import numpy as np
 
 from skykiln.errors import FileError
+from skykiln.formats import dds, ktx2_layout
+from skykiln.formats.bc6h_layout import MODES
 from skykiln.formats.dds import broken_dds_rules, read_dds
 from skykiln.formats.exr_levels import read_exr_levels
 from skykiln.formats.ktx2 import read_ktx2
 from skykiln.formats.ktx2_rules import broken_ktx2_rules
 from skykiln.formats.pixels import PIXELS
+from skykiln.formats.zstandard_levels import decompress_level
 
 _MAGIC = {b"\xabKTX": "ktx2", b"DDS ": "dds", b"\x76\x2f\x31\x01": "exr"}
 _READERS = {"ktx2": read_ktx2, "dds": read_dds, "exr": read_exr_levels}
@@ -78,8 +81,43 @@ def broken_rules(data: bytes, name: str) -> Iterator[str]:
     except FileError as error:
         yield str(error).removeprefix(f"{name}: ")
         return
+    if texture.pixels == "bc6h":
+        yield from _broken_block_rules(container, data)
     for number, level in enumerate(texture.levels):
         yield from _broken_pixel_rules(level, number)
+
+
+def header_fields(data: bytes, name: str) -> dict:
+    """The header's fields by the names of the container's own specification; of a sound file."""
+    container = _container(data, name)
+    if container == "exr":
+        return {}
+    header = dds.read_header(data) if container == "dds" else ktx2_layout.read_header(data)
+    return header._asdict()
+
+
+def _broken_block_rules(container, data) -> Iterator[str]:
+    """Blocks of BC6H that bear a reserved mode: decoders make them black (KDF 20.2)."""
+    blocks = np.frombuffer(b"".join(_stored_levels(container, data)), np.uint8).reshape(-1, 16)
+    first = blocks[:, 0]
+    mode = np.where(first & 3 < 2, first & 3, first & 31)
+    count = int((~np.isin(mode, list(MODES))).sum())
+    if count:
+        yield f"{count} BC6H blocks have a reserved mode"
+
+
+def _stored_levels(container, data):
+    """Bytes of blocks, level by level or face by face."""
+    if container == "dds":
+        return [data[dds.HEADER_BYTES :]]
+    header = ktx2_layout.read_header(data)
+    stored = [
+        (data[place.byteOffset : place.byteOffset + place.byteLength], place.uncompressedByteLength)
+        for place in ktx2_layout.read_index(data, header.levelCount)
+    ]
+    if header.supercompressionScheme == ktx2_layout.PLAIN:
+        return [level for level, _ in stored]
+    return [decompress_level(level, size) for level, size in stored]
 
 
 def _broken_pixel_rules(level, number) -> Iterator[str]:
