@@ -37,7 +37,9 @@ def filtered(points, normals, alpha):
     The normaliser is integrated here, not taken from the code under test.
     """
     directions, fluxes = points
-    norm, _ = integrate.quad(lambda u: 2 * np.pi * _kernel(1 - np.exp(u), alpha) * np.exp(u), -50, 0, limit=500)
+    norm, _ = integrate.quad(
+        lambda u: 2 * np.pi * _kernel(1 - np.exp(u), alpha) * np.exp(u), -50, 0, limit=500
+    )
     return _sums(np.ascontiguousarray(normals), directions, fluxes, alpha) / norm
 
 

@@ -108,7 +108,7 @@ def _edge_integrals(panorama, from_pole, grid, face_axes, size, yaw):
     cos_yaw, sin_yaw = math.cos(yaw), math.sin(yaw)
     for line in numba.prange(6 * (size + 1)):
         face, k = np.int64(line) // (size + 1), np.int64(line) % (size + 1)
-        polar = face == _UP or face == _DOWN
+        polar = face in (_UP, _DOWN)
         if polar and 2 * k == size:
             continue  # through the pole: meridians
         axes = np.empty((3, 3))  # turned back by the yaw, into the source's own frame
@@ -120,7 +120,8 @@ def _edge_integrals(panorama, from_pole, grid, face_axes, size, yaw):
         below = face == _DOWN
         _add_line(panorama, from_pole, grid, axes[0], axes[1], axes[2], fixed, below, across[face, k])
         if polar:
-            _add_line(panorama, from_pole, grid, axes[0], axes[2], axes[1], fixed, below, along[face - _UP, k])
+            out = along[face - _UP, k]
+            _add_line(panorama, from_pole, grid, axes[0], axes[2], axes[1], fixed, below, out)
     return across, along.transpose(0, 2, 1, 3)
 
 
@@ -132,7 +133,8 @@ def _add_line(panorama, from_pole, grid, major, moving, other, fixed, below, out
     parts = 1 if size % 2 == 0 else 2
     px, py, pz = major[0] + other[0] * fixed, major[1] + other[1] * fixed, major[2] + other[2] * fixed
     # Normal of the great circle's plane, and with it a and b of T = a cos t + b sin t.
-    nx, ny, nz = py * moving[2] - pz * moving[1], pz * moving[0] - px * moving[2], px * moving[1] - py * moving[0]
+    nx, ny = py * moving[2] - pz * moving[1], pz * moving[0] - px * moving[2]
+    nz = px * moving[1] - py * moving[0]
     a, b = -nz / ny, -nx / ny
     for i in range(size * parts):
         u0, u1 = 2.0 * i / (size * parts) - 1.0, 2.0 * (i + 1) / (size * parts) - 1.0
@@ -149,7 +151,7 @@ def _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, sign, below, out)
     """Adds the integral of G along a great circle, between two points given by the horizontal parts of
     their directions, t falling, the height rising or falling throughout."""
     heights, tangents, cos_columns, sin_columns = grid
-    rows, width, _ = panorama.shape
+    width = panorama.shape[1]
     length0, length1 = math.sqrt(x0 * x0 + z0 * z0), math.sqrt(x1 * x1 + z1 * z1)
     cos_t, sin_t = z0 / length0, x0 / length0
     cos_end, sin_end = z1 / length1, x1 / length1
@@ -159,7 +161,7 @@ def _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, sign, below, out)
     start = (math.pi - math.atan2(sin_t, cos_t)) * (width / (2.0 * math.pi))
     span = math.atan2(sin_t * cos_end - cos_t * sin_end, cos_t * cos_end + sin_t * sin_end)
     last = start + span * (width / (2.0 * math.pi))
-    column = int(math.floor(start))
+    column = math.floor(start)
     radius2 = a * a + b * b
     while True:
         at_end = column + 1 >= last
@@ -176,10 +178,14 @@ def _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, sign, below, out)
             if a * (sin_t + sin_next) - b * (cos_t + cos_next) < 0.0:
                 side = -side
             cos_cut, sin_cut = (a * crossed - b * side) / radius2, (b * crossed + a * side) / radius2
-            _add_piece(panorama, from_pole, heights, a, b, cos_t, sin_t, cos_cut, sin_cut, row, i, sign, below, out)
+            _add_piece(
+                panorama, from_pole, heights, a, b, cos_t, sin_t, cos_cut, sin_cut, row, i, sign, below, out
+            )
             cos_t, sin_t = cos_cut, sin_cut
             row += step
-        _add_piece(panorama, from_pole, heights, a, b, cos_t, sin_t, cos_next, sin_next, row, i, sign, below, out)
+        _add_piece(
+            panorama, from_pole, heights, a, b, cos_t, sin_t, cos_next, sin_next, row, i, sign, below, out
+        )
         if at_end:
             return
         cos_t, sin_t = cos_next, sin_next

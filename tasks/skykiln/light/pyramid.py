@@ -151,9 +151,8 @@ def _join(children, weights, plain, node):
 @formula
 def _share(children, weights, k):
     """A child's weight in the common mean: its flux, all channels alike."""
-    return (
-        weights[0] * children[k, FLUX] + weights[1] * children[k, FLUX + 1] + weights[2] * children[k, FLUX + 2]
-    )
+    red, green, blue = children[k, FLUX], children[k, FLUX + 1], children[k, FLUX + 2]
+    return weights[0] * red + weights[1] * green + weights[2] * blue
 
 
 @formula
