@@ -2,7 +2,8 @@
 
 A gate goes by the dotted key of its limit below `gates`. Its function takes a record and the limit, and
 gives a sentence where the limit is crossed. A probe whose record crosses one is held: `JudgeProbe`
-tells so, and `PublishProbe` waits. Gates of the night are judged when it ends, and hold nothing.
+tells so, and `PublishProbe` waits. Gates of the night are judged when it ends, on the probes that it was
+asked for, and hold nothing.
 """
 
 from ..engine.wording import bytes_in_words
@@ -14,7 +15,7 @@ def heavy_on_the_gpu(record, limit):
 
 
 def heavy_on_disk(record, limit):
-    """`gates.bytes.night_disk`: the published files of all probes of the night."""
+    """`gates.bytes.night_disk`: the published files of all probes that the night was asked for."""
     return _over("on disk", record["bytes"]["disk"], limit)
 
 
