@@ -90,7 +90,7 @@ def main(size=512, repeats=5):
         print(f"{name}: {SAMPLES} samples {median:.2f} s ({each:.1f} ns each), largest error {error:.2%}")
         for (tolerance, ratio), worst in zip(ratios.items(), errors, strict=True):
             faster, best = statistics.median(ratio), statistics.median(times[tolerance]) * 1e3
-            print(f"  tolerance {tolerance}: {faster:.1f} times faster, {best:.0f} ms, largest error {worst:.3%}")
+            print(f"  tolerance {tolerance}: {faster:.1f} times faster, {best:.0f} ms, error {worst:.3%}")
 
 
 if __name__ == "__main__":
