@@ -26,7 +26,8 @@ def test_readme_s_own_luigi_task_runs(tmp_path):
     pipeline.snapshot()
     (example,) = blocks("README.md", "python")
     (tmp_path / "level_lighting.py").write_text(example)
-    environment = {**os.environ, "PYTHONPATH": os.pathsep.join([str(tmp_path), *map(os.path.abspath, sys.path)])}
+    folders = [str(tmp_path), *map(os.path.abspath, sys.path)]
+    environment = {**os.environ, "PYTHONPATH": os.pathsep.join(folders)}
     arguments = ["--local-scheduler", "--module", "level_lighting", "LevelLighting"]
     command = [sys.executable, "-m", "luigi", *arguments]
     subprocess.run(command, cwd=tmp_path, env=environment, check=True)
