@@ -1,7 +1,6 @@
 """Running a stage: what is written in which order, what is left after a failure."""
 
 import json
-import os
 from pathlib import Path
 
 import pytest
@@ -82,31 +81,6 @@ def test_stamp_goes_before_outputs_appear_and_comes_after(tmp_path, monkeypatch)
     monkeypatch.setattr(Path, "replace", replace)
     bake_depth_first(sketch_of_sum(tmp_path, pin="2", stage=ReadNumber), {})
     assert seen == [("number.json", False), ("remark.json", False), ("number.json.stamp", False)]
-
-
-@pytest.mark.parametrize("published", [False, True])
-def test_bytes_and_names_reach_the_disk_in_order(tmp_path, monkeypatch, published):
-    """Outputs are synced before any appears; of published ones the folder before the last appears."""
-    write_source(tmp_path, "20 first")
-    _ran(tmp_path)
-    write_source(tmp_path, "30 second")
-    monkeypatch.setattr(ReadNumber, "published", published)
-    steps = []
-
-    def traced(name, function):
-        def call(*arguments, **options):
-            steps.append(name)
-            return function(*arguments, **options)
-
-        return call
-
-    monkeypatch.setattr(os, "fsync", traced("sync", os.fsync))
-    monkeypatch.setattr(Path, "unlink", traced("remove stamp", Path.unlink))
-    monkeypatch.setattr(Path, "replace", traced("rename", Path.replace))
-    bake_depth_first(sketch_of_sum(tmp_path, pin="2", stage=ReadNumber), {})
-    folder = ["sync"] if published else []
-    *steps, _ = steps  # last of all the failure of an earlier run is removed
-    assert steps == ["sync", "sync", "remove stamp", "rename", *folder, "rename", "rename"]
 
 
 def test_failure_is_recorded_with_its_cause_and_removed_by_success(tmp_path):

@@ -23,6 +23,8 @@ stamps = st.builds(
     reason=names,
     seconds=st.floats(0, 1e6),
     ended=names,
+    night=names,
+    on_disk=st.booleans(),
 )
 in_one_folder = settings(suppress_health_check=[HealthCheck.function_scoped_fixture], deadline=None)
 
@@ -60,7 +62,7 @@ def test_missing_stamp_is_none(tmp_path):
 
 def test_voiding_keeps_what_is_on_record(tmp_path):
     path = tmp_path / "x.stamp"
-    stamp = Stamp("f", 1, {"a": 1}, {}, {}, "r", 0.5, "now")
+    stamp = Stamp("f", 1, {"a": 1}, {}, {}, "r", 0.5, "now", "tonight", True)
     write_stamp(path, stamp)
     void_stamp(path, "was asked for again")
     assert read_stamp(path) == dataclasses.replace(stamp, void="was asked for again")

@@ -88,7 +88,7 @@ def _probe_stages(asked, name, entry, source):
     said = (entry["recipe"], repr(entry["extra"]), tuple(levels), yaw, repr(recipe["pack"]))
     judged = [f"{work}/record.json", f"{work}/judgement.json"]
     yield f"judgement of {name}", "JudgeProbe", said, [facts, totals, *packed], judged
-    packed = [file for file in packed if file.endswith(".ktx2")]
-    files = [file.replace(f"{work}/packed", f"probes/{name}") for file in packed]
+    textures = [file for file in packed if file.endswith(".ktx2")]
+    files = [file.replace(f"{work}/packed", f"probes/{name}") for file in textures]
     outputs = [*files, f"probes/{name}/probe.json"]
-    yield f"published files of {name}", "PublishProbe", tuple(packed), [*packed, *judged], outputs
+    yield f"published files of {name}", "PublishProbe", None, [*judged, *textures], outputs

@@ -5,6 +5,7 @@ A file is written beside its place under a name that holds host and process, bro
 leaves a file that no reader looks at and that the next bake sweeps away.
 """
 
+import ctypes
 import os
 import socket
 from contextlib import contextmanager
@@ -83,6 +84,27 @@ def sync_folder(folder: Path):
         os.fsync(handle)
     finally:
         os.close(handle)
+
+
+def sync_file_systems(folders):
+    """Bring all that was written in the file systems of some folders to the disk.
+
+    One call for many files, where a call for each would wait for the disk each time. Without the
+    system's syncfs, all file systems are synced.
+    """
+    by_device = {folder.stat().st_dev: folder for folder in folders if folder.is_dir()}
+    call = getattr(ctypes.CDLL(None, use_errno=True), "syncfs", None)
+    if call is None:
+        os.sync()
+        return
+    for folder in by_device.values():
+        handle = os.open(folder, os.O_RDONLY)
+        try:
+            with told_as_file_error(folder):
+                if call(handle):
+                    raise OSError(ctypes.get_errno(), os.strerror(ctypes.get_errno()))
+        finally:
+            os.close(handle)
 
 
 def _write(path, chunks, synced):

@@ -2,15 +2,22 @@
 
 from typing import NamedTuple
 
+from .seals import read_seal, trust_by, vouches
 from .stage import Stage
-from .staleness import HELD, Verdict, staleness
+from .staleness import HELD, Trust, Verdict, staleness
 
 
 class Chain(NamedTuple):
-    """The verdicts of a target and of every stage below it; what is read comes before what reads it."""
+    """The verdicts of a target and of every stage below it; what is read comes before what reads it.
+
+    sealed : number of stages for which a seal vouches; there are no verdicts then
+    night : that of the seal, empty if there is none
+    """
 
     target: Stage
     verdicts: tuple[Verdict, ...]
+    sealed: int = 0
+    night: str = ""
 
     @property
     def stale(self) -> list[Verdict]:
@@ -20,12 +27,21 @@ class Chain(NamedTuple):
     @property
     def held_by(self) -> tuple:
         """Why the target is held; empty when it isn't."""
-        last = self.verdicts[-1]
-        return last.reasons if last.state == HELD else ()
+        last = self.verdicts[-1:]
+        return last[0].reasons if last and last[0].state == HELD else ()
 
 
-def chain_of(target: Stage) -> Chain:
-    """Judge a target as it stands now."""
-    memo = {}
-    staleness(target, memo)
-    return Chain(target, tuple(memo.values()))
+def chain_of(target: Stage, believing: bool = True) -> Chain:
+    """Judge a target as it stands now.
+
+    Parameters: believing : whether size and time may stand for bytes; else all bytes are read
+    """
+    seal, memo = read_seal(target), {}
+    staleness(target, memo, trust_by(seal, target) if believing else Trust(stamps=False))
+    return Chain(target, tuple(memo.values()), night=seal.night if seal else "")
+
+
+def glance_at(target: Stage) -> Chain:
+    """Judge a target, without going into a chain that a seal vouches for."""
+    seal = read_seal(target)
+    return Chain(target, (), seal.stages, seal.night) if vouches(seal, target) else chain_of(target)

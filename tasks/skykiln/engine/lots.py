@@ -2,10 +2,23 @@
 
 The stages are the very same that Luigi runs one by one for a big source, with the same stamps: a
 changed probe reruns alone, a bad one does not stop the others, and a kill loses one stage at most.
+
+The disk is not waited for at every file, which takes longer than a small probe's numerics. A batch of
+targets is made up to what is published; then, for all of them at once: everything is brought to the
+disk; the published files appear; their names are brought to the disk; stamps and seals appear.
 """
 
-from .running import run_stage
-from .staleness import staleness
+import time
+from pathlib import Path
+
+from .atomic import sync_file_systems
+from .failures import recorded
+from .running import certify, put_in_place, run_stage, write_outputs
+from .seals import read_seal, trust_by, write_seal
+from .staleness import BY_STAMPS, Trust, staleness
+
+BATCH_SECONDS = 3.0  # between two waits for the disk, which take some hundredths
+LARGEST_BATCH = 64
 
 
 def bake_lot(targets) -> list:
@@ -13,29 +26,31 @@ def bake_lot(targets) -> list:
 
     Returns: the names of those that failed; the causes lie beside their stamps
     """
-    failed = []
+    failed, batch, began = [], [], time.monotonic()
     for target in targets:
         try:
-            bake_depth_first(target, {})
+            batch.append(_prepared(target))
         except Exception:  # even a bug is one probe's; its traceback lies beside the stamp
             failed.append(target.owner)
-    return failed
+        if len(batch) == LARGEST_BATCH or time.monotonic() - began > BATCH_SECONDS:
+            failed += _publish(batch)
+            batch, began = [], time.monotonic()
+    return failed + _publish(batch)
 
 
-def bake_depth_first(stage, memo: dict):
+def bake_depth_first(stage, memo: dict, trust: Trust = BY_STAMPS):
     """Bring a stage up to date, what it reads first.
 
     Parameters: memo : verdicts of the stages that are done, by stamp path
     """
-    if stage.stamp_path in memo:
+    path = stage.stamp_path
+    if path in memo:
         return
     for dependency in stage.requires().values():
-        bake_depth_first(dependency, memo)
-    verdict = staleness(stage, memo)
+        bake_depth_first(dependency, memo, trust)
+    verdict = staleness(stage, memo, trust)
     if not verdict.settled:
-        run_stage(stage, verdict)
-        del memo[stage.stamp_path]
-        staleness(stage, memo)
+        memo[path] = run_stage(stage, verdict, on_disk=False)
 
 
 def form_lots(items, seconds, longest) -> list:
@@ -51,3 +66,55 @@ def form_lots(items, seconds, longest) -> list:
         lots[-1].append(item)
         filled += cost
     return lots
+
+
+def _prepared(target):
+    """(target, verdicts below and of it, its outputs as written beside or None if it is settled)"""
+    memo, trust = {}, trust_by(read_seal(target), target)
+    for dependency in target.requires().values():
+        bake_depth_first(dependency, memo, trust)
+    verdict = staleness(target, memo, trust)
+    if verdict.settled:
+        return target, memo, None
+    with recorded(target):
+        return target, memo, write_outputs(target, verdict, on_disk=False)
+
+
+def _publish(batch) -> list:
+    """Let the outputs of prepared targets appear, safe from a power cut. Returns: names that failed."""
+    failed = []
+    if batch:
+        _sync(batch)
+        batch = [each for each in batch if _done(each, failed, _appear)]
+        _sync(batch)
+        for each in batch:
+            _done(each, failed, _close)
+    return failed
+
+
+def _sync(batch):
+    targets = [target for target, _, _ in batch]
+    files = [path for target in targets[:1] for path in (target.seal_path, *target.files().values())]
+    sync_file_systems({Path(path).parent for path in files})
+
+
+def _done(each, failed, step):
+    target = each[0]
+    try:
+        with recorded(target):
+            step(*each)
+    except Exception:
+        failed.append(target.owner)
+        return False
+    return True
+
+
+def _appear(target, memo, written):
+    if written:
+        put_in_place(written)
+
+
+def _close(target, memo, written):
+    if written:
+        memo[target.stamp_path] = certify(written, on_disk=True)
+    write_seal(target, memo.values())

@@ -5,36 +5,38 @@ from datetime import UTC, datetime
 from functools import cached_property
 from pathlib import Path
 
-from .atomic import sweep, write_atomically
-from .chains import Chain, chain_of
+from .atomic import sweep, sync_file_systems, write_atomically
+from .chains import Chain, chain_of, glance_at
 from .digests import json_bytes
 from .failures import Failure, forget_failure, read_failure
-from .staleness import HELD
-from .stamps import read_stamp
+from .seals import write_seal
+from .staleness import HELD, WILL_RUN
+from .stamps import void_stamp
 
 UNCHANGED, REBUILT, FAILED = "unchanged", "rebuilt", "failed"
 STATES = (REBUILT, UNCHANGED, HELD, FAILED)
 
 
 def now() -> str:
-    """The time, ISO 8601 with offset."""
-    return datetime.now(UTC).isoformat(timespec="seconds")
+    """The time, ISO 8601 with offset; fine enough to tell one night from the next."""
+    return datetime.now(UTC).isoformat(timespec="milliseconds")
 
 
 class Outcome:
     """What became of one target.
 
-    chain : its chain as it was judged before; ran : the new stamps, with the stages they are of
+    ran : the stages that ran in this night, with their stamps
     failure : why it is not up to date, or None
     held_by : the sentences that hold it back, if any
     """
 
-    def __init__(self, before: Chain):
-        stale = before.stale
+    def __init__(self, before: Chain, night: str):
+        """`before` is its chain as it was judged when the night began."""
         self.target = before.target
-        stamps = [(verdict, read_stamp(verdict.stage.stamp_path)) for verdict in stale]
-        self.ran = [(verdict.stage, stamp) for verdict, stamp in stamps if stamp not in (None, verdict.stamp)]
-        after = chain_of(before.target) if stale else before
+        touched = before.stale or before.night == night
+        after = chain_of(before.target) if touched else before
+        ran = [(verdict.stage, verdict.stamp) for verdict in after.verdicts if touched and verdict.stamp]
+        self.ran = [(stage, stamp) for stage, stamp in ran if stamp.night == night]
         self.failure = _failure(after)
         self.held_by = after.held_by
 
@@ -60,10 +62,11 @@ class Night:
     started : ISO 8601 time, which also tells this night from others
     """
 
-    def __init__(self, targets, started: str):
+    def __init__(self, targets, started: str, verified: bool = False):
+        """`verified`: read the bytes of all outputs, and call for a new run where they are not right."""
         self.started = started
         self._began = time.monotonic()
-        self.chains = [chain_of(target) for target in targets]
+        self.chains = [_verified(target) if verified else glance_at(target) for target in targets]
 
     @property
     def stale(self) -> list[Chain]:
@@ -84,7 +87,16 @@ class Night:
     @cached_property
     def outcomes(self) -> list[Outcome]:
         """What became of each target, as the stamps say it when this is first asked."""
-        return [Outcome(chain) for chain in self.chains]
+        return [Outcome(chain, self.started) for chain in self.chains]
+
+    def seal(self):
+        """Seal the chains that stand without a seal: those that Luigi made stage by stage, or other code."""
+        chains = [glance_at(chain.target) for chain in self.chains if not chain.sealed]
+        chains = [chain for chain in chains if not chain.sealed and not chain.stale]
+        if chains:
+            sync_file_systems({Path(chain.target.seal_path).parent for chain in chains})
+        for chain in chains:
+            write_seal(chain.target, chain.verdicts)
 
     @property
     def failures(self) -> list:
@@ -99,6 +111,14 @@ class Night:
     @property
     def seconds(self) -> float:
         return round(time.monotonic() - self._began, 3)
+
+
+def _verified(target) -> Chain:
+    chain = chain_of(target, believing=False)
+    for verdict in chain.verdicts:
+        if verdict.state == WILL_RUN:  # whoever runs it believes sizes and times
+            void_stamp(verdict.stage.stamp_path, "; ".join(verdict.reasons))
+    return chain
 
 
 def _failure(after: Chain) -> Failure | None:

@@ -1,38 +1,122 @@
 """Running a stage: read, make, put the outputs and then the stamp in place.
 
-The order that makes a kill harmless: the inputs are checked once more; the outputs are written beside
-and brought to the disk; the old stamp goes; the outputs appear, in the stage's order; the stamp appears.
+The order that makes a kill harmless: the inputs are checked once more; the outputs are written beside;
+the old stamp and the seal go; the outputs appear, in the stage's order; the stamp appears. Of published
+files the last, which tells of the others, goes before them and comes after them.
 
-A power cut may undo renames in any order. That is harmless too, and costs no more syncs: a stamp holds
-size, time and digest of its outputs, so one that came back beside other bytes is not believed, and one
-that is lost only makes its stage run again. Only for published files the folder is synced before the
-last of them, probe.json, appears: readers have no stamps.
+And a power cut: outputs are brought to the disk before they appear, and the names of published ones
+before their stamp. Intermediates that a lot makes are not; their stamps say so, and only their bytes are
+believed until a seal vouches for them. What a cut may undo costs a rerun: a stamp holds size, time and
+digest of its outputs, so one that came back beside other bytes is not believed.
 """
 
+import os
 import time
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import NamedTuple
 
 from ..errors import SkykilnError
 from .atomic import remove, rename_into_place, sync_folder, write_beside
 from .content import Input, chunks_of, keep_at_hand
 from .digests import digest_chunks, digest_file
 from .failures import recorded
+from .seals import break_seal
+from .staleness import UP_TO_DATE, Verdict
 from .stamps import OutputRecord, Stamp, read_stamp, write_stamp
 
 
-def run_stage(stage, verdict):
+class Written(NamedTuple):
+    """A stage that has run, whose new outputs still lie beside their places.
+
+    verdict : why it ran; fresh : role -> file beside; records : role -> OutputRecord, all roles
+    on_disk : whether the outputs were brought to the disk one by one
+    """
+
+    stage: object
+    verdict: Verdict
+    fresh: dict
+    records: dict
+    seconds: float
+    on_disk: bool
+
+
+def run_stage(stage, verdict, on_disk: bool = True) -> Verdict:
     """Run a stage whose inputs are all up to date.
 
-    Raises: SkykilnError for what the user can mend; the cause is left beside the stamp too
+    Parameters: on_disk : whether its outputs have to outlive a power cut
+    Returns:    the verdict about it now
+    Raises:     SkykilnError for what the user can mend; the cause is left beside the stamp too
     """
     with recorded(stage):
-        began = time.perf_counter()
-        inputs = _inputs(stage, verdict)
-        contents = stage.make(inputs)
-        _check_inputs_stand(stage, verdict)
-        outputs = _place(stage, contents)
-        write_stamp(stage.stamp_path, _stamp(stage, verdict, outputs, time.perf_counter() - began))
+        written = write_outputs(stage, verdict, on_disk)
+        put_in_place(written)
+        if stage.published:
+            for folder in {Path(stage.files()[role]).parent for role in written.fresh}:
+                sync_folder(folder)
+        return certify(written)
+
+
+def write_outputs(stage, verdict, on_disk: bool) -> Written:
+    """Make the outputs, and write those beside their places whose bytes are not there yet."""
+    began = time.perf_counter()
+    contents = stage.make(_inputs(stage, verdict))
+    _check_inputs_stand(stage, verdict)
+    records, fresh, folder = {}, {}, Path(stage.stamp_path).parent
+    try:
+        for role, path in _paths(stage).items():
+            digest = _write_beside(path, role, contents[role], fresh, on_disk)
+            # The time is that of the file written, not of whatever may stand in its place by now.
+            status = fresh.get(role, path).stat()
+            records[role] = OutputRecord.of(os.path.relpath(path, folder), digest, status)
+    except BaseException:
+        for beside in fresh.values():
+            beside.unlink(missing_ok=True)
+        raise
+    return Written(stage, verdict, fresh, records, time.perf_counter() - began, on_disk)
+
+
+def put_in_place(written: Written):
+    """Let the outputs appear."""
+    stage, fresh, files = written.stage, written.fresh, _paths(written.stage)
+    superseded, last = stage.superseded(), next(reversed(files))
+    break_seal(stage)
+    if fresh or superseded:
+        remove(Path(stage.stamp_path))
+    if stage.published and last in fresh:
+        remove(files[last])
+    for role in [role for role in fresh if role != last]:
+        rename_into_place(fresh[role], files[role])
+    for old in superseded:
+        remove(old)
+    if last in fresh:
+        rename_into_place(fresh[last], files[last])
+
+
+def certify(written: Written, on_disk: bool = False) -> Verdict:
+    """Write the stamp.
+
+    Parameters: on_disk : whether everything has been brought to the disk since the outputs appeared
+    """
+    stage, verdict = written.stage, written.verdict
+    stamp = Stamp(
+        family=stage.get_task_family(),
+        version=stage.version,
+        settings=stage.settings(),
+        inputs=verdict.inputs,
+        outputs=written.records,
+        reason="; ".join(verdict.reasons),
+        seconds=round(written.seconds, 4),
+        ended=datetime.now(UTC).isoformat(timespec="seconds"),
+        night=stage.night,
+        on_disk=on_disk or written.on_disk,
+    )
+    write_stamp(stage.stamp_path, stamp)
+    return Verdict(stage, UP_TO_DATE, (), verdict.inputs, stamp)
+
+
+def _paths(stage):
+    return {role: Path(path) for role, path in stage.files().items()}
 
 
 def _inputs(stage, verdict):
@@ -54,36 +138,15 @@ def _check_inputs_stand(stage, verdict):
             raise SkykilnError(f"{stage.label}: {role} changed while it was read; bake again")
 
 
-def _place(stage, contents):
-    """Put all outputs in place; those whose bytes are equal stay untouched."""
-    files = {role: Path(path) for role, path in stage.files().items()}
-    records, fresh = {}, {}
-    for role, path in files.items():
-        chunks = chunks_of(contents[role])
-        digest = digest_chunks(chunks)
-        if not _holds(path, chunks, digest):
-            fresh[role] = write_beside(path, chunks)
-        # The time is that of the file written, not of whatever may stand in its place by now.
-        records[role] = OutputRecord.of(path.name, digest, fresh.get(role, path).stat())
-        if hasattr(contents[role], "dtype"):
-            keep_at_hand(Input(path, digest), contents[role])
-    _appear(stage, files, fresh)
-    return records
-
-
-def _appear(stage, files, fresh):
-    superseded = stage.superseded()
-    if fresh or superseded:
-        remove(Path(stage.stamp_path))
-    last = next(reversed(files))
-    for role in [role for role in fresh if role != last]:
-        rename_into_place(fresh[role], files[role])
-    for old in superseded:
-        remove(old)
-    if last in fresh:
-        if stage.published:
-            sync_folder(files[last].parent)
-        rename_into_place(fresh[last], files[last])
+def _write_beside(path, role, content, fresh, on_disk):
+    """Digest of an output; its file beside goes into `fresh` unless the bytes are there already."""
+    chunks = chunks_of(content)
+    digest = digest_chunks(chunks)
+    if not _holds(path, chunks, digest):
+        fresh[role] = write_beside(path, chunks, synced=on_disk)
+    if hasattr(content, "dtype"):
+        keep_at_hand(Input(path, digest), content)
+    return digest
 
 
 def _holds(path, chunks, digest):
@@ -92,16 +155,3 @@ def _holds(path, chunks, digest):
         return path.stat().st_size == size and digest_file(path) == digest
     except OSError:
         return False
-
-
-def _stamp(stage, verdict, outputs, seconds):
-    return Stamp(
-        family=stage.get_task_family(),
-        version=stage.version,
-        settings=stage.settings(),
-        inputs=verdict.inputs,
-        outputs=outputs,
-        reason="; ".join(verdict.reasons),
-        seconds=round(seconds, 4),
-        ended=datetime.now(UTC).isoformat(timespec="seconds"),
-    )

@@ -14,6 +14,8 @@ Parameters that are only handed down to other stages stay out of `settings`: the
 through the digests of the inputs.
 """
 
+import json
+
 import luigi
 
 from .running import run_stage
@@ -28,24 +30,29 @@ class Stage(luigi.Task):
     published = False  # whether others than stages read the outputs
     sketched = False
 
+    # Which night it runs in, for its stamp alone: not what it makes, so not significant.
+    night = luigi.Parameter(default="", significant=False)
+
     @classmethod
-    def sketch(cls, **parameters) -> "Stage":
+    def sketch(cls, night="", **parameters) -> "Stage":
         """The same stage without Luigi's task id and parsing of parameters, a hundredth of the cost.
 
         `plan`, lots and completeness compare stages by the thousand; only what Luigi itself is to
         run becomes a full task.
         """
         stage = object.__new__(cls)
-        vars(stage).update(parameters, sketched=True)
+        vars(stage).update(parameters, night=night, sketched=True)
         return stage
 
     def full(self) -> "Stage":
         """The Luigi task of a sketch."""
-        return type(self)(**{name: getattr(self, name) for name in self.get_param_names()})
+        names = self.get_param_names(include_significant=True)
+        return type(self)(**{name: getattr(self, name) for name in names})
 
     def beside(self, other: type["Stage"], **parameters) -> "Stage":
         """Another stage, sketched if this one is."""
-        return other.sketch(**parameters) if self.sketched else other(**parameters)
+        make = other.sketch if self.sketched else other
+        return make(night=self.night, **parameters)
 
     @property
     def label(self) -> str:
@@ -75,6 +82,21 @@ class Stage(luigi.Task):
         """Where the stamp lies: beside the first output."""
         return f"{next(iter(self.files().values()))}.stamp"
 
+    @property
+    def seal_path(self) -> str:
+        """Where the seal lies of the target that the stage works for."""
+        return f"{self.stamp_path.removesuffix('.stamp')}.seal"
+
+    @property
+    def wanted(self) -> str:
+        """All that decides what this stage, as a target, and the stages below it make; no folders."""
+        return json.dumps(self.settings())
+
+    @staticmethod
+    def known_versions() -> tuple:
+        """Class and version of every stage that this process knows."""
+        return tuple(_versions_below(Stage))
+
     def output_role(self, role: str) -> str:
         """Which output is meant by whoever reads this stage under `role`."""
         files = self.files()
@@ -94,3 +116,9 @@ class Stage(luigi.Task):
 
     def __repr__(self):
         return f"{type(self).__name__}({self.label})"
+
+
+def _versions_below(family):
+    for each in family.__subclasses__():
+        yield each.__name__, each.version
+        yield from _versions_below(each)

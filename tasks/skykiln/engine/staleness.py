@@ -13,6 +13,20 @@ MAY_RUN = "may run"  # what it reads is to be made anew, and may come out as it 
 HELD = "held"  # would run, but something forbids it; what it made before stays
 
 
+class Trust(NamedTuple):
+    """When size and time of an output may stand for its bytes.
+
+    files : (path, size, time in ns) of outputs that are known to be on the disk
+    stamps : whether stamps are believed that say so of theirs
+    """
+
+    files: frozenset = frozenset()
+    stamps: bool = True
+
+
+BY_STAMPS = Trust()
+
+
 class Verdict(NamedTuple):
     """Whether a stage must run.
 
@@ -39,27 +53,28 @@ class Verdict(NamedTuple):
         return self.state in (UP_TO_DATE, HELD)
 
 
-def staleness(stage, memo: dict) -> Verdict:
+def staleness(stage, memo: dict, trust: Trust = BY_STAMPS) -> Verdict:
     """Judge a stage, and everything below it.
 
     Parameters: memo : verdicts of this question by stamp path; filled on the way, so that a stage
                        reached on two ways is judged once. What is read comes before what reads it.
     """
-    known = memo.get(stage.stamp_path)
+    path = stage.stamp_path
+    known = memo.get(path)
     if known is None:
-        known = memo[stage.stamp_path] = _verdict(stage, memo)
+        known = memo[path] = _verdict(stage, memo, trust)
     return known
 
 
-def _verdict(stage, memo):
+def _verdict(stage, memo, trust):
     required = stage.requires()
     inputs = dict(stage.pins())
     for role, dependency in required.items():
-        below = staleness(dependency, memo)
+        below = staleness(dependency, memo, trust)
         known = below.stamp.outputs[dependency.output_role(role)] if below.up_to_date else None
         inputs[role] = known and known.digest
     stamp = read_stamp(stage.stamp_path)
-    reasons = tuple(_reasons(stage, stamp, inputs))
+    reasons = tuple(_reasons(stage, stamp, inputs, trust))
     if reasons:
         held = stage.held_by() if None not in inputs.values() else ()
         return Verdict(stage, HELD if held else WILL_RUN, held or reasons, inputs, stamp)
@@ -69,7 +84,7 @@ def _verdict(stage, memo):
     return Verdict(stage, UP_TO_DATE, (), inputs, stamp)
 
 
-def _reasons(stage, stamp, inputs):
+def _reasons(stage, stamp, inputs, trust):
     if stamp is None:
         begun = any(Path(path).exists() for path in stage.files().values())
         yield "its last run did not end" if begun else "was never baked"
@@ -81,7 +96,7 @@ def _reasons(stage, stamp, inputs):
         yield from _version_reasons(stage, stamp)
         yield from _setting_reasons(stamp.settings, stage.settings())
         yield from _input_reasons(stamp.inputs, inputs)
-        yield from _output_reasons(stamp.outputs, stage.files())
+        yield from _output_reasons(stamp, stage.files(), trust)
 
 
 def _version_reasons(stage, stamp):
@@ -113,18 +128,19 @@ def _input_reasons(recorded, inputs):
             yield f"{_words(role)} is no longer an input"
 
 
-def _output_reasons(recorded, files):
-    if recorded.keys() != files.keys():
+def _output_reasons(stamp, files, trust):
+    if stamp.outputs.keys() != files.keys():
         yield "its outputs are other ones now"
         return
-    for role, record in recorded.items():
+    for role, record in stamp.outputs.items():
+        seen = (files[role], *record.seen)
         try:
-            fits = record.fits(Path(files[role]))
+            fits = record.fits(Path(files[role]), trust.stamps and (stamp.on_disk or seen in trust.files))
         except OSError:
-            yield f"{record.file} is missing"
+            yield f"{Path(record.file).name} is missing"
         else:
             if not fits:
-                yield f"{record.file} was changed by something else"
+                yield f"{Path(record.file).name} was changed by something else"
 
 
 def _words(role):

@@ -14,7 +14,7 @@ from .digests import digest_file, json_bytes
 
 
 class OutputRecord(NamedTuple):
-    """One output file as it was when its stamp was written."""
+    """One output file as it was when its stamp was written; its path is relative to the stamp's folder."""
 
     file: str
     digest: str
@@ -25,13 +25,19 @@ class OutputRecord(NamedTuple):
     def of(cls, file: str, digest: str, status: os.stat_result):
         return cls(file, digest, status.st_size, status.st_mtime_ns)
 
-    def fits(self, path: Path) -> bool:
-        """Whether the file still holds the recorded bytes; they are read only if size or time differ.
+    @property
+    def seen(self) -> tuple:
+        """Size and time."""
+        return self.size, self.mtime_ns
 
-        Raises: FileNotFoundError
+    def fits(self, path: Path, believed: bool = True) -> bool:
+        """Whether the file still holds the recorded bytes.
+
+        Parameters: believed : whether size and time may prove it; else the bytes are read
+        Raises:     FileNotFoundError
         """
         status = path.stat()
-        if (status.st_size, status.st_mtime_ns) == (self.size, self.mtime_ns):
+        if believed and (status.st_size, status.st_mtime_ns) == self.seen:
             return True
         return status.st_size == self.size and digest_file(path) == self.digest
 
@@ -42,7 +48,9 @@ class Stamp:
 
     settings : the parameters that the stage's run reads
     inputs : role -> digest; outputs : role -> OutputRecord
-    reason : the sentence why it ran; seconds : how long; ended : when, ISO 8601
+    reason : the sentence why it ran; seconds : how long; ended : when, ISO 8601; night : in which
+    on_disk : whether the outputs were on the disk when it was written; else, after a power cut, their
+              size and time prove nothing
     void : empty, or why the stage must run again whatever the rest says
     """
 
@@ -54,6 +62,8 @@ class Stamp:
     reason: str
     seconds: float
     ended: str
+    night: str
+    on_disk: bool
     void: str = ""
 
     def to_bytes(self) -> bytes:

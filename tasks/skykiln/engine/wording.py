@@ -12,6 +12,7 @@ def plan_lines(chains):
     for chain in chains:
         yield from _lines(chain)
     states = Counter(verdict.state for chain in chains for verdict in chain.verdicts)
+    states[UP_TO_DATE] += sum(chain.sealed for chain in chains)
     held = f", {states[HELD]} held" if states[HELD] else ""
     yield f"{states[WILL_RUN]} will run, {states[MAY_RUN]} may run, {states[UP_TO_DATE]} up to date{held}"
 

@@ -6,8 +6,9 @@ from pathlib import Path
 from ..config import Pipeline
 from ..engine.atomic import told_as_file_error
 from ..engine.chains import chain_of
-from ..engine.night import STATES, Night, now, write_night
+from ..engine.night import STATES, Night, write_night
 from ..engine.release import release
+from ..engine.seals import break_seal
 from ..engine.stamps import void_stamp
 from ..engine.waves import build_wave, waves_of
 from ..errors import ALL_WELL, GATE_BROKEN, SOURCE_FAILED
@@ -32,13 +33,14 @@ def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) ->
     """
     if again:
         call_for_all(snapshot)
-    night = Night(snapshot.targets, now())
+    night = Night(snapshot.targets, snapshot.night)
     if night.stale:
         prepare(night, snapshot, workers)
-        tasks = luigi_tasks(night.stale, snapshot.pipeline.build_dir, workers)
+        tasks = luigi_tasks(night.stale, snapshot, workers)
         with shown(night.stale), manifests_removed(tasks):
             for wave in waves_of(tasks):
                 build_wave(wave, workers, verbose)
+    night.seal()
     return night, write_record(night, snapshot)
 
 
@@ -55,6 +57,7 @@ def call_for_all(snapshot: Snapshot):
     """Make every stage of the snapshot stale."""
     for target in snapshot.targets:
         for verdict in chain_of(target).verdicts:
+            break_seal(verdict.stage)
             void_stamp(verdict.stage.stamp_path, "was asked for again")
 
 

@@ -44,6 +44,13 @@ class PinnedProbe:
         return cls(**{**fields, "probe": Probe.from_json(canonical_json(fields["probe"]))})
 
     @property
+    def wanted(self) -> str:
+        """All that decides what is made of the probe, as text. No folders: machines have their own."""
+        folders = ("root", "build_dir")
+        said = {name: value for name, value in vars(self).items() if name not in (*folders, "probe")}
+        return canonical_json({**said, "probe": json.loads(self.probe.to_json())})
+
+    @property
     def source_path(self) -> str:
         return f"{self.root}/{self.probe.file}" if self.probe.file[:1] != "/" else self.probe.file
 
@@ -77,6 +84,14 @@ class ProbeStage(Stage):
     @property
     def owner(self):
         return self.pinned.probe.name
+
+    @property
+    def wanted(self):
+        return self.pinned.wanted
+
+    @property
+    def seal_path(self):
+        return self.work_file("probe.json.seal")
 
     @property
     def priority(self):

@@ -65,7 +65,7 @@ class BakeAll(luigi.Task):
 
     def complete(self):
         self._tasks = None
-        self._snapshot = Snapshot(load_pipeline(self.pipeline))
+        self._snapshot = Snapshot(load_pipeline(self.pipeline), night=self.night)
         self._night = Night(self._snapshot.targets, self.night)
         return not self._night.stale and _is_written(night_file(self._snapshot.pipeline), self.night)
 
@@ -81,9 +81,10 @@ class BakeAll(luigi.Task):
             return []
         workers = os.cpu_count()  # Luigi keeps to itself how many there are
         prepare(self._night, self._snapshot, workers)
-        return luigi_tasks(self._night.stale, self._snapshot.pipeline.build_dir, workers)
+        return luigi_tasks(self._night.stale, self._snapshot, workers)
 
     def run(self):
+        self._night.seal()
         with manifests_removed(self._tasks):
             write_record(self._night, self._snapshot)
 

@@ -11,18 +11,19 @@ from ..engine.lots import form_lots
 from .bake_lot import BakeLot
 from .extract_faces import auto_face_size
 from .publish_probe import PublishProbe
+from .snapshot import Snapshot
 
 BIG_SECONDS = 0.2  # a probe that takes longer has stages worth a task each
 LONGEST_LOT = 60.0
 LOTS_PER_WORKER = 4  # so that workers end at about the same time
 
 
-def luigi_tasks(chains, build_dir: Path, workers: int) -> list:
+def luigi_tasks(chains, snapshot: Snapshot, workers: int) -> list:
     """Pairs of a task that brings stale chains up to date, and of the number of tasks it brings along."""
     small = [chain.target for chain in chains if _is_small(chain.target)]
     big = [chain for chain in chains if not _is_small(chain.target)]
     tasks = [(chain.target.full(), len(chain.stale)) for chain in big]
-    return tasks + [(lot, 1) for lot in _lots(small, build_dir, workers)]
+    return tasks + [(lot, 1) for lot in _lots(small, snapshot, workers)]
 
 
 @contextmanager
@@ -31,8 +32,9 @@ def manifests_removed(tasks):
     try:
         yield
     finally:
-        for manifest in {task.manifest for task, _ in tasks if isinstance(task, BakeLot)}:
-            remove(Path(manifest))
+        for task, _ in tasks:
+            if isinstance(task, BakeLot):
+                remove(Path(task.manifest))
 
 
 def _is_small(target):
@@ -50,13 +52,17 @@ def expected_seconds(pinned) -> float:
     return 0.01 + 8 * face * face * 2e-7 + size * 2e-8
 
 
-def _lots(targets, build_dir, workers):
+def _lots(targets, snapshot, workers):
     seconds = [expected_seconds(target.pinned) for target in targets]
     longest = min(LONGEST_LOT, sum(seconds) / (LOTS_PER_WORKER * workers)) if workers > 1 else LONGEST_LOT
     lots = form_lots([target.pinned for target in targets], seconds, longest)
-    if not lots:
-        return []
-    manifest = canonical_json([[pinned.to_json() for pinned in lot] for lot in lots]).encode()
-    path = build_dir / "work" / ".lots" / f"{hashlib.sha256(manifest).hexdigest()[:16]}.json"
+    return [_lot(lot, snapshot) for lot in lots]
+
+
+def _lot(lot, snapshot):
+    """A lot's task, and its manifest: a parameter of its length would travel in every message of Luigi."""
+    manifest = canonical_json([pinned.to_json() for pinned in lot]).encode()
+    name = f"{hashlib.sha256(manifest).hexdigest()[:16]}.json"
+    path = snapshot.pipeline.build_dir / "work" / ".lots" / name
     write_atomically(path, [manifest], synced=False)
-    return [BakeLot(manifest=str(path), number=number) for number in range(len(lots))]
+    return BakeLot(manifest=str(path), night=snapshot.night)

@@ -4,6 +4,7 @@ import difflib
 import fnmatch
 
 from ..config import Pipeline, canonical_json
+from ..engine.night import now
 from ..engine.pins import Pins
 from ..errors import PipelineError
 from .gates import PROBE_GATES
@@ -17,18 +18,22 @@ class Snapshot:
     """The targets of some probes of a pipeline, as sketches, and the pins that they hold to.
 
     brdf : the stage of the shared table; probes : one PublishProbe per probe
+    night : ISO 8601 time of the night that they are made in
     """
 
-    def __init__(self, pipeline: Pipeline, patterns=()):
+    def __init__(self, pipeline: Pipeline, patterns=(), night: str | None = None):
         self.pipeline = pipeline
+        self.night = night or now()
         self.pins = Pins(pipeline.build_dir / "work" / ".pins.json")
-        self.brdf = TabulateBrdf.sketch(build_dir=str(pipeline.build_dir), size=pipeline.brdf_size)
+        self.brdf = TabulateBrdf.sketch(
+            night=self.night, build_dir=str(pipeline.build_dir), size=pipeline.brdf_size
+        )
         limits = {key: limit for key, limit in pipeline.gates.items() if key in PROBE_GATES}
         self._gates = canonical_json(limits)
         chosen = matching(pipeline.probes(), patterns)
         check_extras(pipeline, chosen)
         pinned = [self._pinned(probe) for probe in chosen]
-        self.probes = [PublishProbe.sketch(pinned=probe) for probe in pinned]
+        self.probes = [PublishProbe.sketch(night=self.night, pinned=probe) for probe in pinned]
 
     @property
     def targets(self) -> list:
