@@ -45,7 +45,7 @@ def _bake(options):
         print(f"{owner}: held: {'; '.join(sentences)}", file=sys.stderr)
     for gate in record["gates"]:
         print(f"the night: {gate['gate']}: {gate['why']}", file=sys.stderr)
-    print(night_sentence(night))
+    print(night_sentence(record))
     return record["exit_status"]
 
 

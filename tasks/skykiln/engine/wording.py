@@ -49,12 +49,11 @@ def why_lines(chains):
                     yield f"    failed last time: {failure.cause}"
 
 
-def night_sentence(night) -> str:
-    """What a night did, in a line."""
-    states = Counter(outcome.state for outcome in night.outcomes)
-    ran = sum(len(outcome.ran) for outcome in night.outcomes)
-    told = ", ".join(f"{states[state]} {state}" for state in STATES if states[state] or state != HELD)
-    return f"{told}; {ran} stages ran in {night.seconds:.1f} s"
+def night_sentence(record: dict) -> str:
+    """What a night did, in a line: from the values of night.json."""
+    totals = record["totals"]
+    told = ", ".join(f"{totals[state]} {state}" for state in STATES if totals[state] or state != HELD)
+    return f"{told}; {record['stages_run']} stages ran in {record['seconds']:.1f} s"
 
 
 def _last_run(stamp):
