@@ -27,17 +27,30 @@ def main(arguments=None) -> int:
 
 
 def _bake(options):
-    from .stages.kernels import share_cores
+    from .config import load_pipeline
+    from .engine.locks import at_work_in
 
-    share_cores(options.workers)
+    pipeline = load_pipeline(options.file)
+    with at_work_in(pipeline.build_dir / "work", options.shard, _say_waiting):
+        return _bake_alone(options, pipeline)
+
+
+def _bake_alone(options, pipeline):
     from .engine.progress import shown
     from .engine.wording import night_sentence
-    from .stages.nights import bake
+    from .stages.kernels import available_cores
+    from .stages.nights import bake, end_shared_night, shared_night
+    from .stages.snapshot import Snapshot
 
-    snapshot = _snapshot(options)
+    together = options.shard or options.finish
+    night_id = shared_night(pipeline) if together else None
+    snapshot = Snapshot(pipeline, options.names, night_id, options.verify, options.shard)
     if options.accept:
         _accept(options.names, snapshot)
-    night, record = bake(snapshot, options.workers, options.again, options.verbose, shown)
+    workers = options.workers or available_cores()
+    night, record = bake(snapshot, workers, options.again, options.verbose, shown)
+    if options.finish:
+        end_shared_night(pipeline)
     for owner, failure in night.failures:
         cause = failure.traceback or failure.cause.replace(f"{snapshot.pipeline.root}/", "")
         print(f"{owner}: {cause}", file=sys.stderr)
@@ -47,6 +60,10 @@ def _bake(options):
         print(f"the night: {gate['gate']}: {gate['why']}", file=sys.stderr)
     print(night_sentence(record))
     return record["exit_status"]
+
+
+def _say_waiting():
+    print("another bake of this folder is at work; waiting until it ends", file=sys.stderr, flush=True)
 
 
 def _accept(names, snapshot):
@@ -59,14 +76,15 @@ def _accept(names, snapshot):
 
 
 def _plan(options):
-    from .engine.chains import chain_of
+    from .engine.chains import chain_of, glance_at
     from .engine.wording import plan_lines, plan_record
 
-    chains = [chain_of(target) for target in _snapshot(options).targets]
+    targets = _snapshot(options).targets
     if options.json:
+        chains = [chain_of(target) for target in targets]
         print(json.dumps({"chains": plan_record(chains)}, indent=1, ensure_ascii=False))
     else:
-        print("\n".join(plan_lines(chains)))
+        print("\n".join(plan_lines([glance_at(target) for target in targets])))
     return ALL_WELL
 
 
@@ -76,6 +94,26 @@ def _why(options):
 
     chains = [chain_of(target) for target in _snapshot(options).probes]
     print("\n".join(why_lines(chains)))
+    return ALL_WELL
+
+
+def _prune(options):
+    from .config import load_pipeline
+    from .engine.locks import at_work_in
+    from .engine.prune import leftovers, remove_leftovers
+    from .engine.wording import prune_lines
+    from .stages.snapshot import Snapshot
+
+    pipeline = load_pipeline(options.file)
+    work = pipeline.build_dir / "work"
+    if not work.is_dir():
+        print("nothing was baked here yet")
+        return ALL_WELL
+    with at_work_in(work, None, _say_waiting):
+        found = leftovers(work, Snapshot(pipeline).targets)
+        print("\n".join(prune_lines(found, pipeline.root, options.dry_run)))
+        if not options.dry_run:
+            remove_leftovers(pipeline.build_dir, found)
     return ALL_WELL
 
 
@@ -123,7 +161,17 @@ def _parser():
         "--accept", action="store_true", help="publish what a gate holds of the probes named, as it is packed"
     )
     bake.add_argument(
-        "--workers", type=_positive, default=1, metavar="N", help="processes that share the cores (1)"
+        "--workers", type=_positive, metavar="N", help="processes for small probes (as many as cores)"
+    )
+    bake.add_argument(
+        "--verify", action="store_true", help="read all bytes again where size and time would do"
+    )
+    farm = bake.add_mutually_exclusive_group()
+    farm.add_argument(
+        "--shard", type=_shard, metavar="K/N", help="bake share K of N, K from 0: on one machine of a farm"
+    )
+    farm.add_argument(
+        "--finish", action="store_true", help="end a night of shards: bake what is left, write night.json"
     )
     bake.add_argument("-v", "--verbose", action="store_true", help="show what Luigi logs")
     plan = _command(commands, "plan", _plan, "say which stages would run, and why")
@@ -131,6 +179,8 @@ def _parser():
     plan.add_argument("--json", action="store_true", help="every stage and its state, as JSON")
     why = _command(commands, "why", _why, "say why stages ran last, or would run next")
     _names(why, "+")
+    prune = _command(commands, "prune", _prune, "remove what no entry asks for any more")
+    prune.add_argument("--dry-run", action="store_true", help="say what would go, and leave it")
     inspect = _command(commands, "inspect", _inspect, "show what a packed file holds", pipeline=False)
     inspect.add_argument("packed", metavar="FILE", help="a KTX2, DDS or OpenEXR file")
     inspect.add_argument("--check", action="store_true", help="name every broken rule of the format")
@@ -174,6 +224,15 @@ def _direction(text):
     if len(numbers) != 3 or not all(abs(number) < 1e30 for number in numbers) or not any(numbers):
         raise argparse.ArgumentTypeError(f"{text!r} is no vector x,y,z")
     return numbers
+
+
+def _shard(text):
+    from .engine.shards import Shard
+
+    try:
+        return Shard.parse(text)
+    except ValueError:
+        raise argparse.ArgumentTypeError(f"{text!r} is not K/N, with K from 0 to N - 1") from None
 
 
 def _positive(text):

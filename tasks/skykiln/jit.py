@@ -40,6 +40,11 @@ def cache_directory() -> Path:
 _CACHE = str(cache_directory())
 
 
+def use_threads(count: int):
+    """Let parallel kernels that this thread calls run on so many threads, at most those that there are."""
+    numba.set_num_threads(max(1, min(count, config.NUMBA_NUM_THREADS)))
+
+
 def _declare(function, **options):
     before, config.CACHE_DIR = config.CACHE_DIR, _CACHE
     try:

@@ -42,9 +42,9 @@ def write_beside(path: Path, chunks, synced: bool = True) -> Path:
     """
     beside = temporary_name(path)
     with told_as_file_error(path):
-        path.parent.mkdir(parents=True, exist_ok=True)
         try:
-            _write(beside, chunks, synced)
+            with _created(beside) as file:
+                _write(file, chunks, synced)
         except BaseException:
             beside.unlink(missing_ok=True)
             raise
@@ -107,13 +107,20 @@ def sync_file_systems(folders):
             os.close(handle)
 
 
-def _write(path, chunks, synced):
-    with path.open("wb") as file:
-        for chunk in chunks:
-            file.write(chunk)
-        if synced:
-            file.flush()
-            os.fsync(file.fileno())
+def _created(path):
+    try:
+        return path.open("wb")
+    except FileNotFoundError:
+        path.parent.mkdir(parents=True, exist_ok=True)
+        return path.open("wb")
+
+
+def _write(file, chunks, synced):
+    for chunk in chunks:
+        file.write(chunk)
+    if synced:
+        file.flush()
+        os.fsync(file.fileno())
 
 
 def _host():

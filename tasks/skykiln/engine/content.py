@@ -15,6 +15,7 @@ from .digests import json_bytes
 AT_HAND_BYTES = 64 * 2**20
 
 _at_hand: OrderedDict = OrderedDict()
+_held = 0  # bytes of them
 
 
 def chunks_of(content) -> list:
@@ -34,9 +35,10 @@ class Input(NamedTuple):
 
     def array(self):
         """The array of a .npy file; don't write to it."""
-        if self in _at_hand:
-            _at_hand.move_to_end(self)
-            return _at_hand[self]
+        known = _at_hand.get(_key(self))
+        if known is not None:
+            _at_hand.move_to_end(_key(self))
+            return known
         import numpy as np
 
         # "c", copy on write: a read-only array would be another type to Numba, compiled anew.
@@ -55,12 +57,18 @@ class Input(NamedTuple):
 
 def keep_at_hand(file: Input, array):
     """Remember an array for the stages that come next, the oldest ones making room."""
+    global _held
     if array.nbytes > AT_HAND_BYTES // 8:
         return
-    _at_hand[file] = array
-    total = sum(kept.nbytes for kept in _at_hand.values())
-    while total > AT_HAND_BYTES:
-        total -= _at_hand.popitem(last=False)[1].nbytes
+    before = _at_hand.pop(_key(file), None)
+    _at_hand[_key(file)] = array
+    _held += array.nbytes - (0 if before is None else before.nbytes)
+    while _held > AT_HAND_BYTES:
+        _held -= _at_hand.popitem(last=False)[1].nbytes
+
+
+def _key(file):
+    return str(file.path), file.digest
 
 
 def _npy_chunks(array):

@@ -32,26 +32,36 @@ def recorded(stage):
         yield
     except Exception as error:
         data = json_bytes(_failure(stage, error)._asdict())
-        write_atomically(_path(stage), [data], synced=False)
+        write_atomically(failure_path(stage), [data], synced=False)
         raise
-    remove(_path(stage))
+    remove(failure_path(stage))
 
 
 def read_failure(stage) -> Failure | None:
     """The failure that a stage left, if it did."""
-    try:
-        return Failure(**json.loads(_path(stage).read_bytes()))
-    except (OSError, ValueError, TypeError):
-        return None
+    return _read(failure_path(stage))
+
+
+def is_failure(path: Path) -> bool:
+    """Whether a file is such a cause."""
+    return _read(path) is not None
 
 
 def forget_failure(stage):
     """Remove what an earlier night left."""
-    remove(_path(stage))
+    remove(failure_path(stage))
 
 
-def _path(stage):
+def failure_path(stage) -> Path:
+    """Where a stage leaves the cause."""
     return Path(stage.stamp_path).with_suffix(".failure")
+
+
+def _read(path):
+    try:
+        return Failure(**json.loads(path.read_bytes()))
+    except (OSError, ValueError, TypeError):
+        return None
 
 
 def _failure(stage, error):

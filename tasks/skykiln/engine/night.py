@@ -1,11 +1,12 @@
 """A night: one run of the pipeline, and its summary night.json."""
 
+import os
 import time
 from datetime import UTC, datetime
 from functools import cached_property
 from pathlib import Path
 
-from .atomic import sweep, sync_file_systems, write_atomically
+from .atomic import remove, sweep, sync_file_systems, write_atomically, write_beside
 from .chains import Chain, chain_of, glance_at
 from .digests import json_bytes
 from .failures import Failure, forget_failure, read_failure
@@ -131,6 +132,22 @@ def _failure(after: Chain) -> Failure | None:
     if unfinished:
         return Failure(unfinished[0].label, "was stopped before it ended; bake again", "")
     return None
+
+
+def shared_night_id(path: Path) -> str:
+    """The id of the night that the shards of a farm have in common, which the first of them gives.
+
+    Parameters: path : the file that holds it until the night ends
+    """
+    if not path.exists():
+        beside = write_beside(path, [now().encode()], synced=False)
+        try:
+            os.link(beside, path)  # unlike a rename, only one can win
+        except FileExistsError:
+            pass
+        finally:
+            remove(beside)
+    return path.read_text()
 
 
 def write_night(path: Path, record: dict):

@@ -132,8 +132,10 @@ def _inputs(stage, verdict):
 
 def _check_inputs_stand(stage, verdict):
     """What was read must still be what its maker's stamp says."""
+    stamps = {}
     for role, dependency in stage.requires().items():
-        stamp = read_stamp(dependency.stamp_path)
+        path = dependency.stamp_path
+        stamp = stamps[path] = stamps[path] if path in stamps else read_stamp(path)
         if stamp is None or stamp.outputs[dependency.output_role(role)].digest != verdict.inputs[role]:
             raise SkykilnError(f"{stage.label}: {role} changed while it was read; bake again")
 

@@ -29,6 +29,9 @@ class Stage(luigi.Task):
     version = 1
     published = False  # whether others than stages read the outputs
     sketched = False
+    # A stage that is a Luigi task of its own is large: its kernels take all cores, and memory is for one
+    # such. Luigi takes the limit of a resource that its configuration does not name as 1.
+    resources = {"skykiln_machine": 1}  # noqa: RUF012, Luigi's own way to declare it
 
     # Which night it runs in, for its stamp alone: not what it makes, so not significant.
     night = luigi.Parameter(default="", significant=False)

@@ -10,7 +10,7 @@ from pathlib import Path
 from typing import NamedTuple
 
 from .atomic import write_atomically
-from .digests import digest_file, json_bytes
+from .digests import digest_file
 
 
 class OutputRecord(NamedTuple):
@@ -67,9 +67,9 @@ class Stamp:
     void: str = ""
 
     def to_bytes(self) -> bytes:
-        fields = dataclasses.asdict(self)
-        fields["outputs"] = {role: record._asdict() for role, record in self.outputs.items()}
-        return json_bytes(fields)
+        outputs = {role: record._asdict() for role, record in self.outputs.items()}
+        # On one line: a tenth of the time that indented JSON takes, and there are a dozen a probe.
+        return json.dumps({**vars(self), "outputs": outputs}, ensure_ascii=False, allow_nan=False).encode()
 
     @classmethod
     def from_bytes(cls, data: bytes) -> "Stamp":

@@ -1,5 +1,6 @@
 """Chains in words, for `plan` and `why`, and as JSON."""
 
+import os
 from collections import Counter
 
 from .failures import read_failure
@@ -60,6 +61,20 @@ def _last_run(stamp):
     if stamp is None:
         return "no finished run on record"
     return f"ran {stamp.ended} ({stamp.seconds:.2f} s): {stamp.reason}"
+
+
+def prune_lines(found, root, dry_run: bool):
+    """A line for every file that goes, every one that stays because it was changed, and the count.
+
+    Parameters: found : Leftovers; root : folder that paths are told relative to
+    """
+    outputs = [path for leftover in found for path in leftover.outputs]
+    for path in outputs:
+        yield f"{'would remove' if dry_run else 'removed'}: {os.path.relpath(path, root)}"
+    for path in [path for leftover in found for path in leftover.kept]:
+        yield f"kept: {os.path.relpath(path, root)}: was changed by something else"
+    size = bytes_in_words(sum(path.stat().st_size for path in outputs))
+    yield f"{len(outputs)} files, {size}, {'would be ' if dry_run else ''}removed"
 
 
 def bytes_in_words(count: int) -> str:

@@ -17,7 +17,10 @@ class BakeLot(luigi.Task):
     """One lot.
 
     manifest : JSON file, a list of pinned probes; night : as of stages
+    threads : of each kernel; None to leave them as they are. Of the process, not of the task
     """
+
+    threads = None
 
     task_namespace = "skykiln"
     manifest = luigi.Parameter()
@@ -27,6 +30,10 @@ class BakeLot(luigi.Task):
         return not any(glance_at(target).stale for target in self._targets)
 
     def run(self):
+        from ..jit import use_threads
+
+        if self.threads:
+            use_threads(self.threads)
         failed = bake_lot(self._targets)
         if failed:
             raise SkykilnError(f"{len(failed)} of a lot failed: {', '.join(failed)}")

@@ -61,7 +61,6 @@ def _run_every_coding(level):
         coding.decode(blocks, level.shape[:3])
 
 
-def share_cores(workers: int):
-    """Give each worker its share of this process's cores; before Numba is first imported."""
-    cores = len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count()
-    os.environ.setdefault("NUMBA_NUM_THREADS", str(max(1, cores // workers)))
+def available_cores() -> int:
+    """The cores that this process may use."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count()

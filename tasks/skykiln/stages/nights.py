@@ -4,17 +4,18 @@ import json
 from pathlib import Path
 
 from ..config import Pipeline
-from ..engine.atomic import told_as_file_error
+from ..engine.atomic import remove, told_as_file_error
 from ..engine.chains import chain_of
-from ..engine.night import STATES, Night, write_night
+from ..engine.night import STATES, Night, shared_night_id, write_night
 from ..engine.release import release
 from ..engine.seals import break_seal
 from ..engine.stamps import void_stamp
 from ..engine.waves import build_wave, waves_of
 from ..errors import ALL_WELL, GATE_BROKEN, SOURCE_FAILED
+from .bake_lot import BakeLot
 from .gates import NIGHT_GATES, broken_gates
 from .judge_probe import accept_judgement, read_judgement
-from .kernels import warm_kernels
+from .kernels import available_cores, warm_kernels
 from .shares import luigi_tasks, manifests_removed
 from .snapshot import Snapshot
 
@@ -24,23 +25,36 @@ def night_file(pipeline: Pipeline) -> Path:
     return pipeline.build_dir / "night.json"
 
 
+def shared_night(pipeline: Pipeline) -> str:
+    """The night that shards bake together, until `end_shared_night`."""
+    return shared_night_id(_shared_night_file(pipeline))
+
+
+def end_shared_night(pipeline: Pipeline):
+    """The next shard begins another night."""
+    remove(_shared_night_file(pipeline))
+
+
 def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) -> tuple[Night, dict]:
     """One night from the skykiln command.
 
     Parameters: again : run every stage; verbose : let Luigi log
                 shown : context manager that shows the progress of stale chains
-    Returns:    the night, and the values of the night.json that tells of it
+    Returns:    the night, and the values of the night.json that tells of it; that of a shard isn't written
     """
     if again:
         call_for_all(snapshot)
-    night = Night(snapshot.targets, snapshot.night)
+    night = Night(snapshot.targets, snapshot.night, snapshot.verified)
     if night.stale:
         prepare(night, snapshot, workers)
-        tasks = luigi_tasks(night.stale, snapshot, workers)
-        with shown(night.stale), manifests_removed(tasks):
-            for wave in waves_of(tasks):
-                build_wave(wave, workers, verbose)
+        lots, big = luigi_tasks(night.stale, snapshot, workers)
+        with shown(night.stale), manifests_removed(lots):
+            _bake_lots(lots, workers, verbose)
+            for wave in waves_of(big):  # one stage at a time, in this process, its kernels on all cores
+                build_wave(wave, 1, verbose)
     night.seal()
+    if snapshot.shard:
+        return night, night_record(night, snapshot.pipeline)
     return night, write_record(night, snapshot)
 
 
@@ -98,6 +112,22 @@ def night_record(night: Night, pipeline: Pipeline) -> dict:
     }
     gates = broken_gates(NIGHT_GATES, record, pipeline.gates)
     return {**record, "gates": gates, "exit_status": _exit_status(night, gates)}
+
+
+def _bake_lots(lots, workers, verbose):
+    """Small probes go one to a core: their kernels are too short for several."""
+    if not lots:
+        return
+    processes = min(workers, len(lots))
+    BakeLot.threads = available_cores() // processes
+    build_wave(lots, processes, verbose)
+    from ..jit import use_threads
+
+    use_threads(available_cores())
+
+
+def _shared_night_file(pipeline):
+    return pipeline.build_dir / "work" / ".night"
 
 
 def _exit_status(night, gates):

@@ -6,7 +6,6 @@ and hold to these pins while it runs what they require.
 
 import functools
 import json
-import os
 from pathlib import Path
 
 import luigi
@@ -16,6 +15,7 @@ from ..engine.chains import chain_of
 from ..engine.night import Night, now
 from ..engine.staleness import staleness
 from ..errors import SkykilnError
+from .kernels import available_cores
 from .nights import night_file, prepare, write_record
 from .shares import luigi_tasks, manifests_removed
 from .snapshot import Snapshot
@@ -62,6 +62,7 @@ class BakeAll(luigi.Task):
     _snapshot = None
     _night = None
     _tasks = None
+    _lots = ()
 
     def complete(self):
         self._tasks = None
@@ -72,20 +73,21 @@ class BakeAll(luigi.Task):
     def requires(self):
         if self._tasks is None:
             self._tasks = self._stale_tasks()
-        return [task for task, _ in self._tasks]
+        return self._tasks
 
     def _stale_tasks(self):
         if self._night is None:
             self.complete()
         if not self._night.stale:
             return []
-        workers = os.cpu_count()  # Luigi keeps to itself how many there are
+        workers = available_cores()  # Luigi keeps to itself how many there are
         prepare(self._night, self._snapshot, workers)
-        return luigi_tasks(self._night.stale, self._snapshot, workers)
+        self._lots, big = luigi_tasks(self._night.stale, self._snapshot, workers)
+        return [*self._lots, *(task for task, _ in big)]
 
     def run(self):
         self._night.seal()
-        with manifests_removed(self._tasks):
+        with manifests_removed(self._lots):
             write_record(self._night, self._snapshot)
 
     def output(self):

@@ -15,26 +15,28 @@ from .snapshot import Snapshot
 
 BIG_SECONDS = 0.2  # a probe that takes longer has stages worth a task each
 LONGEST_LOT = 60.0
+SHORTEST_LOT = 1.0  # below, a process of its own costs more than it saves
 LOTS_PER_WORKER = 4  # so that workers end at about the same time
 
 
-def luigi_tasks(chains, snapshot: Snapshot, workers: int) -> list:
-    """Pairs of a task that brings stale chains up to date, and of the number of tasks it brings along."""
+def luigi_tasks(chains, snapshot: Snapshot, workers: int) -> tuple[list, list]:
+    """The tasks that bring stale chains up to date.
+
+    Returns: lots, and pairs of a big target and of the number of tasks that it brings along
+    """
     small = [chain.target for chain in chains if _is_small(chain.target)]
     big = [chain for chain in chains if not _is_small(chain.target)]
-    tasks = [(chain.target.full(), len(chain.stale)) for chain in big]
-    return tasks + [(lot, 1) for lot in _lots(small, snapshot, workers)]
+    return _lots(small, snapshot, workers), [(chain.target.full(), len(chain.stale)) for chain in big]
 
 
 @contextmanager
-def manifests_removed(tasks):
+def manifests_removed(lots):
     """Remove the manifests of lots when the block ends."""
     try:
         yield
     finally:
-        for task, _ in tasks:
-            if isinstance(task, BakeLot):
-                remove(Path(task.manifest))
+        for lot in lots:
+            remove(Path(lot.manifest))
 
 
 def _is_small(target):
@@ -54,7 +56,8 @@ def expected_seconds(pinned) -> float:
 
 def _lots(targets, snapshot, workers):
     seconds = [expected_seconds(target.pinned) for target in targets]
-    longest = min(LONGEST_LOT, sum(seconds) / (LOTS_PER_WORKER * workers)) if workers > 1 else LONGEST_LOT
+    share = sum(seconds) / (LOTS_PER_WORKER * workers)
+    longest = min(max(share, SHORTEST_LOT), LONGEST_LOT) if workers > 1 else LONGEST_LOT
     lots = form_lots([target.pinned for target in targets], seconds, longest)
     return [_lot(lot, snapshot) for lot in lots]
 

@@ -6,6 +6,7 @@ import fnmatch
 from ..config import Pipeline, canonical_json
 from ..engine.night import now
 from ..engine.pins import Pins
+from ..engine.shards import Shard
 from ..errors import PipelineError
 from .gates import PROBE_GATES
 from .kernels import EXTRAS, is_installed
@@ -19,18 +20,33 @@ class Snapshot:
 
     brdf : the stage of the shared table; probes : one PublishProbe per probe
     night : ISO 8601 time of the night that they are made in
+    verified : whether bytes are read again where size and time would do
+    shard : whose probes they are alone; None for all
     """
 
-    def __init__(self, pipeline: Pipeline, patterns=(), night: str | None = None):
+    def __init__(
+        self,
+        pipeline: Pipeline,
+        patterns=(),
+        night: str | None = None,
+        verified: bool = False,
+        shard: Shard | None = None,
+    ):
         self.pipeline = pipeline
+        self.verified = verified
+        self.shard = shard
         self.night = night or now()
-        self.pins = Pins(pipeline.build_dir / "work" / ".pins.json")
+        # Shards write at the same time: each its own.
+        name = f".pins.{shard.file_name}.json" if shard else ".pins.json"
+        self.pins = Pins(pipeline.build_dir / "work" / name, verified)
         self.brdf = TabulateBrdf.sketch(
             night=self.night, build_dir=str(pipeline.build_dir), size=pipeline.brdf_size
         )
         limits = {key: limit for key, limit in pipeline.gates.items() if key in PROBE_GATES}
         self._gates = canonical_json(limits)
         chosen = matching(pipeline.probes(), patterns)
+        if shard:
+            chosen = [probe for probe in chosen if shard.owns(probe.name)]
         check_extras(pipeline, chosen)
         pinned = [self._pinned(probe) for probe in chosen]
         self.probes = [PublishProbe.sketch(night=self.night, pinned=probe) for probe in pinned]
