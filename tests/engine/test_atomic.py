@@ -6,6 +6,7 @@ import sys
 
 import pytest
 
+from skykiln.engine import atomic
 from skykiln.engine.atomic import rename_into_place, sweep, temporary_name, write_atomically, write_beside
 from skykiln.errors import FileError
 
@@ -19,15 +20,16 @@ def test_file_appears_only_when_it_is_renamed(tmp_path):
     assert list(path.parent.iterdir()) == [path]
 
 
-def test_old_file_stays_when_writing_fails(tmp_path):
-    def chunks():
-        yield b"half"
+def test_full_disk_is_told_with_the_space_that_is_needed_and_leaves_the_old_file(tmp_path, monkeypatch):
+    def no_room(file, chunks, synced):
+        file.write(b"half")
         raise OSError(28, "No space left on device")
 
     path = tmp_path / "sky"
-    path.write_bytes(b"old")
-    with pytest.raises(FileError, match=r"sky: can't be written: No space left on device; make room"):
-        write_atomically(path, chunks())
+    path.write_text("old")
+    monkeypatch.setattr(atomic, "_write", no_room)
+    with pytest.raises(FileError, match=r"sky: .*No space left on device, 2,000 bytes are needed; make room"):
+        write_atomically(path, [bytes(1500), memoryview(bytes(500))])
     assert {p.name: p.read_bytes() for p in tmp_path.iterdir()} == {"sky": b"old"}
 
 

@@ -6,6 +6,7 @@ leaves a file that no reader looks at and that the next bake sweeps away.
 """
 
 import ctypes
+import errno
 import os
 import socket
 from contextlib import contextmanager
@@ -17,15 +18,15 @@ SUFFIX = ".tmp"
 
 
 @contextmanager
-def told_as_file_error(path):
-    """Turn an OSError about writing `path` into the sentence the user needs."""
+def told_as_file_error(path, size: int = 0):
+    """Turn an OSError about writing `path`, of so many bytes, into the sentence the user needs."""
     try:
         yield
     except OSError as error:
-        cause = error.strerror or str(error)
-        raise FileError(
-            f"{path}: can't be written: {cause}; make room or give write permission, then bake again"
-        ) from error
+        cause, cure = error.strerror or str(error), "give write permission"
+        if error.errno in (errno.ENOSPC, errno.EDQUOT):
+            cause, cure = f"{cause}, {size:,} bytes are needed", "make room"
+        raise FileError(f"{path}: can't be written: {cause}; {cure}, then bake again") from error
 
 
 def temporary_name(path: Path) -> Path:
@@ -40,8 +41,8 @@ def write_beside(path: Path, chunks, synced: bool = True) -> Path:
     Returns:    the temporary file
     Raises:     FileError naming `path`; nothing is left then
     """
-    beside = temporary_name(path)
-    with told_as_file_error(path):
+    beside, chunks = temporary_name(path), list(chunks)
+    with told_as_file_error(path, sum(memoryview(chunk).nbytes for chunk in chunks)):
         try:
             with _created(beside) as file:
                 _write(file, chunks, synced)

@@ -4,6 +4,7 @@ Stages may run in other processes; a file is how the cause gets home. It goes wh
 """
 
 import json
+import sys
 import traceback
 from contextlib import contextmanager
 from pathlib import Path
@@ -12,6 +13,8 @@ from typing import NamedTuple
 from ..errors import SkykilnError
 from .atomic import remove, write_atomically
 from .digests import json_bytes
+
+_unwritten: dict = {}  # path -> Failure, of this process
 
 
 class Failure(NamedTuple):
@@ -31,15 +34,16 @@ def recorded(stage):
     try:
         yield
     except Exception as error:
-        data = json_bytes(_failure(stage, error)._asdict())
-        write_atomically(failure_path(stage), [data], synced=False)
+        _record(stage, _failure(stage, error))
         raise
+    _unwritten.pop(str(failure_path(stage)), None)
     remove(failure_path(stage))
 
 
 def read_failure(stage) -> Failure | None:
     """The failure that a stage left, if it did."""
-    return _read(failure_path(stage))
+    path = failure_path(stage)
+    return _unwritten.get(str(path)) or _read(path)
 
 
 def is_failure(path: Path) -> bool:
@@ -55,6 +59,15 @@ def forget_failure(stage):
 def failure_path(stage) -> Path:
     """Where a stage leaves the cause."""
     return Path(stage.stamp_path).with_suffix(".failure")
+
+
+def _record(stage, failure):
+    path = failure_path(stage)
+    try:
+        write_atomically(path, [json_bytes(failure._asdict())], synced=False)
+    except SkykilnError:  # where nothing can be written, the cause is as a rule just that
+        _unwritten[str(path)] = failure
+        print(failure.cause, file=sys.stderr, flush=True)
 
 
 def _read(path):

@@ -75,13 +75,14 @@ class Night:
         return [chain for chain in self.chains if chain.stale]
 
     def sweep(self):
-        """Remove what earlier nights left half done where this one will work."""
+        """Remove what earlier nights left half done: it lies where no seal stands."""
         folders = set()
-        for chain in self.stale:
-            for verdict in chain.stale:
-                forget_failure(verdict.stage)
+        for chain in [chain for chain in self.chains if not chain.sealed]:
+            for verdict in chain.verdicts:
                 stage = verdict.stage
                 folders |= {Path(path).parent for path in (stage.stamp_path, *stage.files().values())}
+            for verdict in chain.stale:
+                forget_failure(verdict.stage)
         for folder in folders:
             sweep(folder)
 

@@ -7,9 +7,11 @@ needs to be looked at: an unchanged night reads one file per probe. The first st
 
 import json
 import os
+from contextlib import suppress
 from pathlib import Path
 from typing import NamedTuple
 
+from ..errors import FileError
 from .atomic import remove, write_atomically
 from .digests import digest_chunks
 from .release import code_digest
@@ -66,7 +68,8 @@ def write_seal(target, verdicts):
     whole = all(verdict.state == UP_TO_DATE for verdict in verdicts)
     seal = Seal(*_sign(target), target.night, len(verdicts) if whole else 0, files)
     data = json.dumps(seal._asdict(), ensure_ascii=False).encode()
-    write_atomically(Path(target.seal_path), [data], synced=False)
+    with suppress(FileError):  # all is made and stamped; without a seal it is only looked at more closely
+        write_atomically(Path(target.seal_path), [data], synced=False)
 
 
 def break_seal(stage):

@@ -4,14 +4,14 @@ import json
 from pathlib import Path
 
 from ..config import Pipeline
-from ..engine.atomic import remove, told_as_file_error
+from ..engine.atomic import remove, sweep, told_as_file_error
 from ..engine.chains import chain_of
 from ..engine.night import STATES, Night, shared_night_id, write_night
 from ..engine.release import release
 from ..engine.seals import break_seal
 from ..engine.stamps import void_stamp
 from ..engine.waves import build_wave, waves_of
-from ..errors import ALL_WELL, GATE_BROKEN, SOURCE_FAILED
+from ..errors import ALL_WELL, GATE_BROKEN, SOURCE_FAILED, FileError
 from .bake_lot import BakeLot
 from .gates import NIGHT_GATES, broken_gates
 from .judge_probe import accept_judgement, read_judgement
@@ -45,6 +45,9 @@ def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) ->
     if again:
         call_for_all(snapshot)
     night = Night(snapshot.targets, snapshot.night, snapshot.verified)
+    for folder in (snapshot.pipeline.build_dir, snapshot.pipeline.build_dir / "work"):
+        sweep(folder)
+    night.sweep()
     if night.stale:
         prepare(night, snapshot, workers)
         lots, big = luigi_tasks(night.stale, snapshot, workers)
@@ -55,7 +58,11 @@ def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) ->
     night.seal()
     if snapshot.shard:
         return night, night_record(night, snapshot.pipeline)
-    return night, write_record(night, snapshot)
+    try:
+        return night, write_record(night, snapshot)
+    except FileError as error:
+        told = [f"{owner}: {failure.cause}" for owner, failure in night.failures]
+        raise FileError("\n".join([*told, str(error)])) from error
 
 
 def accept_held(snapshot: Snapshot) -> list:
@@ -76,11 +83,10 @@ def call_for_all(snapshot: Snapshot):
 
 
 def prepare(night: Night, snapshot: Snapshot, workers: int):
-    """Make ready for stages to run: sweep, keep the pins, compile kernels once for all workers."""
+    """Make ready for stages to run: keep the pins, compile kernels once for all workers."""
     work = snapshot.pipeline.build_dir / "work"
     with told_as_file_error(work):
         work.mkdir(parents=True, exist_ok=True)
-    night.sweep()
     snapshot.pins.save()
     warm_kernels(again=workers > 1)
 
