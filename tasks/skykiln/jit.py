@@ -70,12 +70,7 @@ def exact(function):
 
 
 def formula(function):
-    """A formula, inlined into the kernels that call it: handing arrays to a real call costs more than
-    most formulas do (measured: 340 ns for a tuple of arrays, against 16 ns of work)."""
-    return numba.njit(forceinline=True, nogil=True, error_model="numpy", fastmath=True)(function)
-
-
-def inlined(function):
-    """A formula that is handed whole tables: it has to vanish into its caller, since passing a tuple
-    of arrays costs more than the work (measured: 340 ns a call for 16 ns of work)."""
+    """A formula, which vanishes into the kernels that call it, those too that are handed whole tables:
+    passing arrays to a real call costs more than most formulas do (measured: 340 ns for a tuple of
+    arrays, against 16 ns of work)."""
     return numba.njit(forceinline=True, nogil=True, error_model="numpy", fastmath=True)(function)

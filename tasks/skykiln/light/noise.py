@@ -19,7 +19,7 @@ from typing import NamedTuple
 import numpy as np
 from numba import prange
 
-from skykiln.jit import formula, inlined, parallel
+from skykiln.jit import formula, parallel
 from skykiln.light.directions import cube_directions
 from skykiln.light.ggx import ggx_norm
 from skykiln.light.random_numbers import next_uniform, stream
@@ -197,7 +197,7 @@ def _second_moments(tree, normals, alpha, norm, samples, seed, moments):
                 moments[t, channel] += factor * np.float64(tree.pixels[row, column, channel]) ** 2
 
 
-@inlined
+@formula
 def _direction(tree, n, alpha, of_source, state):
     """A direction of either technique, its density as a lobe sample and the mean of both densities."""
     if of_source:
@@ -212,7 +212,7 @@ def _direction(tree, n, alpha, of_source, state):
     return x, y, z, lobe, 0.5 * (lobe + source)
 
 
-@inlined
+@formula
 def _around(n, c, azimuth):
     """The direction at cosine c from n (Duff et al. 2017, "Building an orthonormal basis, revisited")."""
     sign = 1.0 if n[2] >= 0.0 else -1.0
@@ -225,7 +225,7 @@ def _around(n, c, azimuth):
     return x, y, -a * sign * n[0] - b * n[1] + c * n[2]
 
 
-@inlined
+@formula
 def _kernel(c, alpha):
     """GGX D n.l without its constant (`ggx`), for c > 0."""
     a2 = alpha * alpha

@@ -6,7 +6,7 @@ memory). A stream's state is an array of one uint64; it starts from a seed and t
 
 import numpy as np
 
-from skykiln.jit import inlined
+from skykiln.jit import formula
 
 _STEP = np.uint64(0x9E3779B97F4A7C15)
 _FIRST = np.uint64(0xBF58476D1CE4E5B9)
@@ -16,7 +16,7 @@ _ONE = np.uint64(1)
 _UNIT = 2.0**-53
 
 
-@inlined
+@formula
 def mixed(z):
     """The output function: every bit of z moves half of the result's bits."""
     z = (z ^ (z >> _S30)) * _FIRST
@@ -24,7 +24,7 @@ def mixed(z):
     return z ^ (z >> _S31)
 
 
-@inlined
+@formula
 def stream(seed, number):
     """The state of the stream of that number."""
     state = np.empty(1, dtype=np.uint64)
@@ -32,7 +32,7 @@ def stream(seed, number):
     return state
 
 
-@inlined
+@formula
 def next_uniform(state):
     """The next number in 0 <= u < 1, 53 bits; moves the state on."""
     state[0] += _STEP

@@ -8,10 +8,10 @@ import math
 
 import numpy as np
 
-from skykiln.jit import inlined
+from skykiln.jit import formula
 
 
-@inlined
+@formula
 def mip_radiance(tree, x, y, z, solid_angle, channel):
     """Radiance in a mip level whose pixels are as large as a solid angle: trilinear between two levels."""
     height, width = tree.pixels.shape[0], tree.pixels.shape[1]
@@ -27,7 +27,7 @@ def mip_radiance(tree, x, y, z, solid_angle, channel):
     return (1.0 - share) * near + share * far
 
 
-@inlined
+@formula
 def _bilinear(tree, level, u, v, channel):
     """Radiance of a level between its nodes' middles; wraps in longitude, stops at the poles."""
     rows, columns = tree.shapes[level, 0], tree.shapes[level, 1]
@@ -44,7 +44,7 @@ def _bilinear(tree, level, u, v, channel):
     return total
 
 
-@inlined
+@formula
 def _mean_radiance(tree, level, j, i, channel):
     if level == 0:
         return np.float64(tree.pixels[j, i, channel])

@@ -16,7 +16,7 @@ from typing import NamedTuple
 import numpy as np
 from numba import prange
 
-from skykiln.jit import inlined, parallel
+from skykiln.jit import formula, parallel
 from skykiln.light.random_numbers import next_uniform, stream
 
 
@@ -137,7 +137,7 @@ def _sample(tree, seed, directions, densities):
         directions[i, 0], directions[i, 1], directions[i, 2] = x, y, z
 
 
-@inlined
+@formula
 def sample_brightness(tree, state):
     """A direction in proportion to brightness, and its density."""
     top = tree.shapes.shape[0] - 1
@@ -146,20 +146,20 @@ def sample_brightness(tree, state):
     return x, y, z, brightness_density(tree, row, column)
 
 
-@inlined
+@formula
 def brightness_density(tree, row, column):
     """Density of `sample_brightness` over a pixel, 1/sr."""
     return brightness(tree, row, column) / node_brightness(tree, tree.shapes.shape[0] - 1, 0, 0)
 
 
-@inlined
+@formula
 def brightness(tree, row, column):
     """Sum of a pixel's channels."""
     red_green = np.float64(tree.pixels[row, column, 0]) + tree.pixels[row, column, 1]
     return red_green + tree.pixels[row, column, 2]
 
 
-@inlined
+@formula
 def node_brightness(tree, level, j, i):
     """Flux of a node of level 0 or above, summed over the channels."""
     if level == 0:
@@ -168,7 +168,7 @@ def node_brightness(tree, level, j, i):
     return np.float64(tree.flux[tree.offsets[level] + j * tree.shapes[level, 1] + i, 3])
 
 
-@inlined
+@formula
 def descend(tree, level, j, i, u):
     """The pixel below a node of level 0 or above that u in 0..1 falls on.
 
@@ -192,7 +192,7 @@ def descend(tree, level, j, i, u):
     return j, i
 
 
-@inlined
+@formula
 def direction_in_pixel(tree, row, column, u, v):
     """A direction even in the solid angle of a pixel, for u and v in 0..1."""
     y = tree.heights[row] + v * (tree.heights[row + 1] - tree.heights[row])
@@ -206,7 +206,7 @@ def direction_in_pixel(tree, row, column, u, v):
     return across * (s * cosine + c * sine), y, across * (c * cosine - s * sine)
 
 
-@inlined
+@formula
 def pixel_at(tree, x, y, z):
     """Row and column of the pixel that a direction falls on."""
     height, width = tree.pixels.shape[0], tree.pixels.shape[1]

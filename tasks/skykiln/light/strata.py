@@ -29,7 +29,7 @@ import math
 import numpy as np
 from numba import prange
 
-from skykiln.jit import formula, inlined, parallel
+from skykiln.jit import formula, parallel
 from skykiln.light.random_numbers import next_uniform, stream
 from skykiln.light.source_tree import brightness, descend, direction_in_pixel
 from skykiln.light.stratum_kernels import kernel_at, kernel_norm, kernel_range
@@ -117,7 +117,7 @@ def _estimate_texel(
     return count
 
 
-@inlined
+@formula
 def _walk(tree, kind, n, alpha, edges, scale, limit, drawn, state, sums, squares):
     """Sums strata whose range is at most `limit` of the scale, and the squares of the ranges.
 
@@ -159,7 +159,7 @@ def _walk(tree, kind, n, alpha, edges, scale, limit, drawn, state, sums, squares
     return count
 
 
-@inlined
+@formula
 def _push_children(tree, level, j, i, stack, top):
     for k in range(4):
         row, column = 2 * j + k // 2, 2 * i + k % 2
@@ -169,7 +169,7 @@ def _push_children(tree, level, j, i, stack, top):
     return top
 
 
-@inlined
+@formula
 def _load_flux(tree, level, j, i, flux, reach):
     """Flux of a node or of a part of a pixel, what each channel of one draw can reach; returns the sum."""
     if level > 0:
@@ -187,7 +187,7 @@ def _load_flux(tree, level, j, i, flux, reach):
     return flux[0] + flux[1] + flux[2]
 
 
-@inlined
+@formula
 def _latitude_step(tree, level, j):
     """Difference of the sines of latitude across a row of a level 0 or below."""
     if level == 0:
@@ -196,7 +196,7 @@ def _latitude_step(tree, level, j):
     return 2.0 * math.sin(0.5 * step) * math.sin((j + 0.5) * step)
 
 
-@inlined
+@formula
 def _cap(tree, level, j, i):
     """Middle of a node, and cosine and sine of the angular radius of a cap there that holds it."""
     if level >= 0:
@@ -222,7 +222,7 @@ def _cap(tree, level, j, i):
     )
 
 
-@inlined
+@formula
 def _draw(tree, level, j, i, state):
     """A direction drawn from a node in proportion to brightness, and its pixel."""
     if level >= 0:
@@ -233,7 +233,7 @@ def _draw(tree, level, j, i, state):
     return x, y, z, j >> -level, i >> -level
 
 
-@inlined
+@formula
 def _direction_in_part(tree, level, j, i, u, v):
     """A direction even in the solid angle of a part of a pixel, for u and v in 0..1."""
     step = math.pi / (tree.pixels.shape[0] << -level)

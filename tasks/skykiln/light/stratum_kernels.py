@@ -10,7 +10,7 @@ angular radius; the range of n.l over it has a closed form.
 
 import math
 
-from skykiln.jit import inlined
+from skykiln.jit import formula
 from skykiln.light.ggx import ggx_norm
 from skykiln.light.sheen import sheen_norm
 
@@ -26,7 +26,7 @@ def kernel_norm(kind, alpha, solid_angle):
     return (ggx_norm if kind == GGX else sheen_norm)(alpha)
 
 
-@inlined
+@formula
 def kernel_range(cap, kind, n, alpha, edges):
     """Least and greatest K over a cap (x, y, z, cosine, sine)."""
     if kind == FOOTPRINT:
@@ -43,7 +43,7 @@ def kernel_range(cap, kind, n, alpha, edges):
     return min(low, high), (_kernel(kind, peak, alpha) if inside else max(low, high))
 
 
-@inlined
+@formula
 def _footprint_range(cap, edges):
     least_inside = 1.0
     for e in range(4):
@@ -55,7 +55,7 @@ def _footprint_range(cap, edges):
     return least_inside, 1.0
 
 
-@inlined
+@formula
 def _dot_range(n, cap):
     """Range of n.l over a cap; all of -1..1 for one whose radius is half a turn."""
     x, y, z, cosine, sine = cap
@@ -66,7 +66,7 @@ def _dot_range(n, cap):
     return least, greatest
 
 
-@inlined
+@formula
 def _kernel(kind, c, alpha):
     """K of a lobe for 0 < c <= 1."""
     if kind == GGX:
@@ -76,7 +76,7 @@ def _kernel(kind, c, alpha):
     return c * math.exp(0.5 / alpha * math.log(max(1.0 - c, 1e-300)))
 
 
-@inlined
+@formula
 def kernel_at(x, y, z, kind, n, alpha, edges):
     """K in one direction."""
     if kind != FOOTPRINT:
