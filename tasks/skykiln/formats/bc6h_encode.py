@@ -1,53 +1,41 @@
-"""BC6H blocks: encoded by `ispc_texcomp`, decoded again, and refitted where their flux is off.
+"""BC6H blocks: encoded by `ispc_texcomp`, decoded again, encoded better where it shows, their flux put right.
 
 The encoder is an extra, looked for when it is first needed. It wants whole blocks of finite half floats
 that are not negative (NaN and negative values would come out as 65504), so that is what it gets: smaller
 levels are repeated up to a block.
+
+Its quick profile is some twenty times faster than its basic one, and as good on most of a sky: so every
+block is encoded quickly, and those that hold nearly all of the level's squared error again. On the samples
+that leaves the log2 error within 2 % of the basic profile's alone, at a quarter of its time. Levels of a
+few blocks afford the slow profile.
 """
 
 from concurrent.futures import ThreadPoolExecutor
-from typing import NamedTuple
 
 import numba
 import numpy as np
 
 from skykiln.errors import SkykilnError
-from skykiln.formats.bc6h import decode_blocks
-from skykiln.formats.bc6h_refit import refit_blocks
-from skykiln.formats.half import half_value, nearest_half
-from skykiln.jit import exact
+from skykiln.formats.bc6h_flux import put_flux_right
+from skykiln.formats.bc6h_measure import CodedLevel, measure_blocks
+from skykiln.formats.half import nearest_half
 
-_PROFILE = "basic"
-_ONE = 0x3C00  # half bits of the alpha that the encoder leaves unread
+_LEFT = 0.05  # share of the squared error that may lie in blocks encoded quickly
+_FEW = 96  # blocks of a level (16 x 16 faces) that are encoded slowly too
 _STRIP = 2048  # blocks that one call encodes, about
-_OFF = 0.01  # a channel's flux in a block that is wrong by this share is put right,
-_OFF_LEVEL = 5e-4  # or by this share of the whole level's,
-_OFF_TEXEL = 0.02  # or a texel by this share of its block's flux
-_MANY = 384  # blocks of a level (32 x 32 faces) whose peak is kept; few blocks have no bits to spare for it
-_DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
-
-
-class _Band(NamedTuple):
-    """Some rows of blocks of one picture: what was wanted, what was made, and how far that is off."""
-
-    halves: np.ndarray  # (count, 16, 3) uint16
-    blocks: np.ndarray  # (count, 2) uint64
-    flux: np.ndarray  # (count, 3) float64, the sum of the values wanted
-    error: np.ndarray  # the error of that sum
-    worst: np.ndarray  # the largest error of one texel
+_ONE = 0x3C00  # half bits of the alpha that the encoder leaves unread
 
 
 def encode_bc6h(colours) -> np.ndarray:
     """(..., h, w, 3) float32 -> (blocks, 2) uint64, low half first, picture by picture, row by row."""
     encoder = _encoder()
     with ThreadPoolExecutor(numba.get_num_threads()) as threads:
-        bands = list(threads.map(lambda band: _encode_band(encoder, band), _bands(colours)))
-    level = _Band(*(np.concatenate(parts) for parts in zip(*bands, strict=True)))
-    off, free = _judge(level)
-    if len(off):
-        many = len(level.halves) >= _MANY
-        peak = level.halves.max((0, 1)).astype(np.int64) if many else np.zeros(3, np.int64)
-        level.blocks[off] = refit_blocks(level.blocks[off], level.halves[off], free, peak)
+        bands = threads.map(lambda band: _encode_band(encoder, band), _bands(colours))
+        level = CodedLevel(*(np.concatenate(parts) for parts in zip(*bands, strict=True)))
+        _encode_again(encoder, "basic", level, _blocks_that_matter(level), threads)
+        if len(level.blocks) <= _FEW:
+            _encode_again(encoder, "slow", level, np.arange(len(level.blocks)), threads)
+        put_flux_right(level, threads)
     return level.blocks
 
 
@@ -60,13 +48,27 @@ def _bands(colours):
             yield picture[row : row + rows]
 
 
-def _encode_band(encoder, colours) -> _Band:
+def _encode_band(encoder, colours) -> CodedLevel:
     halves = _cut_into_blocks(nearest_half(colours).view(np.uint16))
-    encoded = _call_encoder(encoder, halves)
-    blocks = np.frombuffer(encoded, "<u8").reshape(-1, 2)
-    flux, error, worst = (np.empty((len(halves), 3)) for _ in range(3))
-    _compare(halves, decode_blocks(blocks), flux, error, worst)
-    return _Band(halves, blocks, flux, error, worst)
+    return measure_blocks(halves, _call_encoder(encoder, "veryfast", halves))
+
+
+def _blocks_that_matter(level) -> np.ndarray:
+    """Numbers of the blocks outside of which little of the level's squared error lies."""
+    order = np.argsort(level.squared, kind="stable")
+    little = np.cumsum(level.squared[order]) <= _LEFT * level.squared.sum()
+    return np.sort(order[~little])
+
+
+def _encode_again(encoder, profile, level, numbers, threads):
+    """Encode some blocks of a level by another profile; each stays as the better of both."""
+
+    def encode_some(some):
+        again = measure_blocks(level.halves[some], _call_encoder(encoder, profile, level.halves[some]))
+        better = again.squared < level.squared[some]
+        level.replace(some[better], again, better)
+
+    list(threads.map(encode_some, (numbers[k : k + _STRIP] for k in range(0, len(numbers), _STRIP))))
 
 
 def _cut_into_blocks(picture) -> np.ndarray:
@@ -86,13 +88,14 @@ def _texel_numbers(size: int) -> np.ndarray:
     return whole % size if size < 4 else np.minimum(whole, size - 1)
 
 
-def _call_encoder(encoder, halves) -> bytes:
-    """Lay the blocks side by side as a picture of four rows, RGBA."""
+def _call_encoder(encoder, profile, halves) -> np.ndarray:
+    """(count, 16, 3) uint16 -> (count, 2) uint64: the blocks laid side by side as a picture of four rows."""
     count = len(halves)
     picture = np.full((4, count, 4, 4), _ONE, "<u2")
     picture[..., :3] = halves.reshape(count, 4, 4, 3).transpose(1, 0, 2, 3)
     surface = encoder.RGBASurface(picture.tobytes(), 4 * count, 4, 32 * count)
-    return encoder.compress_blocks_bc6h(surface, encoder.BC6HEncSettings.from_profile(_PROFILE))
+    blocks = encoder.compress_blocks_bc6h(surface, encoder.BC6HEncSettings.from_profile(profile))
+    return np.frombuffer(blocks, "<u8").reshape(-1, 2)
 
 
 def _encoder():
@@ -103,27 +106,3 @@ def _encoder():
             "pixels: bc6h needs the package ispc_texcomp; install the extra: pip install 'skykiln[bc6h]'"
         ) from error
     return ispc_texcomp
-
-
-def _judge(level: _Band) -> tuple[np.ndarray, np.ndarray]:
-    """Numbers of the blocks that are off, and of each the share of flux that may stay so: less, the
-    more of the level's flux the block holds. (count,) int and (count, 3) float64."""
-    floor = np.maximum(level.flux, _DIM * level.flux.max(1, keepdims=True)) + 1e-9
-    whole = level.flux.sum(0) + 1e-9
-    off = (level.error > np.minimum(_OFF * floor, _OFF_LEVEL * whole)) | (level.worst > _OFF_TEXEL * floor)
-    numbers = np.flatnonzero(off.any(1))
-    free = np.clip(_OFF_LEVEL * whole / np.maximum(level.flux[numbers], 1e-9), _OFF_LEVEL, _OFF)
-    return numbers, free
-
-
-@exact
-def _compare(halves, decoded, flux, error, worst):
-    """Per block and channel: the sum of the values, the error of the sum, the largest error of one."""
-    for i in range(len(halves)):
-        for c in range(3):
-            wanted, got, largest = 0.0, 0.0, 0.0
-            for texel in range(16):
-                a = half_value(np.int64(halves[i, texel, c]))
-                b = half_value(np.int64(decoded[i, texel, c]))
-                wanted, got, largest = wanted + a, got + b, max(largest, abs(a - b))
-            flux[i, c], error[i, c], worst[i, c] = wanted, abs(got - wanted), largest

@@ -1,4 +1,4 @@
-"""A first BC6H block of one subset: indices along the principal axis, endpoints by least squares.
+"""A first BC6H block of one or two subsets: indices along principal axes, endpoints by least squares.
 
 The fit is made where BC6H interpolates, in half bits times 64/31 (0..65535): Khronos Data Format
 specification 1.4, section 20.2.
@@ -8,68 +8,121 @@ import math
 
 import numpy as np
 
-from skykiln.formats.bc6h_layout import DELTA_BITS, ENDPOINT_BITS, PARTITION, WEIGHTS_4
+from skykiln.formats.bc6h import is_anchor, subset_of
+from skykiln.formats.bc6h_layout import ENDPOINT_BITS, PARTITION, WEIGHTS_3, WEIGHTS_4
+from skykiln.formats.bc6h_pack import fits
 from skykiln.formats.half import half_value
 from skykiln.jit import exact
 
+# Modes of one subset and of two, the finest first; the last of each holds any endpoints.
+_FINEST_FIRST = np.array([15, 11, 7, 3])
+_FINEST_OF_TWO_FIRST = np.array([2, 6, 10, 0, 14, 18, 22, 26, 1, 30])
+
 
 @exact
-def least_squares(mode, target, by_radiance, spread, values, indices):
-    """A one-subset block: indices along the principal axis, endpoints by least squares, twice."""
-    weights = np.ones(16)
-    if by_radiance:
+def least_squares(target, partition, by_radiance, spread, values, indices):
+    """Begin a block, in place.
+
+    Parameters: target : (16, 3) half bits
+                partition : 0 to 31, or -1 for one subset
+                by_radiance : whether bright texels weigh more; else all weigh alike
+                spread : at which share of the way from end to end the texels' first spread is taken to end
+    Returns:    the mode: the finest that holds the endpoints
+    """
+    two = partition >= 0
+    weights, ends = np.empty(16), np.empty((4, 3))
+    values[PARTITION] = max(partition, 0)
+    for subset in range(2 if two else 1):
         for texel in range(16):
-            weights[texel] = 1e-3 * half_value(target.max()) + half_value(target[texel].max())
-    place = spread * _along_principal_axis(target, weights)
-    low, high = np.empty(3), np.empty(3)
+            weights[texel] = 1.0 if subset_of(texel, two, values[PARTITION]) == subset else 0.0
+            if by_radiance:
+                brightest = half_value(target.max()), half_value(target[texel].max())
+                weights[texel] *= 1e-3 * brightest[0] + brightest[1]
+        _fit_subset(target, weights, two, spread, indices, ends[2 * subset], ends[2 * subset + 1])
+        _turn_anchor(two, subset, values[PARTITION], indices, ends)
+    for mode in _FINEST_OF_TWO_FIRST if two else _FINEST_FIRST:
+        for k in range(6 * (2 if two else 1)):
+            values[k] = _quantise(ends[k // 3, k % 3], ENDPOINT_BITS[mode])
+        if fits(mode, values, 0) and fits(mode, values, 1) and fits(mode, values, 2):
+            break
+    return mode
+
+
+@exact
+def _fit_subset(target, weights, two, spread, indices, low, high):
+    """Indices of the texels that weigh something, and both ends."""
+    place = np.empty(16)
+    _along_principal_axis(target, weights, spread, place)
     for _ in range(2):
-        for texel in range(16):
-            indices[texel] = np.argmin(np.abs(WEIGHTS_4 / 64.0 - place[texel]))
-        _solve_endpoints(target, weights, indices, low, high)
+        _nearest_indices(place, weights, two, indices)
+        _solve_endpoints(target, weights, two, indices, low, high)
         _project(target, low, high, place)
-    for texel in range(16):
-        indices[texel] = np.argmin(np.abs(WEIGHTS_4 / 64.0 - place[texel]))
-    if indices[0] >= 8:  # the anchor's index has no top bit: turn the block's ends around
-        indices[:] = 15 - indices
-        _quantise_ends(mode, high, low, values)
-    else:
-        _quantise_ends(mode, low, high, values)
-    values[PARTITION] = 0
+    _nearest_indices(place, weights, two, indices)
 
 
 @exact
-def _along_principal_axis(target, weights):
-    """Where each texel lies between the ends of the texels' spread, 0..1: (16,) float64."""
-    mean, axis = np.zeros(3), np.array([1.0, 1.0, 1.0])
+def _turn_anchor(two, subset, partition, indices, ends):
+    """The anchor's index has no top bit: where it needs one, the subset's ends are turned around."""
+    most = 7 if two else 15
+    for anchor in range(16):
+        mine = subset_of(anchor, two, partition) == subset
+        if mine and is_anchor(anchor, two, partition) and indices[anchor] > most // 2:
+            for texel in range(16):
+                if subset_of(texel, two, partition) == subset:
+                    indices[texel] = most - indices[texel]
+            for c in range(3):
+                low = ends[2 * subset, c]
+                ends[2 * subset, c], ends[2 * subset + 1, c] = ends[2 * subset + 1, c], low
+
+
+@exact
+def _nearest_indices(place, weights, two, indices):
+    """Weights of indices are evenly spaced, to within 1/64."""
+    most = 7 if two else 15
+    for texel in range(16):
+        if weights[texel] > 0:
+            indices[texel] = min(max(np.int64(math.floor(place[texel] * most + 0.5)), 0), most)
+
+
+@exact
+def _along_principal_axis(target, weights, spread, place):
+    """Where each texel lies between the ends of the texels' spread, 0..`spread`, into `place` (16,)."""
+    mean, axis, turned = np.zeros(3), np.ones(3), np.empty(3)
     for c in range(3):
         mean[c] = (weights * target[:, c]).sum() / weights.sum()
     for _ in range(8):  # power iteration on the weighted covariance
-        turned = np.zeros(3)
+        turned[:] = 0.0
         for texel in range(16):
             along = 0.0
             for c in range(3):
                 along += (target[texel, c] - mean[c]) * axis[c]
             for c in range(3):
                 turned[c] += weights[texel] * along * (target[texel, c] - mean[c])
-        length = math.sqrt((turned * turned).sum())
+        length = math.sqrt(turned[0] ** 2 + turned[1] ** 2 + turned[2] ** 2)
         if length == 0.0:
             break
-        axis[:] = turned / length
-    place = np.zeros(16)
+        for c in range(3):
+            axis[c] = turned[c] / length
+    low, high = math.inf, -math.inf
     for texel in range(16):
+        place[texel] = 0.0
         for c in range(3):
             place[texel] += (target[texel, c] - mean[c]) * axis[c]
-    low, high = place.min(), place.max()
-    return (place - low) / (high - low) if high > low else np.zeros(16)
+        if weights[texel] > 0:
+            low, high = min(low, place[texel]), max(high, place[texel])
+    for texel in range(16):
+        place[texel] = spread * (place[texel] - low) / (high - low) if high > low else 0.0
 
 
 @exact
-def _solve_endpoints(target, weights, indices, low, high):
+def _solve_endpoints(target, weights, two, indices, low, high):
     """Ends in 0..65535 that make the weighted squared differences least, the indices given."""
     aa, ab, bb = 0.0, 0.0, 0.0
     at, bt = np.zeros(3), np.zeros(3)
     for texel in range(16):
-        b = WEIGHTS_4[indices[texel]] / 64.0
+        if weights[texel] == 0:
+            continue
+        b = (WEIGHTS_3[indices[texel]] if two else WEIGHTS_4[indices[texel]]) / 64.0
         a, w = 1.0 - b, weights[texel]
         aa, ab, bb = aa + w * a * a, ab + w * a * b, bb + w * b * b
         for c in range(3):
@@ -98,21 +151,6 @@ def _project(target, low, high, place):
 
 
 @exact
-def _quantise_ends(mode, low, high, values):
-    """Ends as the mode can store them; the second is moved to where its difference fits."""
-    bits = ENDPOINT_BITS[mode]
-    most = (np.int64(1) << bits) - 1
-    for c in range(3):
-        first = _quantise(low[c], bits)
-        second = _quantise(high[c], bits)
-        delta_bits = DELTA_BITS[mode, c]
-        if delta_bits:
-            reach = np.int64(1) << (delta_bits - 1)
-            second = min(max(second, first - reach), first + reach - 1)
-        values[c], values[3 + c] = first, min(max(second, np.int64(0)), most)
-
-
-@exact
 def _quantise(v, bits):
-    """The inverse of `unquantise` (KDF 1.4, 20.2), to nearest."""
+    """An end in 0..65535 as a number of a mode's bits, to nearest: the inverse of `unquantise`."""
     return min(max(np.int64(math.floor(v * 2.0 ** (bits - 16))), np.int64(0)), (np.int64(1) << bits) - 1)

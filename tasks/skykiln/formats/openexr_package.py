@@ -1,17 +1,26 @@
 """The `OpenEXR` package's way to open a file, with the causes that it only prints.
 
-It doesn't raise on damaged pixels: it prints a warning on sys.stdout and leaves the part out.
+It doesn't raise on damaged pixels: it prints a warning on sys.stdout and leaves the part out. The C
+library below it has also written a line for every damaged block of the file to file descriptor 2 by
+then, hundreds for a picture that was cut, past anything that Python could catch. So the descriptor
+itself leads to a temporary file while the package reads. It is the whole process's: the lock keeps two
+reads from taking each other's file for stderr, and what others write meanwhile is passed on.
 """
 
 import contextlib
 import io
+import os
 import sys
+import tempfile
+import threading
 
 import OpenEXR
 
 from skykiln.errors import FileError
 
 _WARNING = "Warning: Exception raised"
+_LIBRARY_ERROR = b"(EXR_ERR_"
+_stderr_lock = threading.Lock()
 
 
 def open_openexr(source, name: str, header_only: bool):
@@ -21,7 +30,7 @@ def open_openexr(source, name: str, header_only: bool):
     """
     printed = io.StringIO()
     try:
-        with contextlib.redirect_stdout(printed):
+        with _quiet_library(), contextlib.redirect_stdout(printed):
             file = OpenEXR.File(source, separate_channels=True, header_only=header_only)
     except Exception as error:
         raise FileError(
@@ -38,3 +47,25 @@ def open_openexr(source, name: str, header_only: bool):
         cause = warnings[0].rpartition(" - ")[2].strip()
         raise FileError(f"{name}: damaged or cut pixel data ({cause}); export it again")
     return file
+
+
+@contextlib.contextmanager
+def _quiet_library():
+    """Keep the library's lines off file descriptor 2 while the block runs."""
+    with _stderr_lock, tempfile.TemporaryFile() as caught:
+        kept = os.dup(2)
+        try:
+            os.dup2(caught.fileno(), 2)
+            yield
+        finally:
+            os.dup2(kept, 2)
+            os.close(kept)
+            caught.seek(0)
+            _pass_on(caught)
+
+
+def _pass_on(lines):
+    """Write to stderr what the library has not written."""
+    others = b"".join(line for line in lines if _LIBRARY_ERROR not in line)
+    while others:
+        others = others[os.write(2, others) :]

@@ -70,5 +70,7 @@ def _reader(path: Path, start: bytes):
     for magic, reader in READERS.items():
         if start.startswith(magic):
             return reader
-    found = next((what for magic, what in _REFUSED.items() if start.startswith(magic)), "neither")
-    raise FileError(f"{path}: {found}, where OpenEXR or Radiance .hdr is read; convert it to one of them")
+    found = next((what for magic, what in _REFUSED.items() if start.startswith(magic)), None)
+    what = f"is {found}, not" if found else "is neither"
+    one = f"{what} OpenEXR {'or' if found else 'nor'} Radiance .hdr"
+    raise FileError(f"{path}: {one}; convert it to one of them")
