@@ -1,0 +1,117 @@
+"""Scale factors, lost sunlight and contradictions."""
+
+import numpy as np
+import pytest
+from sun_skies import NOON, clear_noon, clipped_noon
+
+from skykiln.light.calibration import (
+    Contradiction,
+    Measurement,
+    agreed_scale,
+    card_luminance,
+    clipped_calibration,
+    neutral_gains,
+)
+from skykiln.light.facing import irradiance_facing, patch_radiance
+from skykiln.light.photometry import LUMINANCE_WEIGHTS, horizontal_illuminance, luminance
+from skykiln.light.separate_sun import restored_sun, separate_sun
+
+
+def level(measured, found):
+    return Measurement("horizontal_lux", measured, found)
+
+
+def facing(measured, found):
+    return Measurement("sun_lux", measured, found)
+
+
+def patch(measured, found):
+    return Measurement("patch", measured, found)
+
+
+def test_one_measurement_is_met_exactly():
+    assert agreed_scale([level(98000, 19.6)]) == pytest.approx(5000)
+
+
+def test_measurements_as_close_as_meters_are_averaged():
+    assert agreed_scale([level(1100, 1), facing(1000, 1)]) == pytest.approx(np.sqrt(1.1e6))
+
+
+def test_contradictions_name_both_numbers_and_both_factors():
+    with pytest.raises(Contradiction, match=r"sun_lux 30000 and horizontal_lux 98000 .* 3000 and by 4900"):
+        agreed_scale([level(98000, 20), facing(30000, 10)])
+
+
+def test_where_there_is_no_light_nothing_can_be_scaled():
+    with pytest.raises(ValueError, match="sun_lux: the picture has no light"):
+        agreed_scale([facing(1000, 0.0)])
+
+
+def test_a_grey_card_reflects_like_lambert():
+    # 18 % under 10,000 lx: 573 cd/m2.
+    assert card_luminance(0.18, 10000) == pytest.approx(572.958, abs=1e-3)
+    assert card_luminance(1, np.pi) == pytest.approx(1)
+
+
+def test_balanced_grey_is_neutral_and_as_bright_as_before():
+    grey = np.array([0.5, 0.4, 0.2])
+    balanced = grey * neutral_gains(grey, LUMINANCE_WEIGHTS)
+    np.testing.assert_allclose(balanced, luminance(grey), rtol=1e-12)
+    with pytest.raises(ValueError, match="grey card"):
+        neutral_gains(np.array([0.5, 0.0, 0.2]), LUMINANCE_WEIGHTS)
+
+
+def test_two_measurements_give_factor_and_lost_light():
+    # Sky found: 10 level, 4 facing, at 30 degrees; true factor 1000, lost 80,000 lx.
+    result = clipped_calibration(level(50000, 10), facing(84000, 4), 0.5)
+    assert result.scale == pytest.approx(1000)
+    assert result.lost_lux == pytest.approx(80000)
+
+
+@pytest.mark.parametrize(("known", "seen"), [
+    ({"level": level(50000, 10)}, 80000), ({"facing": facing(84000, 4)}, 80000),
+    ({"level": level(50000, 10), "facing": facing(84000, 4)}, 80000), ({}, 0),
+])  # fmt: skip
+def test_where_the_factor_is_known_either_measurement_gives_the_lost_light(known, seen):
+    result = clipped_calibration(known.get("level"), known.get("facing"), 0.5, patch(3000, 3))
+    assert result.scale == pytest.approx(1000)
+    assert result.lost_lux == pytest.approx(seen)
+
+
+def test_one_measurement_alone_scales_and_restores_nothing():
+    assert clipped_calibration(level(50000, 10), None, 0.5) == (pytest.approx(5000), 0.0)
+
+
+def test_measurements_that_leave_the_sky_no_light_contradict():
+    with pytest.raises(Contradiction, match=r"horizontal_lux 40000 and sun_lux 84000 .* 4\.2e"):
+        clipped_calibration(level(40000, 10), facing(84000, 4), 0.5)
+
+
+def test_a_picture_that_is_too_bright_already_contradicts_its_patch():
+    with pytest.raises(Contradiction, match="horizontal_lux 5000 and patch 3000"):
+        clipped_calibration(level(5000, 10), None, 0.5, patch(3000, 3))
+
+
+def test_lost_light_of_one_measurement_must_fit_the_other():
+    with pytest.raises(Contradiction, match="horizontal_lux 90000"):
+        clipped_calibration(level(90000, 10), facing(84000, 4), 0.5, patch(3000, 3))
+
+
+def test_a_clipped_sky_is_restored_to_what_was_measured():
+    true = clear_noon()
+    lux = 3000 * horizontal_illuminance(true)
+    sun_lux = 3000 * luminance(irradiance_facing(true, NOON))
+    picture = clipped_noon()
+    rest, sun = separate_sun(picture)
+    found = [horizontal_illuminance(picture), luminance(irradiance_facing(picture, sun.direction))]
+    result = clipped_calibration(level(lux, found[0]), facing(sun_lux, found[1]), sun.direction[1])
+    whole = restored_sun(sun._replace(irradiance=sun.irradiance * result.scale), result.lost_lux)
+    assert result.scale == pytest.approx(3000, rel=0.05)  # veiling glare adds a little to the sky
+    restored = horizontal_illuminance(rest) * result.scale + luminance(whole.irradiance) * sun.direction[1]
+    assert restored == pytest.approx(lux, rel=1e-3)
+
+
+def test_a_patch_of_the_sky_gives_the_factor():
+    sky = clear_noon(128)
+    away = patch_radiance(sky, [0, 0, -1.0], 0.1)
+    assert agreed_scale([patch(2 * luminance(away), luminance(away))]) == pytest.approx(2)
