@@ -91,6 +91,31 @@ def test_picture_that_is_no_panorama_is_refused_unless_it_is_said_to_be_one(tmp_
     assert pipeline.night.failures == []
 
 
+@pytest.mark.parametrize("value", [np.nan, np.inf, -1.0])
+@pytest.mark.parametrize(("channels", "lost"), [([0, 1, 2], "R, G, B"), ([1], "G")])
+def test_channel_without_a_valid_value_is_told_with_the_file(tmp_path, value, channels, lost):
+    pipeline = TinyPipeline(tmp_path)
+    pixels = sky_pixels(0)
+    pixels[..., channels] = value
+    write_sky(tmp_path / "ferry_noon.exr", pixels=pixels)
+    pipeline.bake()
+    (_, failure), = pipeline.night.failures
+    told = f"every value of {lost} is NaN, infinite or negative, so nothing can be repaired; export it again"
+    assert (failure.cause, failure.traceback) == (f"{tmp_path}/ferry_noon.exr: {told}", "")
+
+
+@pytest.mark.parametrize("layout", ["auto", "equirect"])
+@pytest.mark.parametrize("shape", [(1, 1), (1, 2), (8, 17), (8, 2), (2, 16)])
+def test_absurd_panorama_is_told_with_the_file(tmp_path, shape, layout):
+    pipeline = TinyPipeline(tmp_path, probes=["ferry_noon"])
+    pipeline.settings["sources"]["ferry_noon"]["layout"] = layout
+    write_sky(tmp_path / "ferry_noon.exr", pixels=np.ones((*shape, 3), np.float32))
+    pipeline.bake()
+    (_, failure), = pipeline.night.failures
+    start = f"{tmp_path}/ferry_noon.exr: {shape[1]} x {shape[0]} can't be a panorama"
+    assert (failure.cause[: len(start)], failure.traceback) == (start, "")
+
+
 def test_black_sky_can_t_be_scaled_to_an_illuminance(tmp_path):
     pipeline = TinyPipeline(tmp_path, probes=["ferry_noon"])
     write_sky(tmp_path / "ferry_noon.exr", pixels=0 * sky_pixels(0))

@@ -53,8 +53,9 @@ def repair_pixels(pixels):
     repairs = Repairs(*(int(n) for n in counts.sum(axis=0)))
     if sum(repairs) == 0:
         return pixels, repairs
-    if (faults != GOOD).all(axis=(0, 1)).any():
-        raise ValueError("every value of a channel is NaN, infinite or negative")
+    lost = [name for name, bad in zip("RGB", (faults != GOOD).all(axis=(0, 1)), strict=True) if bad]
+    if lost:
+        raise ValueError(f"every value of {', '.join(lost)} is NaN, infinite or negative")
     mended = pixels.copy()
     for channel in range(3):
         _close_holes(mended, faults, channel)

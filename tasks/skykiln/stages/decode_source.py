@@ -40,7 +40,10 @@ class DecodeSource(ProbeStage):
         image = read_source(path)
         self._check_pin(path)
         _check_layout(path, self.probe.layout, image)
-        pixels, repairs = repair_pixels(image.pixels)
+        try:
+            pixels, repairs = repair_pixels(image.pixels)
+        except ValueError as error:
+            raise FileError(f"{path}: {error}, so nothing can be repaired; export it again") from error
         scale = _scale(path, self.probe, pixels)
         height, width = pixels.shape[:2]
         facts = {
@@ -65,6 +68,11 @@ class DecodeSource(ProbeStage):
 
 def _check_layout(path, layout, image):
     height, width = image.pixels.shape[:2]
+    if width % 2 or width < 4 or not height <= width <= 4 * height:
+        raise FileError(
+            f"{path}: {width} x {height} can't be a panorama, which is twice as wide as high, "
+            "of an even width from 4 pixels; name another picture"
+        )
     if layout != "auto":
         return
     if image.facts.get("envmap") == "cube":
