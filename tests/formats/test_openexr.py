@@ -1,5 +1,6 @@
 """OpenEXR pictures: every plain form, OpenImageIO as an outside reader, and the package's traps."""
 
+import os
 import struct
 
 import numpy as np
@@ -220,3 +221,26 @@ def test_what_others_print_meanwhile_reaches_the_screen(tmp_path, capsys, monkey
     monkeypatch.setattr(OpenEXR, "File", chatty)
     read(path)
     assert capsys.readouterr().out.splitlines() == ["progress: 3 of 7"] * 2
+
+
+@pytest.mark.parametrize("storage", ["scanlineimage", "tiledimage"])
+def test_cut_file_writes_nothing_to_the_screen(tmp_path, capfd, storage):
+    path = write(tmp_path / "sky.exr", type=getattr(OpenEXR, storage))
+    data = path.read_bytes()
+    path.write_bytes(data[: len(data) * 3 // 4])
+    assert_refused(path, "cut")
+    assert capfd.readouterr() == ("", "")
+
+
+def test_what_others_write_to_stderr_meanwhile_reaches_it(tmp_path, capfd, monkeypatch):
+    path = write(tmp_path / "sky.exr")
+    reader = OpenEXR.File
+
+    def speak(*arguments, **options):
+        os.write(2, b"from another thread\n")
+        os.write(2, b"sky.exr: (EXR_ERR_BAD_CHUNK_LEADER) a line of the library\n")
+        return reader(*arguments, **options)
+
+    monkeypatch.setattr(OpenEXR, "File", speak)
+    read(path)
+    assert capfd.readouterr().err == "from another thread\n" * 2

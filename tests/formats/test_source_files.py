@@ -39,9 +39,9 @@ def test_first_bytes_choose_the_reader_whatever_the_suffix(tmp_path):
         (b"\x76\x2f\x31", "neither"),
         (b"\x76\x2f\x31\x01", "not a readable OpenEXR file"),
         (b"#?", "header"),
-        (b"\x89PNG\r\n\x1a\n", "PNG"),
+        (b"\x89PNG\r\n\x1a\n", "is a PNG picture, not OpenEXR or Radiance .hdr; convert it"),
         (b"ENVI\nsamples = 100\n", "ENVI"),
-        (b"\0" * 5000, "neither"),
+        (b"\0" * 5000, "is neither OpenEXR nor Radiance .hdr; convert it to one of them"),
     ],
 )
 def test_unreadable_content_is_named(tmp_path, data, words):
