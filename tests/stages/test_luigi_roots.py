@@ -74,6 +74,17 @@ def test_bad_source_under_luigi_lets_the_others_bake(pipeline):
     assert {name.split("/")[1] for name in published(pipeline.build) if "probes" in name} == {"quay_night"}
 
 
+def test_luigi_s_own_log_names_every_bad_source_with_its_cause(pipeline):
+    for name in ("ferry_noon", "quay_night"):
+        (pipeline.folder / f"{name}.exr").write_text("not a picture")
+    arguments = ("--module", "skykiln", "skykiln.BakeAll", "--pipeline", str(pipeline.file))
+    log = _luigi(*arguments, capture_output=True, text=True).stderr
+    causes = [line for line in log.splitlines() if line.startswith("skykiln.errors.SkykilnError: ")]
+    told = "; ".join(causes)
+    for name in ("ferry_noon", "quay_night"):
+        assert f"{name}: {name}.exr: is neither OpenEXR nor Radiance .hdr" in told
+
+
 @pytest.mark.parametrize("workers", ["1", "2"])
 def test_user_s_own_task_can_require_a_probe(pipeline, workers):
     module = pipeline.folder / "level_build.py"

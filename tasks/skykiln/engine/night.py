@@ -38,7 +38,7 @@ class Outcome:
         after = chain_of(before.target) if touched else before
         ran = [(verdict.stage, verdict.stamp) for verdict in after.verdicts if touched and verdict.stamp]
         self.ran = [(stage, stamp) for stage, stamp in ran if stamp.night == night]
-        self.failure = _failure(after)
+        self.failure = failure_of(after)
         self.held_by = after.held_by
 
     @property
@@ -123,7 +123,7 @@ def _verified(target) -> Chain:
     return chain
 
 
-def _failure(after: Chain) -> Failure | None:
+def failure_of(after: Chain) -> Failure | None:
     """Why a target is not up to date: the first stage that left a cause, else the first unfinished one."""
     unfinished = [verdict.stage for verdict in after.stale]
     for stage in unfinished:

@@ -6,8 +6,9 @@ from pathlib import Path
 
 import luigi
 
-from ..engine.chains import glance_at
+from ..engine.chains import chain_of, glance_at
 from ..engine.lots import bake_lot
+from ..engine.night import failure_of
 from ..errors import SkykilnError
 from .probe_stage import PinnedProbe
 from .publish_probe import PublishProbe
@@ -36,9 +37,16 @@ class BakeLot(luigi.Task):
             use_threads(self.threads)
         failed = bake_lot(self._targets)
         if failed:
-            raise SkykilnError(f"{len(failed)} of a lot failed: {', '.join(failed)}")
+            targets = [target for target in self._targets if target.owner in failed]
+            raise SkykilnError("; ".join(_cause(target) for target in targets))
 
     @functools.cached_property
     def _targets(self):
         lot = json.loads(Path(self.manifest).read_bytes())
         return [PublishProbe.sketch(night=self.night, pinned=PinnedProbe.from_json(text)) for text in lot]
+
+
+def _cause(target):
+    """What stopped a target, with its name: all that Luigi's own log tells of a lot."""
+    cause = failure_of(chain_of(target)).cause
+    return f"{target.owner}: {cause.replace(f'{target.pinned.root}/', '')}"
