@@ -5,6 +5,7 @@ import os
 import pytest
 
 from skykiln.config import load_pipeline
+from skykiln.config.problems import nearest
 from skykiln.errors import PipelineError
 
 VALID = {
@@ -253,7 +254,7 @@ def test_pack_without_its_pixels_is_told_what_is_missing(problems):
 
 def test_missing_keys_are_told_at_the_entry(problems):
     assert problems(lines(source="sources:\n  sky: {}")) == [
-        "pipeline.yaml:4: sources.sky.file: missing. The image file; relative to the pipeline file.",
+        "pipeline.yaml:4: sources.sky: file or files: missing",
         "pipeline.yaml:4: sources.sky.recipe: missing. Name of the recipe that bakes it.",
     ]
 
@@ -304,9 +305,105 @@ def test_duplicate_keys_tags_and_merge_keys_are_told_together(problems):
         "pipeline.yaml:6: sources.tagged.file: tag 'tag:yaml.org,2002:python/name:os.system'; "
         "tags are not read, write the plain value",
         "pipeline.yaml:7: sources.merged.<<: merge keys are not read; write the keys out",
-        "pipeline.yaml:7: sources.merged.<<: unknown key; "
-        f"known here: {SETTINGS}",
     ]
+
+
+def test_what_a_merge_key_would_bring_is_not_told_as_missing(problems):
+    source = "sources:\n  sky: &sky {file: a.exr, recipe: plain}\n  other: {<<: *sky, yaw: 3}"
+    assert problems(lines(source=source)) == [
+        "pipeline.yaml:5: sources.other.<<: merge keys are not read; write the keys out",
+        f"pipeline.yaml:5: sources.other.yaw: unknown key; {nearest('yaw', SETTINGS.split(', '))}",
+    ]
+
+
+def test_entry_with_neither_file_nor_files_has_its_other_mistakes_told(problems):
+    assert problems(lines(source="sources:\n  d: {recipe: x, each: {a: {yaw_deg: far}}}")) == [
+        "pipeline.yaml:4: sources.d: file or files: missing",
+        "pipeline.yaml:4: sources.d.each.a.yaw_deg: found 'far'; allowed: a number from -360 to 360",
+        "pipeline.yaml:4: sources.d.recipe: no recipe is called 'x'; known here: plain",
+    ]
+
+
+RECIPE_WITH_MANY_MISTAKES = """recipes:
+  plain:
+    face_sise: 8
+    specular:
+      tolerence: 0.1
+      levels: 3
+      roughness: [0, 0.5, 0.4]
+    pack:
+      - {container: ktx2, pixels: rgba16f, compress: 50}
+      - {container: ktx2, pixels: rgba16f}
+      - {container: exr, pixels: rgba16f, codec: 1}
+      - {container: png, pixels: rgba16f}
+"""
+
+
+def test_wrong_keys_of_a_recipe_hide_none_of_its_other_mistakes(problems):
+    found = problems(lines(recipe=RECIPE_WITH_MANY_MISTAKES))
+    assert [problem.partition("plain.")[2] for problem in found] == [
+        "face_sise: unknown key; did you mean 'face_size'?",
+        "specular.tolerence: unknown key; did you mean 'tolerance'?",
+        "specular.roughness: found 0, 0.5, 0.4; allowed: numbers that start with 0 and rise to at most 1",
+        "pack[0].compress: found 50; allowed: a whole number from 1 to 22 or null",
+        "pack[1]: gives the file specular.rgba16f.ktx2 as pack[0] does; give one a name:",
+        "pack[2].codec: unknown key; known here: container, pixels, compress, cube_axes, name",
+        "pack[2].pixels: found 'rgba16f'; allowed in exr: half, float",
+        "pack[3].container: found 'png'; allowed: ktx2, dds, exr",
+    ]
+
+
+def test_slip_in_a_key_is_not_told_again_as_what_it_would_have_mended(problems):
+    recipe = """recipes:
+  plain:
+    specular: {level: 3, roughness: [0, 0.5, 1]}
+    pack:
+      - {container: ktx2, pixels: rgba16f}
+      - {container: ktx2, pixels: rgba16f, nane: second}
+"""
+    assert [problem.partition("plain.")[2] for problem in problems(lines(recipe=recipe))] == [
+        "specular.level: unknown key; did you mean 'levels'?",
+        "pack[1].nane: unknown key; did you mean 'name'?",
+    ]
+
+
+def test_each_that_names_no_file_is_told_beside_wrong_keys(problems):
+    source = """sources:
+  rooms:
+    files: "*.exr"
+    yaw: 3
+    each:
+      loby: {exposure: 1}
+"""
+    found = problems(lines(source=source), files=["lobby.exr"])
+    assert [problem.partition("rooms.")[2].partition(";")[0] for problem in found] == [
+        "recipe: missing. Name of the recipe that bakes them.",
+        "yaw: unknown key",
+        "each.loby.exposure: unknown key",
+        "each.loby: names no file of the glob",
+    ]
+
+
+@pytest.mark.parametrize(
+    ("settings", "key"),
+    [
+        ("exposure_ev: 1, horizontal_lux: 900", "exposure_ev"),
+        ("horizontal_lux: 900, each: {lobby: {exposure_ev: 1}}", "each.lobby.exposure_ev"),
+        ("exposure_ev: 1, each: {lobby: {horizontal_lux: 900}}", "each.lobby.horizontal_lux"),
+    ],
+)
+def test_stops_beside_a_measured_illuminance_are_refused(problems, settings, key):
+    source = f'sources:\n  rooms: {{files: "*.exr", recipe: plain, {settings}}}'
+    assert problems(lines(source=source), files=["lobby.exr"]) == [
+        f"pipeline.yaml:4: sources.rooms.{key}: found beside horizontal_lux, which decides the scale; "
+        "remove one of the two"
+    ]
+
+
+def test_words_that_are_left_out_of_a_message_are_counted(problems):
+    recipes = "recipes: {" + ", ".join(f"r{number:02}: {{}}" for number in range(15)) + "}"
+    (found,) = problems(lines(recipe=recipes, source="sources: {sky: {file: a.exr, recipe: zebra}}"))
+    assert found.endswith("r10, r11 and 3 more")
 
 
 def test_empty_sections_are_told(problems):

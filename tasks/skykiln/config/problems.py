@@ -34,7 +34,8 @@ def nearest(word, known):
     close = difflib.get_close_matches(word, known, n=1, cutoff=0.6)
     if close:
         return f"did you mean '{close[0]}'?"
-    return f"known here: {', '.join(known[:12]) or 'none'}"
+    more = f" and {len(known) - 12} more" if len(known) > 12 else ""
+    return f"known here: {', '.join(known[:12]) or 'none'}{more}"
 
 
 def shown(value):

@@ -134,10 +134,14 @@ class _Composer:
         return items
 
     def _mapping(self, path):
-        mapping, first_line = {}, {}
+        mapping, first_line, merged = {}, {}, {}
         while not isinstance(event := next(self.events), yaml.MappingEndEvent):
             key, line = self._key(event, path), event.start_mark.line + 1
+            merge = _is_merge(event)
             value = self._node(next(self.events), (*path, key))
+            if merge:  # told by now; what it would have brought is not to be told as missing
+                merged.update(value if isinstance(value, dict) else {})
+                continue
             if key in first_line:
                 text = f"the key is here twice; it was on line {first_line[key]} first"
                 self._problem(event, (*path, key), text)
@@ -145,12 +149,14 @@ class _Composer:
             first_line[key] = line
             mapping[key] = value
             self.lined.note_line(mapping, key, line)
+        for key, value in merged.items():
+            mapping.setdefault(key, value)
         return mapping
 
     def _key(self, event, path):
         if not isinstance(event, yaml.ScalarEvent):
             _stop("a key must be plain text", event.start_mark)
-        if event.implicit[0] and event.value == "<<":
+        if _is_merge(event):
             self._problem(event, (*path, "<<"), "merge keys are not read; write the keys out")
         if UNPRINTABLE.search(event.value):
             self._problem(event, path, "unprintable character in a key")
@@ -163,6 +169,10 @@ class _Composer:
 
     def _problem(self, event, path, text):
         self.lined.problems.append(Problem(event.start_mark.line + 1, path, text))
+
+
+def _is_merge(event):
+    return event.implicit[0] and event.value == "<<"
 
 
 def plain_value(text: str):
