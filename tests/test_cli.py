@@ -12,8 +12,9 @@ import numba
 import pytest
 
 from skykiln.cli import ALL_WELL, SOURCE_FAILED, WRONG, main
+from skykiln.engine.release import release
 from skykiln.errors import GATE_BROKEN
-from tiny_pipeline import TinyPipeline, touch
+from tiny_pipeline import TinyPipeline, touch, write_sky
 
 
 @pytest.fixture
@@ -36,7 +37,8 @@ def test_bake_takes_the_pipeline_of_the_working_folder_and_prints_a_line_per_pro
     status, out, _ = _run(capsys, "bake")
     assert status == ALL_WELL
     *lines, total = out.splitlines()
-    assert {line.split(":")[0] for line in lines} == {"all probes", "ferry_noon", "quay_night"}
+    told = {line.split(":")[0] for line in lines}
+    assert told == {"BRDF table of all probes", "ferry_noon", "quay_night"}
     assert re.fullmatch(r"2 rebuilt, 0 unchanged, 0 failed; 17 stages ran in [0-9.]+ s", total)
 
 
@@ -66,6 +68,18 @@ def test_unknown_name_ends_with_2_and_tells_the_nearest(pipeline, capsys):
     assert "'zebra'" in err.splitlines()[1]
 
 
+def test_names_that_are_left_out_are_counted(tmp_path, monkeypatch, capsys):
+    TinyPipeline(tmp_path, probes=[f"deck_{number:02}" for number in range(11)]).snapshot()
+    monkeypatch.chdir(tmp_path)
+    assert _run(capsys, "plan", "zzz")[2].endswith(", deck_06, deck_07 and 3 more\n")
+
+
+def test_version_is_that_of_the_package(capsys):
+    with pytest.raises(SystemExit) as end:
+        main(["--version"])
+    assert (end.value.code, capsys.readouterr().out) == (ALL_WELL, f"skykiln {release()}\n")
+
+
 @pytest.mark.parametrize("arguments", ["", "paint", "bake --workers 0", "bake --workers two", "why"])
 def test_wrong_command_ends_with_2(arguments, capsys):
     with pytest.raises(SystemExit) as end:
@@ -83,10 +97,26 @@ def test_plan_says_in_words_what_would_run_and_why(pipeline, capsys):
         "will run: specular level 1 of ferry_noon: roughness was 0.5, is 0.4286",
         "will run: pack specular.rgba16f.ktx2 of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
         "will run: judgement of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
-        "may run: published files of ferry_noon: runs if judgement, specular.rgba16f.ktx2, "
-        "irradiance.rgba16f.ktx2 or probe.json changes",
+        "may run: published files of ferry_noon: runs if judgement or pack specular.rgba16f.ktx2 changes",
         "3 will run, 1 may run, 5 up to date",
     ]
+
+
+def test_plan_words_packs_and_inputs_as_a_user_knows_them(pipeline, capsys):
+    _run(capsys, "bake")
+    pipeline.recipe["pack"] = [
+        {"container": "ktx2", "pixels": "rgba16f", "compress": 3},
+        {"container": "ktx2", "pixels": "rgb9e5"},
+    ]
+    pipeline.settings["sources"]["ferry_noon"]["extra"] = {"hour": 13}
+    pipeline.snapshot()
+    write_sky(pipeline.folder / "quay_night.exr", seed=9)
+    lines = _run(capsys, "plan")[1].splitlines()
+    told = "extra: hour is new; packs: specular.rgb9e5.ktx2 is new; "
+    told += "packs: specular.rgba16f.ktx2: compress was 0, is 3; pack specular.rgb9e5.ktx2 is a new input"
+    assert f"will run: judgement of ferry_noon: {told}" in lines
+    assert "may run: faces of quay_night: runs if panorama changes" in lines
+    assert "may run: irradiance of quay_night: runs if panorama or faces changes" in lines
 
 
 def test_plan_as_json_tells_every_state(pipeline, capsys):
@@ -131,7 +161,7 @@ def test_why_tells_what_failed_last_time(pipeline, capsys):
     (pipeline.folder / "quay_night.exr").write_text("not a picture")
     _run(capsys, "bake")
     _, out, _ = _run(capsys, "why", "quay*")
-    assert "    failed last time: " in out
+    assert "    failed last time: quay_night.exr: is neither OpenEXR nor " in out
     assert "panorama of quay_night: no finished run on record" in out
 
 
@@ -185,6 +215,28 @@ def test_bake_with_nothing_to_do_is_quick(pipeline, capsys):
     status, out, _ = _run(capsys, "bake")
     assert time.perf_counter() - began < 0.5
     assert (status, out.splitlines()[-1][:41]) == (ALL_WELL, "0 rebuilt, 2 unchanged, 0 failed; 0 stage")
+
+
+@pytest.mark.parametrize("spoiled", [False, True])
+def test_reader_who_goes_away_ends_the_output_and_nothing_else(pipeline, spoiled):
+    if spoiled:
+        (pipeline.folder / "quay_night.exr").write_text("not a picture")
+    environment = {**os.environ, "PYTHONPATH": os.pathsep.join(sys.path)}
+    leader, follower = os.pipe()
+    os.close(leader)
+    command = [sys.executable, "-m", "skykiln", "bake"]
+    run = subprocess.run(command, env=environment, stdout=follower, stderr=subprocess.PIPE, text=True)
+    os.close(follower)
+    assert run.returncode == (SOURCE_FAILED if spoiled else ALL_WELL)
+    assert "Traceback" not in run.stderr
+    assert "Broken" not in run.stderr
+    assert (pipeline.build / "probes/ferry_noon/probe.json").exists()
+    plan = [*command[:-1], "plan"]
+    leader, follower = os.pipe()
+    os.close(leader)
+    run = subprocess.run(plan, env=environment, stdout=follower, stderr=subprocess.PIPE, text=True)
+    os.close(follower)
+    assert (run.returncode, run.stderr) == (ALL_WELL, "")
 
 
 def test_luigi_s_own_noise_is_off_by_default_and_shown_with_v(pipeline):

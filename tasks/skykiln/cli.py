@@ -2,6 +2,7 @@
 
 import argparse
 import json
+import os
 import sys
 
 from .errors import ALL_WELL, SOURCE_FAILED, WRONG, PipelineError, SkykilnError
@@ -11,7 +12,9 @@ def main(arguments=None) -> int:
     """Run a command. Returns: the exit status."""
     options = _parser().parse_args(_joined(sys.argv[1:] if arguments is None else arguments))
     try:
-        return options.run(options)
+        status = options.run(options)
+        sys.stdout.flush()  # here, where a reader who has gone is no error
+        return status
     except PipelineError as error:
         print(error, file=sys.stderr)
         return WRONG
@@ -22,7 +25,7 @@ def main(arguments=None) -> int:
         print("stopped; what is done is kept, bake again to go on", file=sys.stderr)
         return 130
     except BrokenPipeError:
-        sys.stderr.close()
+        _speak_to_nobody()
         return ALL_WELL
 
 
@@ -58,8 +61,16 @@ def _bake_alone(options, pipeline):
         print(f"{owner}: held: {'; '.join(sentences)}", file=sys.stderr)
     for gate in record["gates"]:
         print(f"the night: {gate['gate']}: {gate['why']}", file=sys.stderr)
-    print(night_sentence(record))
+    try:
+        print(night_sentence(record), flush=True)
+    except BrokenPipeError:  # how the night went is told by the exit status still
+        _speak_to_nobody()
     return record["exit_status"]
+
+
+def _speak_to_nobody():
+    """Whoever read the output has gone: let Python's last flush go nowhere."""
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _say_waiting():
@@ -92,8 +103,9 @@ def _why(options):
     from .engine.chains import chain_of
     from .engine.wording import why_lines
 
-    chains = [chain_of(target) for target in _snapshot(options).probes]
-    print("\n".join(why_lines(chains)))
+    snapshot = _snapshot(options)
+    chains = [chain_of(target) for target in snapshot.probes]
+    print("\n".join(why_lines(chains, snapshot.pipeline.root)))
     return ALL_WELL
 
 
@@ -153,6 +165,7 @@ def _parser():
         prog="skykiln",
         description="Bakes HDR skies and light probes into filtered cube maps for image-based lighting.",
     )
+    parser.add_argument("--version", action=_Version, help="show the version and end")
     commands = parser.add_subparsers(required=True, metavar="COMMAND")
     bake = _command(commands, "bake", _bake, "bring probes up to date and publish them")
     _names(bake, "*")
@@ -191,6 +204,19 @@ def _parser():
     inspect.add_argument("--level", type=float, default=0.0, metavar="K", help="level of detail for --at (0)")
     _command(commands, "schema", _schema, "print the JSON Schema of pipeline.yaml", pipeline=False)
     return parser
+
+
+class _Version(argparse.Action):
+    """Looks the version up when it is asked for, not at every start."""
+
+    def __init__(self, option_strings, dest, help):
+        super().__init__(option_strings, argparse.SUPPRESS, nargs=0, help=help)
+
+    def __call__(self, parser, namespace, values, option_string=None):
+        from .engine.release import release
+
+        print(f"skykiln {release()}")
+        parser.exit()
 
 
 def _command(commands, name, run, text, pipeline=True):

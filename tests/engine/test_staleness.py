@@ -38,7 +38,7 @@ def test_new_pin_makes_what_follows_wait(folder):
     assert _verdicts(sketch_of_sum(folder, pin="2")) == {
         "number": (WILL_RUN, "source changed"),
         "multiple": (MAY_RUN, "runs if number changes"),
-        "sum": (MAY_RUN, "runs if number, remark or multiple changes"),
+        "sum": (MAY_RUN, "runs if number or multiple changes"),
     }
 
 
@@ -82,7 +82,7 @@ def test_new_and_dropped_inputs_are_told(folder, monkeypatch):
 
     monkeypatch.setattr(Multiply, "requires", other_inputs)
     assert _verdicts(sketch_of_sum(folder))["multiple"][1:] == (
-        "addend is a new input",
+        "number is a new input",
         "number is no longer an input",
     )
 

@@ -35,7 +35,8 @@ class _Watched:
     """A stale chain, and how many of its stages have a new stamp."""
 
     def __init__(self, chain):
-        self.owner = chain.target.owner
+        # What a single stage makes at once, and for all, is told by what it is.
+        self.owner = chain.target.owner if chain.target.requires() else chain.target.label
         self.total = len(chain.stale)
         self.done = 0
         self.seconds = 0.0
@@ -79,7 +80,10 @@ def _watch(watched, draw, ended):
         began = time.monotonic()
         last = ended.is_set()
         changed = [chain for chain in watched if not chain.finished and chain.look()]
-        draw(changed)
+        try:
+            draw(changed)
+        except BrokenPipeError:  # whoever read along has gone; the bake goes on
+            return
         if not last:
             ended.wait(max(EVERY, 10 * (time.monotonic() - began)))
 

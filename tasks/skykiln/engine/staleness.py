@@ -1,9 +1,9 @@
 """The one place that decides whether a stage is up to date, with a sentence for every reason."""
 
-import json
 from pathlib import Path
 from typing import NamedTuple
 
+from .differences import setting_reasons
 from .stamps import Stamp, read_stamp
 
 UP_TO_DATE = "up to date"
@@ -74,17 +74,18 @@ def _verdict(stage, memo, trust):
         known = below.stamp.outputs[dependency.output_role(role)] if below.up_to_date else None
         inputs[role] = known and known.digest
     stamp = read_stamp(stage.stamp_path)
-    reasons = tuple(_reasons(stage, stamp, inputs, trust))
+    words = _input_words(stage.pins(), required)
+    reasons = tuple(_reasons(stage, stamp, inputs, words, trust))
     if reasons:
         held = stage.held_by() if None not in inputs.values() else ()
         return Verdict(stage, HELD if held else WILL_RUN, held or reasons, inputs, stamp)
-    waiting = [_words(role) for role, digest in inputs.items() if digest is None]
+    waiting = list(dict.fromkeys(words[role] for role, digest in inputs.items() if digest is None))
     if waiting:
         return Verdict(stage, MAY_RUN, (f"runs if {_listed(waiting)} changes",), inputs, stamp)
     return Verdict(stage, UP_TO_DATE, (), inputs, stamp)
 
 
-def _reasons(stage, stamp, inputs, trust):
+def _reasons(stage, stamp, inputs, words, trust):
     if stamp is None:
         begun = any(Path(path).exists() for path in stage.files().values())
         yield "its last run did not end" if begun else "was never baked"
@@ -94,8 +95,8 @@ def _reasons(stage, stamp, inputs, trust):
         yield f"was made by another stage, {stamp.family}"
     else:
         yield from _version_reasons(stage, stamp)
-        yield from _setting_reasons(stamp.settings, stage.settings())
-        yield from _input_reasons(stamp.inputs, inputs)
+        yield from setting_reasons(stamp.settings, stage.settings())
+        yield from dict.fromkeys(_input_reasons(stamp.inputs, inputs, words))
         yield from _output_reasons(stamp, stage.files(), trust)
 
 
@@ -104,25 +105,19 @@ def _version_reasons(stage, stamp):
         yield f"its code's version was {stamp.version}, is {stage.version}"
 
 
-def _setting_reasons(recorded, asked):
-    if recorded == asked:
-        return
-    for name in sorted(recorded.keys() | asked.keys()):
-        if name not in asked:
-            yield f"{name} is no longer a setting"
-        elif name not in recorded:
-            yield f"{name} is a new setting"
-        elif recorded[name] != asked[name]:
-            yield "{} was {}, is {}".format(name, *_shown(recorded[name], asked[name]))
+def _input_words(pins, required):
+    """Role -> what a user calls an input: the title of the stage that makes it."""
+    words = {role: _words(role) for role in pins}
+    return words | {role: below.title for role, below in required.items()}
 
 
-def _input_reasons(recorded, inputs):
+def _input_reasons(recorded, inputs, words):
     for role, digest in inputs.items():
         if role not in recorded:
-            yield f"{_words(role)} is a new input"
+            yield f"{words[role]} is a new input"
         elif digest is not None and digest != recorded[role]:
             news = f"is {digest}" if digest.startswith(UNREADABLE) else "changed"
-            yield f"{_words(role)} {news}"
+            yield f"{words[role]} {news}"
     for role in recorded:
         if role not in inputs:
             yield f"{_words(role)} is no longer an input"
@@ -149,17 +144,3 @@ def _words(role):
 
 def _listed(words):
     return " or ".join(part for part in (", ".join(words[:-1]), words[-1]) if part)
-
-
-def _shown(before, after):
-    """Two values as text, short where that tells them apart."""
-    short = _short(before), _short(after)
-    return short if short[0] != short[1] else (repr(before), repr(after))
-
-
-def _short(value):
-    if isinstance(value, list):
-        return f"[{', '.join(map(_short, value))}]"
-    if isinstance(value, float):
-        return f"{value:.4g}" if abs(value) < 1e4 else f"{value:.6g}"
-    return value if isinstance(value, str) else json.dumps(value)

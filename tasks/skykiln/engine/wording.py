@@ -38,8 +38,11 @@ def _entry(verdict):
     return {"stage": verdict.stage.label, "state": verdict.state, "reasons": list(verdict.reasons)}
 
 
-def why_lines(chains):
-    """For every stage when and why it ran last, and why it would run next."""
+def why_lines(chains, root):
+    """For every stage when and why it ran last, and why it would run next.
+
+    Parameters: root : folder that paths are told relative to
+    """
     for chain in chains:
         for verdict in chain.verdicts:
             yield f"{verdict.stage.label}: {_last_run(verdict.stamp)}"
@@ -47,7 +50,7 @@ def why_lines(chains):
                 yield f"    {verdict.state}: {'; '.join(verdict.reasons)}"
                 failure = read_failure(verdict.stage)
                 if failure:
-                    yield f"    failed last time: {failure.cause}"
+                    yield f"    failed last time: {failure.cause.replace(f'{root}/', '')}"
 
 
 def night_sentence(record: dict) -> str:

@@ -105,5 +105,6 @@ def _matches(pattern, names):
 
 def _nothing_called(pattern, names):
     near = difflib.get_close_matches(pattern, names, n=1, cutoff=0.4)
-    hint = f"did you mean '{near[0]}'?" if near else f"there are {', '.join(names[:8])}"
+    more = f" and {len(names) - 8} more" if len(names) > 8 else ""
+    hint = f"did you mean '{near[0]}'?" if near else f"there are {', '.join(names[:8])}{more}"
     return f"no probe is called '{pattern}'; {hint}"
