@@ -72,7 +72,7 @@ def test_every_layout_gives_the_same_probe_and_flux(layout, expected):
 
 
 @pytest.mark.parametrize("layout", [name for name in LAYOUTS if not name.startswith("equirect")])
-@pytest.mark.parametrize("place", [(0.4, 0.46), (0.61, 0.42)])
+@pytest.mark.parametrize("place", [(0.4, 0.46), (0.61, 0.42), (0.03, 0.46)])
 def test_a_sun_of_one_source_pixel_keeps_its_flux_and_place(layout, place):
     projection, (w, h) = PROJECTIONS[layout]
     width, height = 64 * w, 64 * h

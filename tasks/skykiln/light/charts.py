@@ -47,6 +47,22 @@ def place_in(chart, size, x, y, z):
 
 
 @formula
+def pixel_solid_angle(chart, height, width, x, y, z):
+    """Solid angle of the source pixel at a unit direction, sr, from the chart's own Jacobian; beside a
+    pole or a rim, where pixels shrink to nothing, that of those next to it."""
+    if chart == PANORAMA:
+        sine = math.sqrt(max(0.0, 1.0 - y * y) + 1.0 / (height * height))
+        return 2.0 * math.pi * math.pi / (height * width) * sine
+    if chart == CUBE:
+        return 4.0 / (height * width) * max(abs(x), abs(y), abs(z)) ** 3
+    if chart == MIRROR_BALL:
+        return 16.0 / (height * width)  # dl = 4 x area of the unit disc
+    span, cosine = (math.pi / 2, y) if chart == FISHEYE else (math.pi, z)
+    sine = math.sqrt(max(0.0, 1.0 - cosine * cosine) + 1.0 / (height * height))
+    return (2.0 * span) ** 2 / (height * width) * sine / max(sine, math.acos(min(1.0, max(-1.0, cosine))))
+
+
+@formula
 def _place_on_cube(x, y, z):
     """OpenGL 4.6 core specification, section 8.13: face, and s and t, of a direction."""
     ax, ay, az = abs(x), abs(y), abs(z)

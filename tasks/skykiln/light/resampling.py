@@ -7,10 +7,10 @@ neighbours in the Fibonacci sequence (Niederreiter 1992, "Random number generati
 Carlo methods", chapter 5): no two share a row or a column, so that edges along the grid are counted
 to 1/N, others to about N^-3/4. A constant sky stays constant to rounding.
 
-Points are spent where flux is at stake. Every pixel takes 21; the spread of what they and those of the
-eight pixels around it saw x solid angle x N^-3/4 is the flux that N points may get wrong, and where that
-is more than `AT_STAKE` of all flux, 233 or 2,584 are taken. The neighbours count because of a sun that
-reaches into a pixel by less than its first points can see.
+Points are spent where flux is at stake. Every pixel takes 21, or as many as find every source pixel. The
+spread of what they and those of the eight pixels around it saw x solid angle x N^-3/4 is the flux that
+N points may get wrong; where that is more than `AT_STAKE` of all flux, 233 to 28,657 are taken. The
+neighbours count because of a sun that reaches into a pixel by less than its first points can see.
 """
 
 import math
@@ -19,11 +19,11 @@ import numpy as np
 from numba import prange
 
 from skykiln.jit import formula, parallel
-from skykiln.light.charts import PANORAMA, place_in
+from skykiln.light.charts import pixel_solid_angle, place_in
 
 AT_STAKE = 1e-5
-LATTICES = np.array([[21, 13], [233, 144], [2584, 1597]])
-# Points for each source pixel, where those are smaller than the panorama's (beside a panorama's poles).
+LATTICES = np.array([[21, 13], [233, 144], [2584, 1597], [28657, 17711]])
+# Points for each source pixel, where those are smaller than the panorama's: beside poles and rims.
 _POINTS_EACH = 6
 
 
@@ -54,11 +54,14 @@ def footprint_means(images, chart, width, height, rows=None, turn=None):
 
 @parallel
 def _look_once(images, chart, turn, lattices, sines, out, spans):
-    """Means over the first lattice, and the least and the largest sum of channels that it saw."""
+    """Means over as few points as leave no source pixel out; the least and the largest sum of channels
+    that these saw."""
+    width = out.shape[1]
     for row in prange(out.shape[0]):
-        for column in range(out.shape[1]):
+        for column in range(width):
+            lattice = _first_lattice(images, chart, turn, lattices, sines, row, column, width)
             r, g, b, least, largest = _mean(
-                images, chart, turn, lattices[0], sines[row], sines[row + 1], column, out.shape[1]
+                images, chart, turn, lattices[lattice], sines[row], sines[row + 1], column, width
             )
             out[row, column, 0], out[row, column, 1], out[row, column, 2] = r, g, b
             spans[row, column, 0], spans[row, column, 1] = least, largest
@@ -72,12 +75,11 @@ def _look_closer(images, chart, turn, lattices, sines, at_stake, spans, out):
         solid_angle = 2.0 * math.pi / width * (sines[row] - sines[row + 1])
         for column in range(width):
             flux = _spread_about(spans, row, column) * solid_angle
-            lattice = 0
-            if chart == PANORAMA:
-                lattice = _first_lattice(images, turn, lattices, sines, row, column, width)
-            while lattice < 2 and flux * lattices[lattice, 0] ** -0.75 > at_stake:
+            first = _first_lattice(images, chart, turn, lattices, sines, row, column, width)
+            lattice = first
+            while lattice < len(lattices) - 1 and flux * lattices[lattice, 0] ** -0.75 > at_stake:
                 lattice += 1
-            if lattice == 0:
+            if lattice == first:
                 continue
             r, g, b, _, _ = _mean(
                 images, chart, turn, lattices[lattice], sines[row], sines[row + 1], column, width
@@ -97,20 +99,25 @@ def _spread_about(spans, row, column):
 
 
 @formula
-def _first_lattice(images, turn, lattices, sines, row, column, width):
-    """The lattice that leaves out no source pixel, where these are slices around a pole."""
+def _first_lattice(images, chart, turn, lattices, sines, row, column, width):
+    """The lattice that leaves out no source pixel, where those are smaller than the panorama's."""
     y = (sines[row] + sines[row + 1]) / 2.0
     longitude = math.pi - 2.0 * math.pi * (column + 0.5) / width
     across = math.sqrt(1.0 - y * y)
     x, z = across * math.sin(longitude), across * math.cos(longitude)
-    source_y = turn[0, 1] * x + turn[1, 1] * y + turn[2, 1] * z
-    h, w = images.shape[1], images.shape[2]
-    slice_width = math.sqrt(max(0.0, 1.0 - source_y * source_y) + 1.0 / (h * h))
-    solid_angle = 2.0 * math.pi / width * (sines[row] - sines[row + 1])
-    needed = _POINTS_EACH * solid_angle / (2.0 * math.pi * math.pi / (h * w) * slice_width)
-    if needed <= lattices[0, 0]:
-        return 0
-    return 1 if needed <= lattices[1, 0] else 2
+    smallest = pixel_solid_angle(
+        chart,
+        images.shape[1],
+        images.shape[2],
+        turn[0, 0] * x + turn[1, 0] * y + turn[2, 0] * z,
+        turn[0, 1] * x + turn[1, 1] * y + turn[2, 1] * z,
+        turn[0, 2] * x + turn[1, 2] * y + turn[2, 2] * z,
+    )
+    needed = _POINTS_EACH * 2.0 * math.pi / width * (sines[row] - sines[row + 1]) / smallest
+    lattice = 0
+    while lattice < len(lattices) - 1 and lattices[lattice, 0] < needed:
+        lattice += 1
+    return lattice
 
 
 @formula
