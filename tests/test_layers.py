@@ -40,7 +40,7 @@ def _room(path):
     return path.relative_to(PACKAGE).parts[0].removesuffix(".py")
 
 
-def _imports(path):
+def imported_names(path):
     """Absolute dotted names of all that a module imports, at its top or inside its functions."""
     here = ("skykiln", *path.relative_to(PACKAGE).parts[:-1])
     for node in ast.walk(ast.parse(path.read_text())):
@@ -55,7 +55,7 @@ def _imports(path):
 @pytest.mark.parametrize("path", MODULES, ids=lambda path: str(path.relative_to(PACKAGE)))
 def test_module_imports_only_from_rooms_below_its_own(path):
     room = _room(path)
-    for name in _imports(path):
+    for name in imported_names(path):
         parts = name.split(".")
         if parts[0] == "skykiln" and len(parts) > 1:
             assert parts[1] in ALLOWED[room] | {room}, f"{room} may not import {name}"

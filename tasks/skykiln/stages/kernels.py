@@ -5,6 +5,8 @@ import importlib.util
 import os
 import sys
 
+# 16 x 8 grey pixels without run lengths.
+TINY_PICTURE = b"#?RADIANCE\n\n-Y 8 +X 16\n" + bytes((128, 128, 128, 129)) * 128
 EXTRAS = {"bc6h": "ispc_texcomp"}  # pixel coding -> the package that its extra installs
 
 
@@ -36,10 +38,13 @@ def _run_every_kernel():
     """A tiny sky through every stage's numerics."""
     import numpy as np
 
+    from ..formats.radiance_hdr import read_radiance_hdr
     from ..light import brdf, faces, harmonics, irradiance, photometry, pyramid, repair, specular
     from ..light.directions import alpha_from_roughness
 
-    sky, _ = repair.repair_pixels(np.ones((8, 16, 3), np.float32))
+    sky = read_radiance_hdr(TINY_PICTURE, "tiny.hdr", 128).pixels
+    sky[0, 0] = np.nan  # so that there is something to repair
+    sky, _ = repair.repair_pixels(sky)
     nodes = pyramid.build_pyramid(faces.extract_faces(sky, 8))
     specular.filter_level(nodes, 4, alpha_from_roughness(0.5), 0.1)
     irradiance.irradiance_cube(nodes, 4, 0.1)
