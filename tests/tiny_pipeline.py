@@ -48,7 +48,7 @@ class TinyPipeline:
     def bake(self, *names, workers=1, again=False):
         """Bake. Returns: the labels of the stages that ran."""
         self.night, _ = bake(self.snapshot(*names), workers, again, False, shown=nothing_shown)
-        return [stage.label for outcome in self.night.outcomes for stage, _ in outcome.ran]
+        return [ran.label for outcome in self.night.outcomes for ran in outcome.ran]
 
     def plan(self):
         """Label -> (state, reasons) of the stages that would run."""

@@ -10,7 +10,10 @@ from .errors import ALL_WELL, SOURCE_FAILED, WRONG, PipelineError, SkykilnError
 
 def main(arguments=None) -> int:
     """Run a command. Returns: the exit status."""
-    options = _parser().parse_args(_joined(sys.argv[1:] if arguments is None else arguments))
+    parser = _parser()
+    options = parser.parse_args(_joined(sys.argv[1:] if arguments is None else arguments))
+    if getattr(options, "workers", None) == 0 and not options.scheduler:
+        parser.error("argument --workers: 0 only with --scheduler, where others bake")
     try:
         status = options.run(options)
         sys.stdout.flush()  # here, where a reader who has gone is no error
@@ -50,8 +53,8 @@ def _bake_alone(options, pipeline):
     snapshot = Snapshot(pipeline, options.names, night_id, options.verify, options.shard)
     if options.accept:
         _accept(options.names, snapshot)
-    workers = options.workers or available_cores()
-    night, record = bake(snapshot, workers, options.again, options.verbose, shown)
+    workers = available_cores() if options.workers is None else options.workers
+    night, record = bake(snapshot, workers, options.again, options.verbose, shown, options.scheduler)
     if options.finish:
         end_shared_night(pipeline)
     for owner, failure in night.failures:
@@ -106,6 +109,20 @@ def _why(options):
     snapshot = _snapshot(options)
     chains = [chain_of(target) for target in snapshot.probes]
     print("\n".join(why_lines(chains, snapshot.pipeline.root)))
+    return ALL_WELL
+
+
+def _join(options):
+    from .config import load_pipeline
+    from .stages.farm import join
+    from .stages.kernels import available_cores
+
+    join(
+        options.scheduler,
+        load_pipeline(options.file),
+        options.workers or available_cores(),
+        options.verbose,
+    )
     return ALL_WELL
 
 
@@ -174,7 +191,7 @@ def _parser():
         "--accept", action="store_true", help="publish what a gate holds of the probes named, as it is packed"
     )
     bake.add_argument(
-        "--workers", type=_positive, metavar="N", help="processes for small probes (as many as cores)"
+        "--workers", type=_count, metavar="N", help="processes for small probes (as many as cores)"
     )
     bake.add_argument(
         "--verify", action="store_true", help="read all bytes again where size and time would do"
@@ -186,12 +203,19 @@ def _parser():
     farm.add_argument(
         "--finish", action="store_true", help="end a night of shards: bake what is left, write night.json"
     )
+    farm.add_argument(
+        "--scheduler", type=_address, metavar="HOST:PORT", help="share the work with who joined this luigid"
+    )
     bake.add_argument("-v", "--verbose", action="store_true", help="show what Luigi logs")
     plan = _command(commands, "plan", _plan, "say which stages would run, and why")
     _names(plan, "*")
     plan.add_argument("--json", action="store_true", help="every stage and its state, as JSON")
     why = _command(commands, "why", _why, "say why stages ran last, or would run next")
     _names(why, "+")
+    join = _command(commands, "join", _join, "bake what a central scheduler hands out, until SIGUSR1")
+    join.add_argument("scheduler", type=_address, metavar="HOST:PORT", help="where luigid listens")
+    join.add_argument("--workers", type=_count, metavar="N", help="processes here (as many as cores)")
+    join.add_argument("-v", "--verbose", action="store_true", help="show what Luigi logs")
     prune = _command(commands, "prune", _prune, "remove what no entry asks for any more")
     prune.add_argument("--dry-run", action="store_true", help="say what would go, and leave it")
     inspect = _command(commands, "inspect", _inspect, "show what a packed file holds", pipeline=False)
@@ -261,8 +285,15 @@ def _shard(text):
         raise argparse.ArgumentTypeError(f"{text!r} is not K/N, with K from 0 to N - 1") from None
 
 
-def _positive(text):
+def _address(text):
+    host, _, port = text.rpartition(":")
+    if not host or not port.isdecimal():
+        raise argparse.ArgumentTypeError(f"{text!r} is not HOST:PORT")
+    return text
+
+
+def _count(text):
     number = int(text)
-    if number < 1:
-        raise argparse.ArgumentTypeError(f"{number} is not 1 or more")
+    if number < 0:
+        raise argparse.ArgumentTypeError(f"{number} is less than 0")
     return number

@@ -45,3 +45,14 @@ def glance_at(target: Stage) -> Chain:
     """Judge a target, without going into a chain that a seal vouches for."""
     seal = read_seal(target)
     return Chain(target, (), seal.stages, seal.night) if vouches(seal, target) else chain_of(target)
+
+
+def stages_below(target: Stage) -> list:
+    """A target and all stages that it rests on, unjudged."""
+    found, waiting = {}, [target]
+    while waiting:
+        stage = waiting.pop()
+        if stage.stamp_path not in found:
+            found[stage.stamp_path] = stage
+            waiting += stage.requires().values()
+    return list(found.values())

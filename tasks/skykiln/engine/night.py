@@ -5,9 +5,10 @@ import time
 from datetime import UTC, datetime
 from functools import cached_property
 from pathlib import Path
+from typing import NamedTuple
 
 from .atomic import remove, sweep, sync_file_systems, write_atomically, write_beside
-from .chains import Chain, chain_of, glance_at
+from .chains import Chain, chain_of, glance_at, stages_below
 from .digests import json_bytes
 from .failures import Failure, forget_failure, read_failure
 from .seals import write_seal
@@ -23,23 +24,53 @@ def now() -> str:
     return datetime.now(UTC).isoformat(timespec="milliseconds")
 
 
+class Standing(NamedTuple):
+    """How a target stood when the night began: of ten thousand probes no more can be kept.
+
+    waiting : number of stages that will or may run; sealed : whether a seal vouched for all
+    night : that of the seal; held_by : the sentences that hold it back, if any
+    """
+
+    target: object
+    waiting: int
+    sealed: bool
+    night: str
+    held_by: tuple
+
+    @classmethod
+    def of(cls, chain: Chain) -> "Standing":
+        return cls(chain.target, len(chain.stale), bool(chain.sealed), chain.night, chain.held_by)
+
+
+class Ran(NamedTuple):
+    """A stage that ran in this night."""
+
+    label: str
+    title: str
+    reason: str
+    seconds: float
+
+
 class Outcome:
     """What became of one target.
 
-    ran : the stages that ran in this night, with their stamps
+    ran : the stages that ran in this night
     failure : why it is not up to date, or None
     held_by : the sentences that hold it back, if any
     """
 
-    def __init__(self, before: Chain, night: str):
-        """`before` is its chain as it was judged when the night began."""
+    def __init__(self, before: Standing, night: str):
         self.target = before.target
-        touched = before.stale or before.night == night
-        after = chain_of(before.target) if touched else before
-        ran = [(verdict.stage, verdict.stamp) for verdict in after.verdicts if touched and verdict.stamp]
-        self.ran = [(stage, stamp) for stage, stamp in ran if stamp.night == night]
-        self.failure = failure_of(after)
-        self.held_by = after.held_by
+        self.ran, self.failure, self.held_by = [], None, before.held_by
+        if before.waiting or before.night == night:
+            after = chain_of(before.target)
+            stamps = [(verdict.stage, verdict.stamp) for verdict in after.verdicts if verdict.stamp]
+            self.ran = [
+                Ran(stage.label, stage.title, stamp.reason, stamp.seconds)
+                for stage, stamp in stamps
+                if stamp.night == night
+            ]
+            self.failure, self.held_by = failure_of(after), after.held_by
 
     @property
     def state(self) -> str:
@@ -52,13 +83,12 @@ class Outcome:
     def stages(self) -> list:
         """The stages that ran, as night.json lists them."""
         return [
-            {"stage": stage.title, "reason": stamp.reason, "seconds": stamp.seconds}
-            for stage, stamp in self.ran
+            {"stage": ran.title, "reason": ran.reason, "seconds": ran.seconds} for ran in self.ran
         ]
 
 
 class Night:
-    """The chains as they stood when it began.
+    """The targets as they stood when it began.
 
     started : ISO 8601 time, which also tells this night from others
     """
@@ -67,38 +97,37 @@ class Night:
         """`verified`: read the bytes of all outputs, and call for a new run where they are not right."""
         self.started = started
         self._began = time.monotonic()
-        self.chains = [_verified(target) if verified else glance_at(target) for target in targets]
+        judge = _verified if verified else glance_at
+        self.standings = [Standing.of(judge(target)) for target in targets]
 
     @property
-    def stale(self) -> list[Chain]:
-        """The chains in which a stage will or may run."""
-        return [chain for chain in self.chains if chain.stale]
+    def stale(self) -> list[Standing]:
+        """The targets for which a stage will or may run."""
+        return [standing for standing in self.standings if standing.waiting]
 
     def sweep(self):
         """Remove what earlier nights left half done: it lies where no seal stands."""
-        folders = set()
-        for chain in [chain for chain in self.chains if not chain.sealed]:
-            for verdict in chain.verdicts:
-                stage = verdict.stage
+        for standing in [standing for standing in self.standings if not standing.sealed]:
+            folders = set()
+            for stage in stages_below(standing.target):
                 folders |= {Path(path).parent for path in (stage.stamp_path, *stage.files().values())}
-            for verdict in chain.stale:
-                forget_failure(verdict.stage)
-        for folder in folders:
-            sweep(folder)
+                forget_failure(stage)
+            for folder in folders:
+                sweep(folder)
 
     @cached_property
     def outcomes(self) -> list[Outcome]:
         """What became of each target, as the stamps say it when this is first asked."""
-        return [Outcome(chain, self.started) for chain in self.chains]
+        return [Outcome(standing, self.started) for standing in self.standings]
 
     def seal(self):
         """Seal the chains that stand without a seal: those that Luigi made stage by stage, or other code."""
-        chains = [glance_at(chain.target) for chain in self.chains if not chain.sealed]
-        chains = [chain for chain in chains if not chain.sealed and not chain.stale]
-        if chains:
-            sync_file_systems({Path(chain.target.seal_path).parent for chain in chains})
-        for chain in chains:
-            write_seal(chain.target, chain.verdicts)
+        unsealed = [standing.target for standing in self.standings if not standing.sealed]
+        settled = [target for target in unsealed if _stands_without_seal(target)]
+        if settled:
+            sync_file_systems({Path(target.seal_path).parent for target in settled})
+        for target in settled:
+            write_seal(target, chain_of(target).verdicts)
 
     @property
     def failures(self) -> list:
@@ -113,6 +142,11 @@ class Night:
     @property
     def seconds(self) -> float:
         return round(time.monotonic() - self._began, 3)
+
+
+def _stands_without_seal(target):
+    chain = glance_at(target)
+    return not chain.sealed and not chain.stale
 
 
 def _verified(target) -> Chain:

@@ -10,16 +10,19 @@ import time
 from contextlib import contextmanager
 from pathlib import Path
 
+from .chains import chain_of
 from .stamps import read_stamp
 
+CLOSELY = 300  # targets; of more, only the last stage of each is watched
 EVERY = 0.2  # seconds between two looks at the stamps
 BARS = 8
 
 
 @contextmanager
-def shown(chains):
-    """Show how far stale chains are while the block runs."""
-    watched, file = [_Watched(chain) for chain in chains], sys.stdout
+def shown(standings):
+    """Show how far targets are, as they stood when the night began, while the block runs."""
+    closely = len(standings) <= CLOSELY
+    watched, file = [_Watched(standing, closely) for standing in standings], sys.stdout
     with _bars(watched, file) if file.isatty() else _lines(watched, file) as draw:
         ended = threading.Event()
         watcher = threading.Thread(target=_watch, args=(watched, draw, ended), daemon=True)
@@ -32,17 +35,21 @@ def shown(chains):
 
 
 class _Watched:
-    """A stale chain, and how many of its stages have a new stamp."""
+    """A target with stale stages, and how many of them have a new stamp.
 
-    def __init__(self, chain):
+    Unless it is watched closely, all count when the last has one.
+    """
+
+    def __init__(self, standing, closely):
+        target = standing.target
         # What a single stage makes at once, and for all, is told by what it is.
-        self.owner = chain.target.owner if chain.target.requires() else chain.target.label
-        self.total = len(chain.stale)
+        self.owner = target.owner if target.requires() else target.label
+        self.total = standing.waiting
         self.done = 0
-        self.seconds = 0.0
-        self._last = chain.target.stamp_path
-        paths = [verdict.stage.stamp_path for verdict in chain.stale]
-        self._waiting = {path: _sign(path) for path in paths}
+        self.seconds = 0.0 if closely else None
+        self._last = target.stamp_path
+        stages = [verdict.stage for verdict in chain_of(target).stale] if closely else [target]
+        self._waiting = {stage.stamp_path: _sign(stage.stamp_path) for stage in stages}
 
     def look(self):
         """Count new stamps. Returns: whether there are any."""
@@ -50,7 +57,8 @@ class _Watched:
         for path in news:
             del self._waiting[path]
             stamp = read_stamp(path)
-            self.seconds += stamp.seconds if stamp else 0.0
+            if self.seconds is not None and stamp:
+                self.seconds += stamp.seconds
         self.done += len(news)
         if self._last in news:  # what has no new stamp by now did not have to run
             self.total = self.done
@@ -62,7 +70,7 @@ class _Watched:
 
     def sentence(self):
         stages = "1 stage" if self.total == 1 else f"{self.total} stages"
-        return f"{self.owner}: {stages} in {self.seconds:.2f} s"
+        return f"{self.owner}: {stages}" + (f" in {self.seconds:.2f} s" if self.seconds is not None else "")
 
 
 def _sign(path):

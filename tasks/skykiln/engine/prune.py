@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import NamedTuple
 
 from .atomic import remove, sweep
+from .chains import stages_below
 from .failures import failure_path, is_failure
 from .stamps import read_stamp
 
@@ -29,9 +30,7 @@ def leftovers(work: Path, targets) -> list[Leftover]:
 
     Parameters: work : the folder of stamps
     """
-    wanted = set()
-    for target in targets:
-        _gather(target, wanted)
+    wanted = {path for target in targets for path in _files_of(target)}
     stamps = (path for path in sorted(work.rglob("*.stamp")) if str(path) not in wanted)
     found = [_leftover(path, wanted) for path in stamps]
     failures = [path for path in sorted(work.rglob("*.failure")) if str(path) not in wanted]
@@ -51,13 +50,9 @@ def remove_leftovers(build_dir: Path, found):
         _remove_empty(folder, build_dir)
 
 
-def _gather(stage, wanted):
-    """Add the files of a stage and of all below it."""
-    if stage.stamp_path in wanted:
-        return
-    wanted |= {stage.stamp_path, stage.seal_path, str(failure_path(stage)), *stage.files().values()}
-    for dependency in stage.requires().values():
-        _gather(dependency, wanted)
+def _files_of(target):
+    for stage in stages_below(target):
+        yield from (stage.stamp_path, stage.seal_path, str(failure_path(stage)), *stage.files().values())
 
 
 def _leftover(path, wanted):

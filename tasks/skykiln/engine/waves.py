@@ -5,10 +5,15 @@ quadratic; builds of some hundred tasks are linear.
 """
 
 import logging
+import time
+from contextlib import contextmanager
 
 import luigi
+from luigi.rpc import RemoteScheduler, RPCError
 from luigi.scheduler import Scheduler
 from luigi.worker import Worker
+
+from ..errors import SkykilnError
 
 PENDING = 300
 
@@ -46,6 +51,70 @@ def build_wave(tasks, workers: int, verbose: bool):
     )
 
 
+def build_on(address: str, tasks, workers: int, verbose: bool):
+    """Let those who have joined a central scheduler, and this process, run tasks without dependencies.
+
+    Parameters: address : 'host:port' of the scheduler; workers : processes here, 0 to leave all to others
+    Raises:     SkykilnError if no scheduler answers
+    """
+    if not verbose:
+        logging.getLogger("luigi-interface").setLevel(logging.CRITICAL)
+        logging.getLogger("luigi-rpc").setLevel(logging.CRITICAL)
+    url, level = f"http://{address}", "INFO" if verbose else "CRITICAL"
+
+    def build(some):
+        luigi.build(
+            some,
+            worker_scheduler_factory=_Sound(),
+            scheduler_url=url,
+            workers=workers,
+            no_lock=True,
+            log_level=level,
+        )
+
+    with _told_as_no_scheduler(address):
+        build(tasks)
+        # What others run comes back if they die, and may then be taken up here.
+        while (waiting := _with_status(url, tasks, "PENDING")) or _with_status(url, tasks, "RUNNING"):
+            if waiting and workers:
+                build(waiting)
+            time.sleep(0.5)
+
+
+def work_for(address: str, workers: int, verbose: bool):
+    """Run what a central scheduler hands out, until SIGUSR1 asks to end after the task at hand.
+
+    Raises: SkykilnError if no scheduler answers
+    """
+    if not verbose:
+        logging.getLogger("luigi-interface").setLevel(logging.CRITICAL)
+    scheduler = RemoteScheduler(f"http://{address}")
+    with _told_as_no_scheduler(address):
+        scheduler.ping(worker="")
+        with Worker(
+            scheduler=scheduler,
+            worker_processes=workers,
+            assistant=True,
+            keep_alive=True,
+            wait_interval=0.5,
+            wait_jitter=0.5,
+        ) as worker:
+            worker.run()
+
+
+@contextmanager
+def _told_as_no_scheduler(address):
+    try:
+        yield
+    except RPCError as error:
+        raise SkykilnError(f"no scheduler answers at {address}; start luigid there") from error
+
+
+def _with_status(url, tasks, status):
+    known = RemoteScheduler(url).task_list(status, "")
+    return [task for task in tasks if task.task_id in known]
+
+
 class _Sound:
     """Luigi's scheduler and worker with settings for stages that judge themselves."""
 
@@ -56,14 +125,14 @@ class _Sound:
         )
 
     def create_remote_scheduler(self, url):
-        raise ValueError(f"waves are built without a central scheduler, not on {url}")
+        return RemoteScheduler(url)
 
     def create_worker(self, scheduler, worker_processes, assistant=False):
         return Worker(
             scheduler=scheduler,
             worker_processes=worker_processes,
             assistant=assistant,
-            check_complete_on_run=True,
+            check_complete_on_run=isinstance(scheduler, Scheduler),
             keep_alive=False,
             wait_interval=0.05,
             wait_jitter=0.05,

@@ -1,6 +1,6 @@
 """BakeLot: small probes, carried through all their stages by one Luigi task."""
 
-import functools
+import dataclasses
 import json
 from pathlib import Path
 
@@ -9,6 +9,7 @@ import luigi
 from ..engine.chains import chain_of, glance_at
 from ..engine.lots import bake_lot
 from ..engine.night import failure_of
+from ..engine.release import code_digest
 from ..errors import SkykilnError
 from .probe_stage import PinnedProbe
 from .publish_probe import PublishProbe
@@ -17,15 +18,18 @@ from .publish_probe import PublishProbe
 class BakeLot(luigi.Task):
     """One lot.
 
-    manifest : JSON file, a list of pinned probes; night : as of stages
+    manifest : JSON file, a list of pinned probes; on a farm relative to the build folder
+    night : as of stages; code : on a farm, digest of the code that scheduled it
     threads : of each kernel; None to leave them as they are. Of the process, not of the task
+    folders : of a process on a farm, where the pipeline lies there: {"root": ..., "build_dir": ...}
     """
-
-    threads = None
 
     task_namespace = "skykiln"
     manifest = luigi.Parameter()
     night = luigi.Parameter()
+    code = luigi.Parameter(default="")
+    threads = None
+    folders = None
 
     def complete(self):
         return not any(glance_at(target).stale for target in self._targets)
@@ -33,17 +37,29 @@ class BakeLot(luigi.Task):
     def run(self):
         from ..jit import use_threads
 
+        if self.code not in ("", code_digest()):
+            raise SkykilnError("this machine has another skykiln than the one that began the night")
         if self.threads:
             use_threads(self.threads)
-        failed = bake_lot(self._targets)
-        if failed:
-            targets = [target for target in self._targets if target.owner in failed]
-            raise SkykilnError("; ".join(_cause(target) for target in targets))
+        targets = self._targets
+        names = ", ".join(target.owner for target in targets)
+        self._tell(f"begins {names}")
+        failed = bake_lot(targets)
+        self._tell(f"ended {names}")
+        # On a farm another machine would try in vain: who began the night looks at what is complete.
+        if failed and not self.folders:
+            raise SkykilnError("; ".join(_cause(target) for target in targets if target.owner in failed))
 
-    @functools.cached_property
-    def _targets(self):
-        lot = json.loads(Path(self.manifest).read_bytes())
-        return [PublishProbe.sketch(night=self.night, pinned=PinnedProbe.from_json(text)) for text in lot]
+    def _tell(self, sentence):
+        if self.folders:
+            print(sentence, flush=True)
+
+    @property
+    def _targets(self):  # made anew each time: Luigi keeps its tasks until the end
+        folders = self.folders or {}
+        lot = json.loads(Path(folders.get("build_dir", ""), self.manifest).read_bytes())
+        probes = [dataclasses.replace(PinnedProbe.from_json(text), **folders) for text in lot]
+        return [PublishProbe.sketch(night=self.night, pinned=pinned) for pinned in probes]
 
 
 def _cause(target):

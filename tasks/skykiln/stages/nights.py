@@ -13,6 +13,7 @@ from ..engine.stamps import void_stamp
 from ..engine.waves import build_wave, waves_of
 from ..errors import ALL_WELL, GATE_BROKEN, SOURCE_FAILED, FileError
 from .bake_lot import BakeLot
+from .farm import bake_on_farm
 from .gates import NIGHT_GATES, broken_gates
 from .judge_probe import accept_judgement, read_judgement
 from .kernels import available_cores, warm_kernels
@@ -35,11 +36,14 @@ def end_shared_night(pipeline: Pipeline):
     remove(_shared_night_file(pipeline))
 
 
-def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) -> tuple[Night, dict]:
+def bake(
+    snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown, scheduler: str | None = None
+) -> tuple[Night, dict]:
     """One night from the skykiln command.
 
     Parameters: again : run every stage; verbose : let Luigi log
                 shown : context manager that shows the progress of stale chains
+                scheduler : 'host:port' of a central scheduler that others have joined, if there is one
     Returns:    the night, and the values of the night.json that tells of it; that of a shard isn't written
     """
     if again:
@@ -50,11 +54,11 @@ def bake(snapshot: Snapshot, workers: int, again: bool, verbose: bool, shown) ->
     night.sweep()
     if night.stale:
         prepare(night, snapshot, workers)
-        lots, big = luigi_tasks(night.stale, snapshot, workers)
-        with shown(night.stale), manifests_removed(lots):
-            _bake_lots(lots, workers, verbose)
-            for wave in waves_of(big):  # one stage at a time, in this process, its kernels on all cores
-                build_wave(wave, 1, verbose)
+        with shown(night.stale):
+            if scheduler:
+                bake_on_farm(scheduler, night.stale, snapshot, workers, verbose)
+            else:
+                _bake_here(night.stale, snapshot, workers, verbose)
     night.seal()
     if snapshot.shard:
         return night, night_record(night, snapshot.pipeline)
@@ -118,6 +122,14 @@ def night_record(night: Night, pipeline: Pipeline) -> dict:
     }
     gates = broken_gates(NIGHT_GATES, record, pipeline.gates)
     return {**record, "gates": gates, "exit_status": _exit_status(night, gates)}
+
+
+def _bake_here(chains, snapshot, workers, verbose):
+    lots, big = luigi_tasks(chains, snapshot, workers)
+    with manifests_removed(lots):
+        _bake_lots(lots, workers, verbose)
+        for wave in waves_of(big):  # one stage at a time, in this process, its kernels on all cores
+            build_wave(wave, 1, verbose)
 
 
 def _bake_lots(lots, workers, verbose):

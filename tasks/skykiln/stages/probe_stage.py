@@ -48,7 +48,7 @@ class PinnedProbe:
         """All that decides what is made of the probe, as text. No folders: machines have their own."""
         folders = ("root", "build_dir")
         said = {name: value for name, value in vars(self).items() if name not in (*folders, "probe")}
-        return canonical_json({**said, "probe": json.loads(self.probe.to_json())})
+        return f"{canonical_json(said)} {self.probe.to_json()}"
 
     @property
     def source_path(self) -> str:

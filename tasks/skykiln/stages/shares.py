@@ -8,6 +8,7 @@ from pathlib import Path
 from ..config import canonical_json
 from ..engine.atomic import remove, write_atomically
 from ..engine.lots import form_lots
+from ..engine.release import code_digest
 from .bake_lot import BakeLot
 from .extract_faces import auto_face_size
 from .publish_probe import PublishProbe
@@ -16,6 +17,8 @@ from .snapshot import Snapshot
 BIG_SECONDS = 0.2  # a probe that takes longer has stages worth a task each
 LONGEST_LOT = 60.0
 SHORTEST_LOT = 1.0  # below, a process of its own costs more than it saves
+FARM_LOTS = 64  # of a short night: enough for any farm
+LONGEST_FARM_LOT = 20.0  # what a machine that dies takes along
 LOTS_PER_WORKER = 4  # so that workers end at about the same time
 
 
@@ -26,7 +29,15 @@ def luigi_tasks(chains, snapshot: Snapshot, workers: int) -> tuple[list, list]:
     """
     small = [chain.target for chain in chains if _is_small(chain.target)]
     big = [chain for chain in chains if not _is_small(chain.target)]
-    return _lots(small, snapshot, workers), [(chain.target.full(), len(chain.stale)) for chain in big]
+    return _lots(small, snapshot, workers), [(chain.target.full(), chain.waiting) for chain in big]
+
+
+def farm_lots(chains, snapshot: Snapshot) -> list:
+    """The lots of a night on a farm: all stale probes, the big ones alone in theirs."""
+    targets = [chain.target for chain in chains if isinstance(chain.target, PublishProbe)]
+    seconds = [expected_seconds(target.pinned) for target in targets]
+    longest = min(sum(seconds) / FARM_LOTS, LONGEST_FARM_LOT)
+    return [_lot(lot, snapshot, farm=True) for lot in form_lots(targets, seconds, longest)]
 
 
 @contextmanager
@@ -36,7 +47,7 @@ def manifests_removed(lots):
         yield
     finally:
         for lot in lots:
-            remove(Path(lot.manifest))
+            remove(Path((lot.folders or {}).get("build_dir", ""), lot.manifest))
 
 
 def _is_small(target):
@@ -58,14 +69,15 @@ def _lots(targets, snapshot, workers):
     seconds = [expected_seconds(target.pinned) for target in targets]
     share = sum(seconds) / (LOTS_PER_WORKER * workers)
     longest = min(max(share, SHORTEST_LOT), LONGEST_LOT) if workers > 1 else LONGEST_LOT
-    lots = form_lots([target.pinned for target in targets], seconds, longest)
-    return [_lot(lot, snapshot) for lot in lots]
+    return [_lot(lot, snapshot) for lot in form_lots(targets, seconds, longest)]
 
 
-def _lot(lot, snapshot):
+def _lot(targets, snapshot, farm=False):
     """A lot's task, and its manifest: a parameter of its length would travel in every message of Luigi."""
-    manifest = canonical_json([pinned.to_json() for pinned in lot]).encode()
-    name = f"{hashlib.sha256(manifest).hexdigest()[:16]}.json"
-    path = snapshot.pipeline.build_dir / "work" / ".lots" / name
+    manifest = canonical_json([target.pinned.to_json() for target in targets]).encode()
+    name = f"work/.lots/{hashlib.sha256(manifest).hexdigest()[:16]}.json"
+    path = snapshot.pipeline.build_dir / name
     write_atomically(path, [manifest], synced=False)
+    if farm:
+        return BakeLot(manifest=name, night=snapshot.night, code=code_digest())
     return BakeLot(manifest=str(path), night=snapshot.night)
