@@ -6,13 +6,14 @@ that lost or won most are aimed at what is missing, a little each.
 
 In a level of a few blocks each is a good part of the whole, and its errors may stay where those of others
 cancel them: several fits of every block are made, and those are kept that together come nearest to the
-texels while the level's energy is right.
+texels while the level's energy is right, as the sum of all texels and by their solid angles.
 """
 
-from itertools import combinations
+from itertools import combinations, product
 
 import numpy as np
 
+from skykiln.formats.bc6h import decode_blocks
 from skykiln.formats.bc6h_measure import measure_blocks
 from skykiln.formats.bc6h_refit import refit_blocks
 
@@ -23,7 +24,8 @@ _SHARES = np.array([0.003, 0.02])  # of its flux, by which a block may make up f
 _TRIES = 64  # blocks in each round
 _FEW = 6  # blocks of a level (4 x 4 faces and less) that are chosen together
 _LEVEL_OF_FEW = 2e-3  # of which this share may be lost or won
-_AIMS = (1.0, 0.99, 1.01, 0.98, 1.02)  # shares of a block's flux that its fits aim at
+_AIMS = (1.0, 0.99, 1.01, 0.98, 1.02)  # shares of a block's flux that its fits aim at,
+_FREE = (0.02, 0.01)  # and the relative error that they are allowed
 _FLUX_COST = 1e6  # of the squared share that a level's energy is off, beside its squared error
 _DIM = 0.05  # a channel's flux counts as at least this share of the brightest channel's
 _LARGE = 384  # blocks of a level (32 x 32 faces) whose peak is kept; fewer have no bits to spare for it
@@ -31,12 +33,15 @@ _PEAK = 0.015  # the peak's own relative error
 _NO_PEAK = np.zeros(3, np.int64)
 
 
-def put_flux_right(level, threads):
-    """Refit blocks of a `CodedLevel` in place, on the threads of an executor."""
+def put_flux_right(level, weights, threads):
+    """Refit blocks of a `CodedLevel` in place, on the threads of an executor.
+
+    Parameters: weights (16,) : of a block's texels in the level's energy
+    """
     whole = _not_dim(level.flux.sum(0))
     peak = level.tallest[:, 0].max(0) if len(level.blocks) >= _LARGE else _NO_PEAK
     if len(level.blocks) <= _FEW:
-        return _choose_together(level, whole)
+        return _choose_together(level, weights, threads)
     _refit_those_off(level, whole, peak, threads)
     for share in _SHARES:
         _balance(level, whole, peak, share)
@@ -75,15 +80,20 @@ def _values(bits):
     return bits.astype(np.uint16).view(np.float16).astype(np.float64)
 
 
-def _choose_together(level, whole):
+def _choose_together(level, weights, threads):
     """Of every block the fit that makes the level's squared error and its energy's together least: pairs
     of blocks are changed for as long as that helps."""
     every = np.arange(len(level.blocks))
-    fits = [level] + [
-        _refit(level, every, level.flux * aim, np.full_like(level.flux, _OFF), _NO_PEAK) for aim in _AIMS
-    ]
+
+    def fit(aim, free):
+        return _refit(level, every, level.flux * aim, np.full_like(level.flux, free), _NO_PEAK)
+
+    fits = [level, *threads.map(fit, *zip(*product(_AIMS, _FREE), strict=True))]
     squared = np.stack([fit.squared for fit in fits])
-    errors = np.stack([fit.error for fit in fits]) / whole
+    wanted, *coded = (
+        _energies(halves, weights) for halves in (level.halves, *(decode_blocks(fit.blocks) for fit in fits))
+    )
+    errors = (np.stack(coded) - wanted) / _not_dim(wanted.sum(0))[None, None]
     chosen = np.zeros(len(every), np.int64)
     while any(_choose_pair(squared, errors, chosen, pair) for pair in combinations(every, 2)):
         pass
@@ -91,10 +101,16 @@ def _choose_together(level, whole):
         level.replace(number, fits[choice], number)
 
 
+def _energies(halves, weights):
+    """(blocks, 2, 3): sums over each block's texels, plain and weighted."""
+    values = _values(halves)
+    return np.stack([values.sum(1), np.einsum("t,btc->bc", weights, values)], 1)
+
+
 def _choose_pair(squared, errors, chosen, pair) -> bool:
     """Choose the best fits of two blocks, the others staying as they are. Returns whether that changed any.
 
-    Parameters: squared (fits, blocks); errors (fits, blocks, 3), in shares of the level's flux
+    Parameters: squared (fits, blocks); errors (fits, blocks, 2, 3), in shares of the level's energy
                 chosen (blocks,), changed in place
     """
     a, b = pair
@@ -102,7 +118,7 @@ def _choose_pair(squared, errors, chosen, pair) -> bool:
     others = errors[chosen, np.arange(len(chosen))].sum(0) - errors[before[0], a] - errors[before[1], b]
     off = np.abs(others + errors[:, None, a] + errors[None, :, b])
     costs = squared[:, None, a] + squared[None, :, b]
-    costs = costs + _FLUX_COST * np.square(np.maximum(off - _LEVEL_OF_FEW, 0)).sum(-1)
+    costs = costs + _FLUX_COST * np.square(np.maximum(off - _LEVEL_OF_FEW, 0)).sum((-2, -1))
     if costs.min() >= costs[before]:
         return False
     chosen[a], chosen[b] = np.unravel_index(costs.argmin(), costs.shape)
