@@ -61,8 +61,9 @@ def timed(function, repeats=3):
 
 def bake(path, size):
     """Levels from a source file, as the stages make them."""
-    faces = extract_faces(read_source(path).pixels, size)
-    pyramid = build_pyramid(faces)
+    panorama = read_source(path).pixels
+    faces = extract_faces(panorama, size)
+    pyramid = build_pyramid(panorama)
     filtered = [filter_level(pyramid, size >> k, (k / (LEVELS - 1)) ** 2, 0.005) for k in range(1, LEVELS)]
     return [faces, *filtered]
 
