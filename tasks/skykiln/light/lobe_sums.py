@@ -12,8 +12,8 @@ the Taylor series of K in c. The fourth moment of c is taken as h v^2 with one h
 h = 3 mean |d|^4 / ((tr C)^2 + 2 tr C^2) (3 for a normal distribution of any shape, 2.1 for an evenly
 filled square, 1.8 for a line), the sixth as g v^3, g in proportion to h^3 and right for a square; the
 third and fifth as those that come of the sphere's bending, k and k' those of a square. The skewness of a
-node's own content is left out and bounded (`walk`). Where colours are apart, each channel's own mean direction, m + o, adds
-K'(c) n.o, K' = (1 + 2 c x)/(B q + 2 a^2)^2.
+node's own content is left out and bounded (`walk`). Where colours are apart, each channel's own mean
+direction, m + o, adds K'(c) n.o, K' = (1 + 2 c x)/(B q + 2 a^2)^2.
 """
 
 import math

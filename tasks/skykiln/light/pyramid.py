@@ -1,7 +1,7 @@
 """The node pyramid: a panorama's flux, gathered over blocks of pixels that double up to half the sphere.
 
 A node stands for all its pixels in a sum over the sphere. It keeps their flux and the moments of their
-directions about the mean direction, so that a smooth kernel can be summed over it to second order, and
+directions about the mean direction, so that a smooth kernel can be summed over it (`lobe_sums`), and
 the size of what is then left out. A mean direction is not normalised: n . m is the mean of n . l.
 A pixel is a patch of constant radiance, with its own exact mean direction and its spread.
 
@@ -111,7 +111,9 @@ def _set_band(angle, half, half_width, row):
     sine, cosine = math.sin(angle), math.cos(angle)
     # 2 h - sin 2 h loses its digits where h is small.
     h2 = half * half
-    bend = (2 * half - math.sin(2 * half)) if half > 0.05 else h2 * half * (4 / 3 - h2 * (4 / 15 - h2 * 8 / 315))
+    bend = 2 * half - math.sin(2 * half)
+    if half < 0.05:
+        bend = h2 * half * (4 / 3 - h2 * (4 / 15 - h2 * 8 / 315))
     row[_SOLID_ANGLE] = 4.0 * half_width * sine * math.sin(half)
     row[_RHO] = (2 * half * sine * sine + math.cos(2 * angle) * bend / 2) / (2 * sine * math.sin(half))
     row[_Y] = cosine * math.cos(half)
@@ -274,7 +276,7 @@ def cell_moments(tree, level, p, node):
 
     Level 1 is a block of `block` pixels, each level below halves it; p counts cells in Z order.
     """
-    panorama, rows, columns, weights, _, offsets, block = tree
+    panorama, _, columns, _, _, offsets, block = tree
     height, width, _ = panorama.shape
     node[:] = 0.0
     squared = (offsets[2] // 2) << (2 - 2 * level)
@@ -330,7 +332,8 @@ def _set_patch(radiance, band, sine, cosine, mean, node):
 def _add_pixels(tree, row0, row1, column0, column1, node):
     """Moments of a block of pixels: summed about the block's first pixel, then moved to their mean."""
     panorama, rows, columns, weights = tree[0], tree[1], tree[2], tree[3]
-    rx, ry, rz = rows[row0, _RHO] * columns[column0, 0], rows[row0, _Y], rows[row0, _RHO] * columns[column0, 1]
+    rho, ry = rows[row0, _RHO], rows[row0, _Y]
+    rx, rz = rho * columns[column0, _MEAN_SIN], rho * columns[column0, _MEAN_COS]
     total, s2, s4 = 0.0, 0.0, 0.0
     x1, y1, z1, tx, ty, tz = 0.0, 0.0, 0.0, 0.0, 0.0, 0.0
     xx, yy, zz, xy, xz, yz = 0.0, 0.0, 0.0, 0.0, 0.0, 0.0

@@ -66,13 +66,14 @@ def filter_level(pyramid, face_size, alpha, tolerance):
     tile = _tile_edge(face_size, alpha)
     group = _group_edge(face_size, tile, alpha)
     sums = _sum_groups(
-        pyramid.tree, FACE_AXES, face_size, tile, group, float(alpha), tolerance / _ERRORS_PER_TEXEL, _DARK * brightest * norm,
+        pyramid.tree, FACE_AXES, face_size, tile, group, float(alpha),
+        tolerance / _ERRORS_PER_TEXEL, _DARK * brightest * norm,
     )  # fmt: skip
     return sums * np.float32(1.0 / norm)
 
 
 def _tile_edge(face_size, alpha):
-    """A tile about as wide as the lobe, at most 8 texels and a quarter of a radian."""
+    """A tile about as wide as the lobe, at most 8 texels and 0.3 rad; 1.6 / size is about a texel's angle."""
     widest = min(3.0 * alpha, 0.3)
     edge = 1
     while edge < 8 and 2 * edge <= face_size and 2 * edge * 1.6 / face_size < widest:
