@@ -67,7 +67,7 @@ def timed(function, repeats=3):
 def bake(panorama, size):
     """Levels from a panorama, as the stages make them."""
     faces = extract_faces(panorama, size)
-    pyramid = build_pyramid(faces)
+    pyramid = build_pyramid(panorama)
     filtered = [filter_level(pyramid, size >> k, (k / (LEVELS - 1)) ** 2, 0.005) for k in range(1, LEVELS)]
     return [faces, *filtered]
 

@@ -1,34 +1,39 @@
-"""The slow, plain references of the filter tests: float64, every texel or pixel, no shortcuts."""
+"""The slow, plain references of the filter tests: float64, every pixel, no shortcuts."""
 
 import numba
 import numpy as np
 from scipy import integrate
 
-from skykiln.light.directions import FACE_AXES
+from skykiln.light.directions import panorama_row_solid_angles
 
 
-def cube_points(faces, parts=1, order=3):
-    """Gauss-Legendre points over every lit texel, each texel cut into parts x parts.
+def panorama_points(panorama, parts=1, order=3):
+    """Gauss-Legendre points over every lit pixel, each pixel cut into parts x parts.
 
-    Returns directions (m, 3) and fluxes (m, 3), float64: radiance times sr, with the area element
-    (1 + a^2 + b^2)^-3/2 of the cube's face.
+    Returns directions (m, 3) and fluxes (m, 3), float64: radiance times sr. The weights over latitude
+    are made to give the pixel's exact solid angle.
     """
-    size = faces.shape[1]
+    height, width, _ = panorama.shape
     node, weight = np.polynomial.legendre.leggauss(order)
-    cells = size * parts
-    a = ((np.arange(cells)[:, None] + 0.5 + 0.5 * node) / cells * 2 - 1).ravel()
-    w = np.tile(weight / cells, cells)
-    texel = np.repeat(np.arange(size), parts * order)
-    directions, fluxes = [], []
-    for face, axes in enumerate(FACE_AXES):
-        lit = faces[face].max(-1) > 0
-        rows, columns = np.nonzero(lit[texel][:, texel])
-        p = axes[0] + a[columns, None] * axes[1] + a[rows, None] * axes[2]
-        h = np.linalg.norm(p, axis=1, keepdims=True)
-        radiance = faces[face][texel[rows], texel[columns]].astype(np.float64)
-        directions.append(p / h)
-        fluxes.append(radiance * (w[rows] * w[columns])[:, None] / h**3)
-    return np.concatenate(directions), np.concatenate(fluxes)
+    v = (np.arange(height * parts)[:, None] + 0.5 + 0.5 * node).ravel() / (height * parts)
+    u = (np.arange(width * parts)[:, None] + 0.5 + 0.5 * node).ravel() / (width * parts)
+    sine = np.sin(np.pi * v) * np.tile(weight, height * parts)
+    per_row = sine.reshape(height, -1).sum(axis=1).repeat(parts * order)
+    w = np.outer(sine / per_row, np.tile(weight / 2 / parts, width * parts))
+    w *= panorama_row_solid_angles(width, height).repeat(parts * order)[:, None]
+    lit = (panorama.max(-1) > 0).repeat(parts * order, 0).repeat(parts * order, 1)
+    rows, columns = np.nonzero(lit)
+    theta, longitude = np.pi * v[rows], np.pi - 2 * np.pi * u[columns]
+    directions = np.stack(
+        [np.sin(theta) * np.sin(longitude), np.cos(theta), np.sin(theta) * np.cos(longitude)], axis=-1
+    )
+    radiance = panorama[rows // (parts * order), columns // (parts * order)].astype(np.float64)
+    return directions, radiance * w[rows, columns][:, None]
+
+
+def joined(*points):
+    """Several sets of points as one."""
+    return tuple(np.concatenate(parts) for parts in zip(*points, strict=True))
 
 
 def filtered(points, normals, alpha):
@@ -64,7 +69,9 @@ def _sums(normals, directions, fluxes, alpha):
     return result
 
 
-def relative_errors(result, reference, faces, solid_angles):
+def relative_errors(result, reference, panorama):
     """|P - P_ref| / max(P_ref, 1e-3 x the mean radiance of the brightest channel)."""
-    mean = np.einsum("fjic,ji->c", faces.astype(np.float64), solid_angles) / (4 * np.pi)
+    height, width, _ = panorama.shape
+    rows = panorama_row_solid_angles(width, height)
+    mean = np.einsum("jic,j->c", panorama.astype(np.float64), rows) / (4 * np.pi)
     return np.abs(result - reference) / np.maximum(reference, 1e-3 * mean.max())

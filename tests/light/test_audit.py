@@ -85,7 +85,7 @@ def test_every_planted_fault_is_caught_in_three_hundred_trials(sky, fault):
 def test_the_production_filter_passes():
     panorama = coloured_linear(128)
     faces = extract_faces(panorama, 32)
-    pyramid = build_pyramid(faces)
+    pyramid = build_pyramid(panorama)
     charts = [Chart("level 0", faces, 0.0, 0.005)]
     charts += [Chart(f"{a}", filter_level(pyramid, 8, a, 0.005), a, 0.005) for a in (0.1, 0.4, 1.0)]
     verdict, _ = audit_charts(panorama, charts, 3)

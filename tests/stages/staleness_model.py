@@ -75,9 +75,10 @@ def _probe_stages(asked, name, entry, source):
     for level, roughness in list(enumerate(levels))[1:]:
         chain.append(f"{work}/level_{level}.npy")
         label = f"specular level {level} of {name}"
-        yield label, "FilterLevel", (roughness, tolerance), chain[:1], chain[-1:]
+        settings = (roughness, tolerance, recipe["face_size"], yaw)
+        yield label, "FilterLevel", settings, [pixels], chain[-1:]
     gathered = (recipe["irradiance"]["face_size"], tolerance, yaw)
-    yield f"irradiance of {name}", "GatherIrradiance", gathered, [pixels, chain[0]], [cube, totals]
+    yield f"irradiance of {name}", "GatherIrradiance", gathered, [pixels], [cube, totals]
     packed = []
     for pack in recipe["pack"]:
         own = PACKED[pack.get("name")]

@@ -1,14 +1,15 @@
-"""The node pyramid: a cube's flux, gathered over blocks of 2 x 2, 4 x 4, ... texels up to whole faces.
+"""The node pyramid: a panorama's flux, gathered over blocks of pixels that double up to half the sphere.
 
-A node stands for all its texels in a sum over the sphere. It keeps their flux and the moments of their
-directions about the mean direction, so that a smooth kernel can be summed over it to second order, and
+A node stands for all its pixels in a sum over the sphere. It keeps their flux and the moments of their
+directions about the mean direction, so that a smooth kernel can be summed over it (`lobe_sums`), and
 the size of what is then left out. A mean direction is not normalised: n . m is the mean of n . l.
+A pixel is a patch of constant radiance, with its own exact mean direction and its spread.
 
 Colours apart inside a node (a red lamp beside a blue one) have different mean directions: each
-channel's own mean and variance are kept beside the common ones.
+channel's own mean is kept beside the common one.
 
-Conventions: `directions`. Only inner levels are stored; a texel, or a part of one, is made when needed
-by `cell_moments`, as a patch of constant radiance.
+Blocks of `block` pixels and larger ones are stored; smaller ones, pixels and parts of pixels are made
+when they are needed, by `cell_moments`. Conventions: `directions`.
 """
 
 import math
@@ -17,8 +18,7 @@ from typing import NamedTuple
 import numba
 import numpy as np
 
-from skykiln.jit import formula, parallel
-from skykiln.light.directions import FACE_AXES
+from skykiln.jit import formula, parallel, serial
 
 # What a node's record holds, and where: first, in one cache line, what decides whether it is opened.
 # Variances and moments are per unit of flux, of the directions' distances d from MEAN.
@@ -31,103 +31,141 @@ FOURTH = 9  # mean of |d|^4
 SHIFT = 10  # largest of the colour shifts
 SPREAD_GAP = 11  # largest difference of a channel's own spread from SPREAD
 KINK = 12  # how far the mean of the positive part of n . l may be off across a horizon
-LOPSIDED = 13  # 3: mean of |d|^2 d
-COVARIANCE = 16  # 6: xx, yy, zz, xy, xz, yz of d
-COLOUR_SHIFT = 22  # 9: each channel's mean direction minus MEAN
+SLIM = 13  # how much more a node's error counts beside a pole, where cells are slivers side by side
+COVARIANCE = 14  # 6: xx, yy, zz, xy, xz, yz of d
+COLOUR_SHIFT = 20  # 9: each channel's mean direction minus MEAN
+LOPSIDED = 29  # 3: mean of |d|^2 d
 RECORD = 32
+
+# What is the same for all pixels of a row, or of a column.
+_SOLID_ANGLE, _RHO, _Y, _VAR_LATITUDE, _VAR_LONGITUDE, _EXTENT, _COS, _SIN = range(8)
+_MEAN_SIN, _MEAN_COS, _SIN_LONGITUDE, _COS_LONGITUDE = range(4)
+
+_BLOCKS_ACROSS = 1024  # a wide panorama's stored blocks are this many, and the memory with them
 
 
 class Pyramid(NamedTuple):
-    """faces (6, n, n, 3) float32 radiance; nodes (count, RECORD) float32, finest stored level first,
-    each level face by face in Z order: the quarters of node p are 4 p .. 4 p + 3 one level down, in the
-    order of rows; offsets (levels + 2,) int64, where level l >= 1 (blocks of 2^l texels) starts;
-    mean (3,) float64, mean radiance over the sphere."""
+    """A source for the filter.
 
-    faces: np.ndarray
-    nodes: np.ndarray
-    offsets: np.ndarray
+    tree : what kernels are handed: panorama (H, W, 3) float32 radiance; rows (H, 8) and columns (W, 4)
+        float64, geometry of its pixels; weights (3,) float64, by which channels count alike; nodes
+        (count, RECORD) float32, level 1 first, each level as two squares side by side in Z order: the
+        quarters of node p are 4 p .. 4 p + 3 one level down; offsets (levels + 2,) int64, where level
+        l >= 1 starts; block, the pixels along an edge of a level-1 node.
+    mean : (3,) float64, mean radiance over the sphere.
+    """
+
+    tree: tuple
     mean: np.ndarray
 
 
-def build_pyramid(faces):
-    """Gathers the faces' flux upward.
+def build_pyramid(panorama, yaw=0.0):
+    """Gathers the panorama's flux upward.
 
-    faces : (6, n, n, 3) float32, radiance, finite and not negative; n a power of two.
+    panorama : (H, 2 H, 3) float32, radiance, finite and not negative.
+    yaw : rad; positive turns what lay at +z towards +x.
     """
-    faces = np.ascontiguousarray(faces, dtype=np.float32)
-    size = faces.shape[1]
-    levels = size.bit_length() - 1
-    counts = [6 * (size >> level) ** 2 for level in range(1, levels + 1)]
+    panorama = np.ascontiguousarray(panorama, dtype=np.float32)
+    height, width, _ = panorama.shape
+    block = max(2, 1 << (max(1, width // _BLOCKS_ACROSS) - 1).bit_length())
+    across = 1 << (-(-max(height, -(-width // 2)) // block) - 1).bit_length()
+    levels = across.bit_length()
+    counts = [2 * (across >> level) ** 2 for level in range(levels)]
     offsets = np.concatenate([[0, 0], np.cumsum(counts, dtype=np.int64)]).astype(np.int64)
+    rows, columns = _row_geometry(height, width), _column_geometry(width, yaw)
+    flux = _row_fluxes(panorama, rows).sum(axis=0)
+    weights = np.divide(4 * np.pi, flux, out=np.zeros(3), where=flux > 0)
     nodes = np.zeros((int(offsets[-1]), RECORD), np.float32)
-    mean = _row_fluxes(faces).sum(axis=0) / (4 * np.pi)
-    weights = np.divide(1.0, mean, out=np.zeros(3), where=mean > 0)
-    if levels:
-        _gather_texels(faces, nodes, weights, FACE_AXES)
+    tree = (panorama, rows, columns, weights, nodes, offsets, block)
+    _gather_pixels(tree)
     for level in range(2, levels + 1):
         _gather_level(nodes, offsets[level - 1], offsets[level], offsets[level + 1], weights)
-    return Pyramid(faces, nodes, offsets, mean)
+    return Pyramid(tree, flux / (4 * np.pi))
+
+
+def _column_geometry(width, yaw):
+    """(W, 4): mean sine and cosine of the longitudes in each column, and those of its middle."""
+    longitude = np.pi - 2 * np.pi * (np.arange(width) + 0.5) / width + yaw
+    mean = np.sinc(1 / width)
+    middle = np.stack([np.sin(longitude), np.cos(longitude)], axis=1)
+    return np.concatenate([mean * middle, middle], axis=1)
+
+
+@serial
+def _row_geometry(height, width):
+    rows = np.empty((height, 8))
+    for j in range(height):
+        angle = math.pi * (j + 0.5) / height
+        _set_band(angle, math.pi / (2 * height), math.pi / width, rows[j])
+    return rows
+
+
+@formula
+def _set_band(angle, half, half_width, row):
+    """Geometry of patches around a polar angle, `half` high to either side and `half_width` wide.
+
+    Solid angle, mean of the sine of the polar angle (its mean over longitudes is apart) and of its
+    cosine, each weighted by the sine: 4 w sin sin(h), (2 h sin^2 + cos(2 t) (2 h - sin 2 h)/2) /
+    (2 sin sin h), cos cos(h); variances along latitude and longitude; largest distance from the mean.
+    """
+    sine, cosine = math.sin(angle), math.cos(angle)
+    # 2 h - sin 2 h loses its digits where h is small.
+    h2 = half * half
+    bend = 2 * half - math.sin(2 * half)
+    if half < 0.05:
+        bend = h2 * half * (4 / 3 - h2 * (4 / 15 - h2 * 8 / 315))
+    row[_SOLID_ANGLE] = 4.0 * half_width * sine * math.sin(half)
+    row[_RHO] = (2 * half * sine * sine + math.cos(2 * angle) * bend / 2) / (2 * sine * math.sin(half))
+    row[_Y] = cosine * math.cos(half)
+    row[_VAR_LONGITUDE] = row[_RHO] * row[_RHO] * half_width * half_width / 3
+    shortened = row[_RHO] * math.sin(half_width) / half_width
+    spread = 1.0 - shortened * shortened - row[_Y] * row[_Y]  # no digits are left in small parts
+    row[_VAR_LATITUDE] = h2 / 3 if half < 1e-4 else max(0.0, spread - row[_VAR_LONGITUDE])
+    widest = max(math.sin(angle - half), math.sin(angle + half), sine)
+    row[_EXTENT] = 4 / 3 * half + widest * half_width  # beside a pole the mean is 4/3 half from it
+    row[_COS], row[_SIN] = cosine, sine
 
 
 @parallel
-def _row_fluxes(faces):
-    """Flux of every row of texels, (6 n, 3) float64, by the area element (1 + a^2 + b^2)^-3/2."""
-    size = faces.shape[1]
-    fluxes = np.zeros((6 * size, 3))
-    for line in numba.prange(6 * size):
-        face, j = np.int64(line) // size, np.int64(line) % size
-        b = (2.0 * j + 1.0) / size - 1.0
+def _row_fluxes(panorama, rows):
+    """Flux of every row of pixels, (H, 3) float64."""
+    height, width, _ = panorama.shape
+    fluxes = np.zeros((height, 3))
+    for j in numba.prange(height):
         red, green, blue = 0.0, 0.0, 0.0
-        for i in range(size):
-            a = (2.0 * i + 1.0) / size - 1.0
-            inverse = 1.0 / (1.0 + a * a + b * b)
-            area = 4.0 / (size * size) * inverse * math.sqrt(inverse)
-            red += area * faces[face, j, i, 0]
-            green += area * faces[face, j, i, 1]
-            blue += area * faces[face, j, i, 2]
-        fluxes[line, 0], fluxes[line, 1], fluxes[line, 2] = red, green, blue
+        for i in range(width):
+            red += panorama[j, i, 0]
+            green += panorama[j, i, 1]
+            blue += panorama[j, i, 2]
+        fluxes[j, 0] = red * rows[j, _SOLID_ANGLE]
+        fluxes[j, 1] = green * rows[j, _SOLID_ANGLE]
+        fluxes[j, 2] = blue * rows[j, _SOLID_ANGLE]
     return fluxes
 
 
 @parallel
-def _gather_texels(faces, nodes, weights, face_axes):
-    """The first level, of 2 x 2 texels each: their geometry is the same on all six faces."""
-    size = faces.shape[1]
-    count = (size >> 1) ** 2
-    block = 64
-    for line in numba.prange((count + block - 1) // block):
-        first = np.int64(line) * block
-        children = np.zeros((4, RECORD), np.float32)
-        solid_angles = np.empty(4)
-        width = 2.0 / size
-        for p in range(first, min(count, first + block)):
-            j, i = 2 * every_other_bit(p >> 1), 2 * every_other_bit(p)
-            for k in range(4):
-                a, b = (i + (k & 1) + 0.5) * width - 1.0, (j + (k >> 1) + 0.5) * width - 1.0
-                solid_angles[k] = _patch_moments(a, b, width, children[k])
-            for face in range(6):
-                for k in range(4):
-                    for c in range(3):
-                        radiance = faces[face, j + (k >> 1), i + (k & 1), c]
-                        children[k, FLUX + c] = radiance * solid_angles[k]
-                node = nodes[face * count + p]
-                _join(children, weights, True, node)
-                _turn(node, face_axes[face])
+def _gather_pixels(tree):
+    """Level 1: blocks of block x block pixels."""
+    nodes, offsets = tree[4], tree[5]
+    count, batch = offsets[2], 32
+    for line in numba.prange((count + batch - 1) // batch):
+        for p in range(np.int64(line) * batch, min(count, np.int64(line) * batch + batch)):
+            cell_moments(tree, 1, p, nodes[p])
 
 
 @parallel
 def _gather_level(nodes, below, first, last, weights):
-    block = 64
-    for line in numba.prange((last - first + block - 1) // block):
-        for p in range(np.int64(line) * block, min(last - first, np.int64(line) * block + block)):
+    batch = 64
+    for line in numba.prange((last - first + batch - 1) // batch):
+        for p in range(np.int64(line) * batch, min(last - first, np.int64(line) * batch + batch)):
             children = nodes[below + 4 * p : below + 4 * p + 4]
-            _join(children, weights, False, nodes[first + p])
+            _join(children, weights, nodes[first + p])
 
 
 @formula
-def _join(children, weights, plain, node):
+def _join(children, weights, node):
     """Moments of four children about their common mean (parallel-axis theorem, to fourth order), into a
-    record of zeros; `plain` children are of one colour and not lopsided."""
+    record of zeros."""
     total, mx, my, mz = 0.0, 0.0, 0.0, 0.0
     for k in range(4):
         share = _share(children, weights, k)
@@ -142,9 +180,9 @@ def _join(children, weights, plain, node):
     for k in range(4):
         share = _share(children, weights, k) / total
         dx, dy, dz = children[k, MEAN] - mx, children[k, MEAN + 1] - my, children[k, MEAN + 2] - mz
-        _add_moments(children[k], share, dx, dy, dz, plain, node)
+        _add_moments(children[k], share, dx, dy, dz, node)
     for c in range(3):
-        _join_channel(children, mx, my, mz, c, plain, node)
+        _join_channel(children, mx, my, mz, c, node)
     _sum_up(node)
 
 
@@ -156,66 +194,67 @@ def _share(children, weights, k):
 
 
 @formula
-def _add_moments(child, share, dx, dy, dz, plain, node):
+def _add_moments(child, share, dx, dy, dz, node):
     """Adds a child that stands off the common mean by (dx, dy, dz)."""
     square = dx * dx + dy * dy + dz * dz
     if share > 0.0:
         node[RADIUS] = max(node[RADIUS], np.float32(math.sqrt(square)) + child[RADIUS])
     spread = np.float64(child[SPREAD])
-    along = 0.0
-    if not plain:
-        along = child[LOPSIDED] * dx + child[LOPSIDED + 1] * dy + child[LOPSIDED + 2] * dz
-        node[LOPSIDED] += share * child[LOPSIDED]
-        node[LOPSIDED + 1] += share * child[LOPSIDED + 1]
-        node[LOPSIDED + 2] += share * child[LOPSIDED + 2]
-    node[SPREAD] += share * (spread + square)
-    # Inside the child directions are taken as spread alike across the tangent plane: hence the
-    # factors 2 and 4, of (1 + 2/2) and of (2 + 4/2).
-    node[FOURTH] += share * (child[FOURTH] + 4 * along + 4 * spread * square + square * square)
-    pull = share * (2 * spread + square)
-    node[LOPSIDED] += pull * dx
-    node[LOPSIDED + 1] += pull * dy
-    node[LOPSIDED + 2] += pull * dz
-    node[COVARIANCE] += share * (child[COVARIANCE] + dx * dx)
-    node[COVARIANCE + 1] += share * (child[COVARIANCE + 1] + dy * dy)
-    node[COVARIANCE + 2] += share * (child[COVARIANCE + 2] + dz * dz)
-    node[COVARIANCE + 3] += share * (child[COVARIANCE + 3] + dx * dy)
-    node[COVARIANCE + 4] += share * (child[COVARIANCE + 4] + dx * dz)
-    node[COVARIANCE + 5] += share * (child[COVARIANCE + 5] + dy * dz)
+    xx, yy, zz = child[COVARIANCE], child[COVARIANCE + 1], child[COVARIANCE + 2]
+    xy, xz, yz = child[COVARIANCE + 3], child[COVARIANCE + 4], child[COVARIANCE + 5]
+    cx, cy, cz = xx * dx + xy * dy + xz * dz, xy * dx + yy * dy + yz * dz, xz * dx + yz * dy + zz * dz
+    along = child[LOPSIDED] * dx + child[LOPSIDED + 1] * dy + child[LOPSIDED + 2] * dz
+    across = cx * dx + cy * dy + cz * dz
+    pull = spread + square
+    node[SPREAD] += share * pull
+    node[FOURTH] += share * (child[FOURTH] + 4 * (along + across) + (2 * spread + square) * square)
+    node[LOPSIDED] += share * (child[LOPSIDED] + pull * dx + 2 * cx)
+    node[LOPSIDED + 1] += share * (child[LOPSIDED + 1] + pull * dy + 2 * cy)
+    node[LOPSIDED + 2] += share * (child[LOPSIDED + 2] + pull * dz + 2 * cz)
+    node[COVARIANCE] += share * (xx + dx * dx)
+    node[COVARIANCE + 1] += share * (yy + dy * dy)
+    node[COVARIANCE + 2] += share * (zz + dz * dz)
+    node[COVARIANCE + 3] += share * (xy + dx * dy)
+    node[COVARIANCE + 4] += share * (xz + dx * dz)
+    node[COVARIANCE + 5] += share * (yz + dy * dz)
 
 
 @formula
-def _join_channel(children, mx, my, mz, c, plain, node):
-    """One channel's own flux and mean direction; its spread follows from 1 - |mean|^2."""
+def _join_channel(children, mx, my, mz, c, node):
+    """One channel's own flux and mean direction."""
     at = COLOUR_SHIFT + 3 * c
     flux, sx, sy, sz = 0.0, 0.0, 0.0, 0.0
     for k in range(4):
         f = np.float64(children[k, FLUX + c])
         flux += f
-        sx += f * (children[k, MEAN] - mx)
-        sy += f * (children[k, MEAN + 1] - my)
-        sz += f * (children[k, MEAN + 2] - mz)
-        if not plain:
-            sx += f * children[k, at]
-            sy += f * children[k, at + 1]
-            sz += f * children[k, at + 2]
+        sx += f * (children[k, MEAN] - mx + children[k, at])
+        sy += f * (children[k, MEAN + 1] - my + children[k, at + 1])
+        sz += f * (children[k, MEAN + 2] - mz + children[k, at + 2])
+    if flux > 0.0:
+        _set_channel(node, c, flux, sx / flux, sy / flux, sz / flux)
+
+
+@formula
+def _set_channel(node, c, flux, sx, sy, sz):
+    """A channel's flux and the shift of its mean direction; its spread follows from 1 - |mean|^2."""
+    at = COLOUR_SHIFT + 3 * c
     node[FLUX + c] = flux
-    if flux <= 0.0:
-        return
-    sx, sy, sz = sx / flux, sy / flux, sz / flux
     node[at], node[at + 1], node[at + 2] = sx, sy, sz
     square = sx * sx + sy * sy + sz * sz
     node[SHIFT] = max(node[SHIFT], np.float32(math.sqrt(square)))
-    gap = abs(2.0 * (sx * mx + sy * my + sz * mz) + square)
+    gap = abs(2.0 * (sx * node[MEAN] + sy * node[MEAN + 1] + sz * node[MEAN + 2]) + square)
     node[SPREAD_GAP] = max(node[SPREAD_GAP], np.float32(gap))
 
 
 @formula
 def _sum_up(node):
-    """The bounds that follow from the moments."""
+    """What the moments leave open, in factors calibrated by the error tests; and how much more often a
+    sliver's error counts: cells of a latitude-longitude grid stand the closer the nearer to a pole."""
     spread = node[SPREAD]
     deviation = math.sqrt(spread)
     skew = math.sqrt(node[LOPSIDED] ** 2 + node[LOPSIDED + 1] ** 2 + node[LOPSIDED + 2] ** 2)
+    from_axis = math.sqrt(node[MEAN] ** 2 + node[MEAN + 2] ** 2)
+    node[SLIM] = 1.0 / max(from_axis * from_axis, 1e-12)
     node[THIRD] = 0.75 * skew + 0.05 * spread * deviation + 3.0 * spread * node[SHIFT]
     node[KINK] = 0.1 * deviation + 0.3 * min(deviation, skew / max(spread, 1e-30))
 
@@ -232,73 +271,146 @@ def every_other_bit(z):
 
 
 @formula
-def cell_moments(faces, face_axes, level, p, node):
-    """The record of a patch of constant radiance: texel p in Z order, or for level < 0 a part of one."""
-    across = faces.shape[1] << -level
-    face = p // (across * across)
-    z = p - face * across * across
-    i, j = every_other_bit(z), every_other_bit(z >> 1)
-    width = 2.0 / across
-    node[:] = 0.0
-    solid_angle = _patch_moments((i + 0.5) * width - 1.0, (j + 0.5) * width - 1.0, width, node)
-    for c in range(3):
-        node[FLUX + c] = faces[face, j >> -level, i >> -level, c] * solid_angle
-    _turn(node, face_axes[face])
+def cell_moments(tree, level, p, node):
+    """The record of a cell that is not stored, or not yet: a block of pixels, a pixel, or a part of one.
 
-
-@formula
-def _patch_moments(a, b, width, node):
-    """Moments of an evenly bright patch at face coordinates (a, b), on the axes of its face: major, s,
-    t. Returns its solid angle.
-
-    With p = (1, a, b) and h = |p|, a patch of width w has, to second order in w, solid angle
-    w^2 h^-3 (1 + w^2/24 (15 (h^2 - 1)/h^4 - 6/h^2)) and mean direction
-    p/h + w^2/24 (-8 (0, a, b)/h^3 - 2 p/h^3 + 9 (h^2 - 1) p/h^5): Taylor series of p/h weighted by the
-    area element h^-3.
+    Level 1 is a block of `block` pixels, each level below halves it; p counts cells in Z order.
     """
-    h2 = 1.0 + a * a + b * b
-    h = math.sqrt(h2)
-    h3 = h * h2
-    bend = width * width / 24.0
-    radial = 1.0 / h + bend * (-2.0 / h3 + 9.0 * (h2 - 1.0) / (h3 * h2))
-    sideways = radial - 8.0 * bend / h3
-    mx, my, mz = radial, sideways * a, sideways * b
-    second = width * width / 12.0
-    da = (-a / h3, 1.0 / h - a * a / h3, -a * b / h3)  # derivatives of p/h
-    db = (-b / h3, -a * b / h3, 1.0 / h - b * b / h3)
-    length_a, length_b = (1.0 + b * b) / (h2 * h2), (1.0 + a * a) / (h2 * h2)  # their squares
-    spread = second * (length_a + length_b)
-    bent = 0.1 * spread * spread  # along the radius: (mean |d|^4 - (mean |d|^2)^2)/4
-    node[MEAN], node[MEAN + 1], node[MEAN + 2] = mx, my, mz
-    node[COVARIANCE] = second * (da[0] * da[0] + db[0] * db[0]) + bent * mx * mx
-    node[COVARIANCE + 1] = second * (da[1] * da[1] + db[1] * db[1]) + bent * my * my
-    node[COVARIANCE + 2] = second * (da[2] * da[2] + db[2] * db[2]) + bent * mz * mz
-    node[COVARIANCE + 3] = second * (da[0] * da[1] + db[0] * db[1]) + bent * mx * my
-    node[COVARIANCE + 4] = second * (da[0] * da[2] + db[0] * db[2]) + bent * mx * mz
-    node[COVARIANCE + 5] = second * (da[1] * da[2] + db[1] * db[2]) + bent * my * mz
-    node[SPREAD] = spread
-    node[RADIUS] = 0.5 * width * (math.sqrt(length_a) + math.sqrt(length_b))
-    node[FOURTH] = 1.4 * spread * spread  # of a square
-    _sum_up(node)
-    return width * width / h3 * (1.0 + bend * (15.0 * (h2 - 1.0) / (h2 * h2) - 6.0 / h2))
+    panorama, _, columns, _, _, offsets, block = tree
+    height, width, _ = panorama.shape
+    node[:] = 0.0
+    squared = (offsets[2] // 2) << (2 - 2 * level)
+    square = p // squared
+    z = p - square * squared
+    j, i = every_other_bit(z >> 1), every_other_bit(z)
+    i += square * every_other_bit(squared - 1) + square
+    side = block >> (1 - level)
+    if side >= 1:
+        last_row, last_column = min(height, (j + 1) * side), min(width, (i + 1) * side)
+        if j * side < last_row and i * side < last_column:
+            _add_pixels(tree, j * side, last_row, i * side, last_column, node)
+        return
+    parts = (1 << (1 - level)) // block
+    row, column = j // parts, i // parts
+    if row < height and column < width:
+        band = np.empty(8)
+        half = math.pi / (2 * height * parts)
+        half_width = math.pi / (width * parts)
+        _set_band((2 * j + 1) * half, half, half_width, band)
+        turn = (2.0 * (i - column * parts) + 1.0 - parts) * half_width  # from the column's middle
+        sin_t, cos_t = math.sin(turn), math.cos(turn)
+        sine = columns[column, _SIN_LONGITUDE] * cos_t - columns[column, _COS_LONGITUDE] * sin_t
+        cosine = columns[column, _COS_LONGITUDE] * cos_t + columns[column, _SIN_LONGITUDE] * sin_t
+        _set_patch(panorama[row, column], band, sine, cosine, math.sin(half_width) / half_width, node)
 
 
 @formula
-def _turn(node, axes):
-    """From a face's own axes to the world's. Each face axis is one world axis, up to its sign."""
-    for first in (MEAN, LOPSIDED, COLOUR_SHIFT, COLOUR_SHIFT + 3, COLOUR_SHIFT + 6):
-        u, v, w = node[first], node[first + 1], node[first + 2]
-        for x in range(3):
-            node[first + x] = axes[0, x] * u + axes[1, x] * v + axes[2, x] * w
-    xx, yy, zz = node[COVARIANCE], node[COVARIANCE + 1], node[COVARIANCE + 2]
-    xy, xz, yz = node[COVARIANCE + 3], node[COVARIANCE + 4], node[COVARIANCE + 5]
-    for x in range(3):
-        a, b, c = axes[0, x], axes[1, x], axes[2, x]
-        node[COVARIANCE + x] = a * a * xx + b * b * yy + c * c * zz
-        # The product of two world axes is plus or minus that of two of the face's.
-        y, z = (x + 1) % 3, (x + 2) % 3
-        node[COVARIANCE + 2 + y + z] = (
-            (axes[0, y] * axes[1, z] + axes[1, y] * axes[0, z]) * xy
-            + (axes[0, y] * axes[2, z] + axes[2, y] * axes[0, z]) * xz
-            + (axes[1, y] * axes[2, z] + axes[2, y] * axes[1, z]) * yz
-        )
+def _set_patch(radiance, band, sine, cosine, mean, node):
+    """The record of one patch of constant radiance at a longitude; `mean` is how much its width shortens
+    the mean sine and cosine of longitude."""
+    mx, my, mz = band[_RHO] * mean * sine, band[_Y], band[_RHO] * mean * cosine
+    node[MEAN], node[MEAN + 1], node[MEAN + 2] = mx, my, mz
+    for c in range(3):
+        node[FLUX + c] = radiance[c] * band[_SOLID_ANGLE]
+    up, along = band[_VAR_LATITUDE], band[_VAR_LONGITUDE]
+    ux, uy, uz = -band[_COS] * sine, band[_SIN], -band[_COS] * cosine  # towards the upper pole
+    spread = up + along
+    bent = 0.1 * spread * spread  # along the radius: (mean |d|^4 - (mean |d|^2)^2)/4
+    node[COVARIANCE] = up * ux * ux + along * cosine * cosine + bent * mx * mx
+    node[COVARIANCE + 1] = up * uy * uy + bent * my * my
+    node[COVARIANCE + 2] = up * uz * uz + along * sine * sine + bent * mz * mz
+    node[COVARIANCE + 3] = up * ux * uy + bent * mx * my
+    node[COVARIANCE + 4] = up * ux * uz - along * sine * cosine + bent * mx * mz
+    node[COVARIANCE + 5] = up * uy * uz + bent * my * mz
+    node[SPREAD] = spread
+    node[RADIUS] = band[_EXTENT]
+    node[FOURTH] = 1.8 * (up * up + along * along) + 2.0 * up * along  # of an even rectangle
+    _sum_up(node)
+
+
+@formula
+def _add_pixels(tree, row0, row1, column0, column1, node):
+    """Moments of a block of pixels: summed about the block's first pixel, then moved to their mean."""
+    panorama, rows, columns, weights = tree[0], tree[1], tree[2], tree[3]
+    rho, ry = rows[row0, _RHO], rows[row0, _Y]
+    rx, rz = rho * columns[column0, _MEAN_SIN], rho * columns[column0, _MEAN_COS]
+    total, s2, s4 = 0.0, 0.0, 0.0
+    x1, y1, z1, tx, ty, tz = 0.0, 0.0, 0.0, 0.0, 0.0, 0.0
+    xx, yy, zz, xy, xz, yz = 0.0, 0.0, 0.0, 0.0, 0.0, 0.0
+    red, red_x, red_y, red_z = 0.0, 0.0, 0.0, 0.0
+    green, green_x, green_y, green_z = 0.0, 0.0, 0.0, 0.0
+    blue, blue_x, blue_y, blue_z = 0.0, 0.0, 0.0, 0.0
+    for j in range(row0, row1):
+        area, rho, y = rows[j, _SOLID_ANGLE], rows[j, _RHO], rows[j, _Y] - ry
+        up, along = rows[j, _VAR_LATITUDE], rows[j, _VAR_LONGITUDE]
+        own, cos_j, sin_j = up + along, rows[j, _COS], rows[j, _SIN]
+        for i in range(column0, column1):
+            x, z = rho * columns[i, _MEAN_SIN] - rx, rho * columns[i, _MEAN_COS] - rz
+            sine, cosine = columns[i, _SIN_LONGITUDE], columns[i, _COS_LONGITUDE]
+            f, g, h = panorama[j, i, 0] * area, panorama[j, i, 1] * area, panorama[j, i, 2] * area
+            w = weights[0] * f + weights[1] * g + weights[2] * h
+            square = x * x + y * y + z * z
+            ux, uz = -cos_j * sine, -cos_j * cosine
+            du, de = ux * x + sin_j * y + uz * z, cosine * x - sine * z
+            ax, ay = up * du * ux + along * de * cosine, up * du * sin_j
+            az = up * du * uz - along * de * sine
+            total += w
+            x1, y1, z1 = x1 + w * x, y1 + w * y, z1 + w * z
+            s2 += w * (square + own)
+            s4 += w * (
+                square * (square + 2.0 * own) + 4.0 * (up * du * du + along * de * de)
+                + 1.8 * own * own - 1.6 * up * along
+            )  # fmt: skip
+            tx += w * ((square + own) * x + 2.0 * ax)
+            ty += w * ((square + own) * y + 2.0 * ay)
+            tz += w * ((square + own) * z + 2.0 * az)
+            xx += w * (x * x + up * ux * ux + along * cosine * cosine)
+            yy += w * (y * y + up * sin_j * sin_j)
+            zz += w * (z * z + up * uz * uz + along * sine * sine)
+            xy += w * (x * y + up * ux * sin_j)
+            xz += w * (x * z + up * ux * uz - along * sine * cosine)
+            yz += w * (y * z + up * sin_j * uz)
+            red, red_x, red_y, red_z = red + f, red_x + f * x, red_y + f * y, red_z + f * z
+            green, green_x, green_y, green_z = green + g, green_x + g * x, green_y + g * y, green_z + g * z
+            blue, blue_x, blue_y, blue_z = blue + h, blue_x + h * x, blue_y + h * y, blue_z + h * z
+    if total <= 0.0:
+        return
+    x1, y1, z1, s2, s4 = x1 / total, y1 / total, z1 / total, s2 / total, s4 / total
+    tx, ty, tz = tx / total, ty / total, tz / total
+    xx, yy, zz, xy, xz, yz = xx / total, yy / total, zz / total, xy / total, xz / total, yz / total
+    mx, my, mz = xx * x1 + xy * y1 + xz * z1, xy * x1 + yy * y1 + yz * z1, xz * x1 + yz * y1 + zz * z1
+    m2 = x1 * x1 + y1 * y1 + z1 * z1
+    node[MEAN], node[MEAN + 1], node[MEAN + 2] = rx + x1, ry + y1, rz + z1
+    node[SPREAD] = s2 - m2
+    node[LOPSIDED] = tx - s2 * x1 - 2.0 * mx + 2.0 * m2 * x1
+    node[LOPSIDED + 1] = ty - s2 * y1 - 2.0 * my + 2.0 * m2 * y1
+    node[LOPSIDED + 2] = tz - s2 * z1 - 2.0 * mz + 2.0 * m2 * z1
+    node[FOURTH] = max(
+        (s2 - m2) * (s2 - m2),
+        s4 - 4.0 * (tx * x1 + ty * y1 + tz * z1) + 4.0 * (x1 * mx + y1 * my + z1 * mz)
+        + 2.0 * s2 * m2 - 3.0 * m2 * m2,
+    )  # fmt: skip
+    node[COVARIANCE], node[COVARIANCE + 1], node[COVARIANCE + 2] = xx - x1 * x1, yy - y1 * y1, zz - z1 * z1
+    node[COVARIANCE + 3], node[COVARIANCE + 4] = xy - x1 * y1, xz - x1 * z1
+    node[COVARIANCE + 5] = yz - y1 * z1
+    if red > 0.0:
+        _set_channel(node, 0, red, red_x / red - x1, red_y / red - y1, red_z / red - z1)
+    if green > 0.0:
+        _set_channel(node, 1, green, green_x / green - x1, green_y / green - y1, green_z / green - z1)
+    if blue > 0.0:
+        _set_channel(node, 2, blue, blue_x / blue - x1, blue_y / blue - y1, blue_z / blue - z1)
+    node[RADIUS] = _reach(panorama, rows, columns, row0, row1, column0, column1, rx + x1, ry + y1, rz + z1)
+    _sum_up(node)
+
+
+@formula
+def _reach(panorama, rows, columns, row0, row1, column0, column1, mx, my, mz):
+    """The largest distance of any lit pixel's edge from a direction."""
+    largest = 0.0
+    for j in range(row0, row1):
+        rho, y = rows[j, _RHO], rows[j, _Y] - my
+        for i in range(column0, column1):
+            if panorama[j, i, 0] + panorama[j, i, 1] + panorama[j, i, 2] > 0.0:
+                x, z = rho * columns[i, _MEAN_SIN] - mx, rho * columns[i, _MEAN_COS] - mz
+                largest = max(largest, math.sqrt(x * x + y * y + z * z) + rows[j, _EXTENT])
+    return largest

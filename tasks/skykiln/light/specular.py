@@ -7,7 +7,7 @@ with a node's flux F (`pyramid`), the lobe's kernel K and its integral N (`ggx`)
 
 Groups of tiles, and then each tile of output texels, walk the pyramid once and share lists of nodes
 (`walk`). How exact a node must be follows from the smallest result expected in the tile: far from the
-lobe, where the kernel is small, whole faces will do; a sun is followed down to its texel.
+lobe, where the kernel is small, large parts of the sky will do; a sun is followed down to its pixels.
 
 Conventions: `directions`. Source: hierarchical summation after Barnes and Hut 1986.
 """
@@ -34,11 +34,12 @@ from skykiln.light.walk import (
     lower_bounds,
     pop_batch,
     push_quarters,
+    push_roots,
 )
 
 _BLOCK = 256  # entries of a list that are summed at a time: they fit the nearest cache
 _DEFERRED = 8192  # nodes that a group may leave to its tiles
-_ERRORS_PER_TEXEL = 3.0  # how many of the largest errors add up, as calibrated by the error tests
+_ERRORS_PER_TEXEL = 2.0  # how many of the largest errors add up, as calibrated by the error tests
 _ROUGH = 0.2  # relative error of the first look at a group
 _DARK = 1e-3  # errors count against at least this share of the mean radiance
 
@@ -48,7 +49,7 @@ def filter_level(pyramid, face_size, alpha, tolerance):
 
     Parameters
     ----------
-    pyramid : Pyramid of the source faces.
+    pyramid : Pyramid of the source panorama.
     face_size : texels along an edge of the result, a power of two.
     alpha : GGX alpha, 0 < alpha <= 1.
     tolerance : largest relative error per channel, where results below 1e-3 of the mean radiance of the
@@ -65,14 +66,14 @@ def filter_level(pyramid, face_size, alpha, tolerance):
     tile = _tile_edge(face_size, alpha)
     group = _group_edge(face_size, tile, alpha)
     sums = _sum_groups(
-        pyramid.faces, pyramid.nodes, pyramid.offsets, FACE_AXES, face_size, tile, group,
-        float(alpha), tolerance / _ERRORS_PER_TEXEL, _DARK * brightest * norm,
+        pyramid.tree, FACE_AXES, face_size, tile, group, float(alpha),
+        tolerance / _ERRORS_PER_TEXEL, _DARK * brightest * norm,
     )  # fmt: skip
     return sums * np.float32(1.0 / norm)
 
 
 def _tile_edge(face_size, alpha):
-    """A tile about as wide as the lobe, at most 8 texels and a quarter of a radian."""
+    """A tile about as wide as the lobe, at most 8 texels and 0.3 rad; 1.6 / size is about a texel's angle."""
     widest = min(3.0 * alpha, 0.3)
     edge = 1
     while edge < 8 and 2 * edge <= face_size and 2 * edge * 1.6 / face_size < widest:
@@ -89,7 +90,7 @@ def _group_edge(face_size, tile, alpha):
 
 
 @parallel
-def _sum_groups(faces, nodes, offsets, face_axes, size, tile, group, alpha, part, floor):
+def _sum_groups(tree, face_axes, size, tile, group, alpha, part, floor):
     across = size // group
     result = np.empty((6, size, size, 3), np.float32)
     for g in numba.prange(6 * across * across):
@@ -98,12 +99,12 @@ def _sum_groups(faces, nodes, offsets, face_axes, size, tile, group, alpha, part
         i0 = np.int64(g) % across * group
         texels = _texels_by_tiles(face_axes[face], size, tile, group, j0, i0)
         target = result[face, j0 : j0 + group, i0 : i0 + group]
-        _sum_group(faces, nodes, offsets, face_axes, texels, tile, alpha, part, floor, target)
+        _sum_group(tree, texels, tile, alpha, part, floor, target)
     return result
 
 
 @formula
-def _sum_group(faces, nodes, offsets, face_axes, texels, tile, alpha, part, floor, target):
+def _sum_group(tree, texels, tile, alpha, part, floor, target):
     """All texels of a group: one walk for what its tiles share, then one per tile for the rest."""
     b, a2 = 1.0 - alpha * alpha, 2.0 * alpha * alpha
     tiles, area = target.shape[0] // tile, tile * tile
@@ -112,27 +113,25 @@ def _sum_group(faces, nodes, offsets, face_axes, texels, tile, alpha, part, floo
     centre = np.empty(3)
     radius = _bounds(texels, centre)
     per_part = np.empty((count + 1, 3))
-    _tile_limits(faces, nodes, offsets, face_axes, texels, tile, centre, radius, b, a2, per_part)
+    _tile_limits(tree, texels, tile, centre, radius, b, a2, per_part)
     for c in range(3):
         for t in range(count):
             per_part[t, c] = 1.0 / (part * max(per_part[t, c], floor))
         per_part[count, c] = per_part[:count, c].max()
     levels, deferred = np.empty(_DEFERRED, np.int32), np.empty(_DEFERRED, np.int64)
     none_level, none = np.empty(0, np.int32), np.empty(0, np.int64)
-    for face in range(6):
-        levels[face] = offsets.shape[0] - 2
-        deferred[face] = face
-    roots_level, roots = levels[:6].copy(), deferred[:6].copy()
+    roots_level, roots = np.empty(2, np.int32), np.empty(2, np.int64)
+    push_roots(tree, roots_level, roots)
     space = _workspace()
     left = _sum_nodes(
-        faces, nodes, offsets, face_axes, texels, centre, radius, b, a2, per_part[count],
+        tree, texels, centre, radius, b, a2, per_part[count],
         roots_level, roots, levels, deferred, space, sums,
     )  # fmt: skip
     for t in range(count):
         own, own_sums = texels[t * area : t * area + area], sums[t * area : t * area + area]
         radius = _bounds(own, centre)
         _sum_nodes(
-            faces, nodes, offsets, face_axes, own, centre, radius, b, a2, per_part[t],
+            tree, own, centre, radius, b, a2, per_part[t],
             levels[:left], deferred[:left], none_level, none, space, own_sums,
         )  # fmt: skip
         for k in range(area):
@@ -173,7 +172,7 @@ def _bounds(texels, centre):
 
 
 @formula
-def _tile_limits(faces, nodes, offsets, face_axes, texels, tile, centre, radius, b, a2, limits):
+def _tile_limits(tree, texels, tile, centre, radius, b, a2, limits):
     """The smallest sums expected in each tile, from its corners and its middle, into limits (tiles, 3)."""
     area, last = tile * tile, tile - 1
     count = texels.shape[0] // area
@@ -183,7 +182,7 @@ def _tile_limits(faces, nodes, offsets, face_axes, texels, tile, centre, radius,
         for x in range(3):
             probes[x, p] = texels[p // 5 * area + corners[p % 5], x]
     sums = np.zeros((3, 5 * count), np.float32)
-    lower_bounds(faces, nodes, offsets, face_axes, probes, centre, radius, b, a2, _ROUGH, sums)
+    lower_bounds(tree, probes, centre, radius, b, a2, _ROUGH, sums)
     for t in range(count):
         for c in range(3):
             limits[t, c] = 0.7 * sums[c, 5 * t : 5 * t + 5].min()
@@ -202,7 +201,7 @@ def _workspace():
 
 
 @formula
-def _sum_nodes(faces, nodes, offsets, face_axes, texels, centre, radius, b, a2, per_part,
+def _sum_nodes(tree, texels, centre, radius, b, a2, per_part,
                seed_levels, seeds, deferred_levels, deferred, space, sums):  # fmt: skip
     """Walks down from the seeds and sums what is taken into sums (texels, 3).
 
@@ -217,12 +216,12 @@ def _sum_nodes(faces, nodes, offsets, face_axes, texels, centre, radius, b, a2, 
             stack_level[top], stack_node[top] = seed_levels[used], seeds[used]
             top, used = top + 1, used + 1
         level, count, top = pop_batch(stack_level, stack_node, top, batch)
-        records = fetch(faces, nodes, offsets, face_axes, level, batch, count, scratch, rows)
+        records = fetch(tree, level, batch, count, scratch, rows)
         judge(records, rows, count, centre, radius, b, a2, per_part, verdicts)
         for e in range(count):
             verdict, node = verdicts[e] & 3, records[rows[e]]
             if verdict == OPEN:
-                if left < deferred.shape[0] and (level <= 0 or node[RADIUS] < 0.7 * radius):
+                if left < deferred.shape[0] and (level <= 0 or node[RADIUS] < 1.2 * radius):
                     deferred_levels[left], deferred[left] = level, batch[e]
                     left += 1
                 else:

@@ -22,6 +22,7 @@ from skykiln.light.pyramid import (
     RADIUS,
     RECORD,
     SHIFT,
+    SLIM,
     SPREAD,
     SPREAD_GAP,
     THIRD,
@@ -52,6 +53,14 @@ def pop_batch(stack_level, stack_node, top, batch):
 
 
 @formula
+def push_roots(tree, stack_level, stack_node):
+    """The two halves of the sphere onto an empty stack; returns its top."""
+    for half in range(2):
+        stack_level[half], stack_node[half] = tree[5].shape[0] - 2, half
+    return 2
+
+
+@formula
 def push_quarters(stack_level, stack_node, top, level, node):
     """Adds the four quarters of a node; returns the new top."""
     for k in range(4):
@@ -61,15 +70,16 @@ def push_quarters(stack_level, stack_node, top, level, node):
 
 
 @formula
-def fetch(faces, nodes, offsets, face_axes, level, batch, count, scratch, rows):
+def fetch(tree, level, batch, count, scratch, rows):
     """The array that holds the records of a batch, and in `rows` where: among the stored ones, or, for
-    texels and their parts, made in `scratch`."""
+    smaller cells, made in `scratch`."""
+    nodes, offsets = tree[4], tree[5]
     if level > 0:
         for e in range(count):
             rows[e] = offsets[level] + batch[e]
         return nodes
     for e in range(count):
-        cell_moments(faces, face_axes, level, batch[e], scratch[e])
+        cell_moments(tree, level, batch[e], scratch[e])
         rows[e] = e
     return scratch
 
@@ -95,7 +105,7 @@ def judge(records, rows, count, centre, radius, b, a2, per_part, verdicts):
         inverse = one / (half_b * near * near + a2)
         r2 = half_b * inverse
         r = math.sqrt(r2)
-        strength *= inverse * inverse
+        strength *= inverse * inverse * records[n, SLIM]
         cosine = min(one, max(zero, height + radius))
         across = height < reach
         remainder = _left_out(records[n, THIRD], records[n, FOURTH], records[n, SPREAD], cosine, r)
@@ -113,12 +123,12 @@ def judge(records, rows, count, centre, radius, b, a2, per_part, verdicts):
 def _left_out(third, fourth, spread, cosine, r):
     """Third moment, a share of the fourth (uneven between directions) and the sixth, as a part of the
     flux and of 1/(B q + 2 a^2)^2; r = 1/s."""
-    fourth *= (_f(6.0) + _f(40.0) * spread * r * r) * r
+    fourth *= (_f(4.0) + _f(60.0) * spread * r * r) * r
     return (cosine * (_f(20.0) * third + fourth) * r + _f(10.0) * third + _f(0.6) * fourth) * r * r
 
 
 @formula
-def lower_bounds(faces, nodes, offsets, face_axes, probes, centre, radius, b, a2, rough, sums):
+def lower_bounds(tree, probes, centre, radius, b, a2, rough, sums):
     """A rough lower estimate, per channel, of the sums at some directions of a group.
 
     probes (3, p) float32; sums (3, p) float32, zero on entry. Nodes across the horizon are left out.
@@ -128,13 +138,10 @@ def lower_bounds(faces, nodes, offsets, face_axes, probes, centre, radius, b, a2
     stack_level, stack_node = np.empty(STACK, np.int32), np.empty(STACK, np.int64)
     batch, rows = np.empty(BATCH, np.int64), np.empty(BATCH, np.int64)
     scratch = np.empty((BATCH, RECORD), np.float32)
-    for face in range(6):
-        stack_level[face] = offsets.shape[0] - 2
-        stack_node[face] = face
-    top = 6
+    top = push_roots(tree, stack_level, stack_node)
     while top > 0:
         level, count, top = pop_batch(stack_level, stack_node, top, batch)
-        records = fetch(faces, nodes, offsets, face_axes, level, batch, count, scratch, rows)
+        records = fetch(tree, level, batch, count, scratch, rows)
         for e in range(count):
             node = records[rows[e]]
             height = centre[0] * node[MEAN] + centre[1] * node[MEAN + 1] + centre[2] * node[MEAN + 2]

@@ -25,8 +25,13 @@ class ExtractFaces(ProbeStage):
         from ..light.faces import extract_faces
 
         panorama = inputs["pixels"].array()
-        size = self.probe.face_size or auto_face_size(panorama.shape[1])
+        size = face_size_of(self.probe, panorama)
         return {"faces": extract_faces(panorama, size, math.radians(self.probe.yaw_deg))}
+
+
+def face_size_of(probe, panorama) -> int:
+    """The face size that a probe's recipe asks for, for this panorama."""
+    return probe.face_size or auto_face_size(panorama.shape[1])
 
 
 def auto_face_size(panorama_width: int) -> int:

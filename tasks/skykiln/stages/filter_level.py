@@ -3,15 +3,19 @@
 import luigi
 
 from ..errors import FileError
-from .extract_faces import ExtractFaces
+from .decode_source import DecodeSource
+from .extract_faces import face_size_of
 from .probe_stage import ProbeStage
 from .pyramids import pyramid_of
 
 
 class FilterLevel(ProbeStage):
-    """(6, n >> level, n >> level, 3) float32, the faces filtered by the GGX lobe of the level's roughness."""
+    """(6, n >> level, n >> level, 3) float32, the sky filtered by the GGX lobe of the level's roughness.
 
-    version = 1
+    From the panorama, not the faces: what it resolves more finely than a texel counts too.
+    """
+
+    version = 2
     level = luigi.IntParameter()
 
     @property
@@ -19,21 +23,28 @@ class FilterLevel(ProbeStage):
         return f"specular level {self.level}"
 
     def requires(self):
-        return {"faces": self.of_same(ExtractFaces)}
+        return {"pixels": self.of_same(DecodeSource)}
 
     def files(self):
         return {"level": self.work_file(f"level_{self.level}.npy")}
 
     def settings(self):
-        return {"roughness": self.probe.roughness[self.level], "tolerance": self.probe.tolerance}
+        probe = self.probe
+        return {
+            "face_size": probe.face_size or "auto",
+            "roughness": probe.roughness[self.level],
+            "tolerance": probe.tolerance,
+            "yaw_deg": probe.yaw_deg,
+        }
 
     def make(self, inputs):
         from ..light.directions import alpha_from_roughness
         from ..light.specular import filter_level
 
-        size = self._face_size(inputs["faces"].array().shape[1])
-        alpha = alpha_from_roughness(self.probe.roughness[self.level])
-        return {"level": filter_level(pyramid_of(inputs["faces"]), size, alpha, self.probe.tolerance)}
+        probe, pixels = self.probe, inputs["pixels"]
+        size = self._face_size(face_size_of(probe, pixels.array()))
+        alpha = alpha_from_roughness(probe.roughness[self.level])
+        return {"level": filter_level(pyramid_of(pixels, probe.yaw_deg), size, alpha, probe.tolerance)}
 
     def _face_size(self, largest):
         if largest >> self.level == 0:

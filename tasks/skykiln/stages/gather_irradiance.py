@@ -3,7 +3,6 @@
 import math
 
 from .decode_source import DecodeSource
-from .extract_faces import ExtractFaces
 from .probe_stage import ProbeStage
 from .pyramids import pyramid_of
 
@@ -11,11 +10,11 @@ from .pyramids import pyramid_of
 class GatherIrradiance(ProbeStage):
     """`irradiance`: (6, m, m, 3) float32, irradiance E, not E/pi. `totals`: harmonics and totals as JSON."""
 
-    version = 1
+    version = 2
     title = "irradiance"
 
     def requires(self):
-        return {"pixels": self.of_same(DecodeSource), "faces": self.of_same(ExtractFaces)}
+        return {"pixels": self.of_same(DecodeSource)}
 
     def files(self):
         return {"irradiance": self.work_file("irradiance.npy"), "totals": self.work_file("irradiance.json")}
@@ -32,9 +31,10 @@ class GatherIrradiance(ProbeStage):
     def make(self, inputs):
         from ..light.irradiance import irradiance_cube
 
-        probe, pyramid = self.probe, pyramid_of(inputs["faces"])
+        probe, pixels = self.probe, inputs["pixels"]
+        pyramid = pyramid_of(pixels, probe.yaw_deg)
         cube = irradiance_cube(pyramid, probe.irradiance_face_size, probe.tolerance)
-        return {"irradiance": cube, "totals": _totals(inputs["pixels"].array(), math.radians(probe.yaw_deg))}
+        return {"irradiance": cube, "totals": _totals(pixels.array(), math.radians(probe.yaw_deg))}
 
 
 def _totals(panorama, yaw):

@@ -45,7 +45,8 @@ def _run_every_kernel():
     sky = read_radiance_hdr(TINY_PICTURE, "tiny.hdr", 128).pixels
     sky[0, 0] = np.nan  # so that there is something to repair
     sky, _ = repair.repair_pixels(sky)
-    nodes = pyramid.build_pyramid(faces.extract_faces(sky, 8))
+    faces.extract_faces(sky, 8)
+    nodes = pyramid.build_pyramid(sky)
     specular.filter_level(nodes, 4, alpha_from_roughness(0.5), 0.1)
     irradiance.irradiance_cube(nodes, 4, 0.1)
     harmonics.irradiance_coefficients(sky)
