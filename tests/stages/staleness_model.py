@@ -39,9 +39,9 @@ class StalenessModel:
         unreadable = [name for name in asked["sources"] if sources[name] is None]
         return ran + [f"panorama of {name}" for name in unreadable]
 
-    def prune(self, asked, sources):
+    def prune(self, asked):
         """Forget what no entry asks for."""
-        wanted = {label: outputs for label, _, _, _, outputs in _stages(asked, sources)}
+        wanted = {label: outputs for label, _, _, _, outputs in _stages(asked, {})}
         self.last = {label: ran for label, ran in self.last.items() if label in wanted}
         self.spoiled &= {file for outputs in wanted.values() for file in outputs}
 

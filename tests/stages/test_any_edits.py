@@ -22,6 +22,7 @@ from hypothesis.stateful import (
 from staleness_model import StalenessModel, files_of
 
 from skykiln.engine import lots, running
+from skykiln.engine.prune import leftovers, remove_leftovers
 from skykiln.engine.running import write_outputs
 from skykiln.stages import shares
 from skykiln.stages.decode_source import DecodeSource
@@ -158,6 +159,13 @@ class AnyEdits(RuleBasedStateMachine):
         if path.exists():
             path.unlink() if deleted else path.write_bytes(b"spoiled")
             self.model.spoiled.add(file)
+
+    @rule()
+    def prune(self):
+        """Forgets what no entry asks for now, and must change nothing else."""
+        found = leftovers(self.pipeline.build / "work", self.pipeline.snapshot().targets)
+        remove_leftovers(self.pipeline.build, found)
+        self.model.prune(self.asked)
 
     @rule()
     def bake_in_lots(self):
