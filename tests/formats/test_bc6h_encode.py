@@ -17,6 +17,7 @@ from skykiln.formats.bc6h_pack import pack_block
 from skykiln.formats.bc6h_refit import refit_blocks
 
 NO_PEAK = np.zeros(3, np.int64)
+ALL = np.ones(16, bool)
 
 
 def coded(colours):
@@ -122,7 +123,7 @@ def test_sky_without_sun_is_coded_as_the_bare_encoder_codes_it():
 
 def refit(blocks, halves, free, peak=NO_PEAK):
     aims = halves.view(np.float16).astype(float).sum(1)
-    return decode_blocks(refit_blocks(blocks, halves, aims, np.full(aims.shape, free), peak)), aims
+    return decode_blocks(refit_blocks(blocks, halves, aims, np.full(aims.shape, free), peak, ALL)), aims
 
 
 def test_refitting_puts_flux_right():
@@ -131,6 +132,16 @@ def test_refitting_puts_flux_right():
     spoiled = np.zeros((1, 2), np.uint64)  # black: mode 0, all zero
     refitted, aims = refit(spoiled, halves, 5e-4)
     np.testing.assert_allclose(refitted.view(np.float16).astype(float).sum(1), aims, rtol=2e-3)
+
+
+def test_refitting_cares_for_the_texels_that_are_seen_alone():
+    rng = np.random.default_rng(4)
+    halves = rng.integers(0, 30_000, (1, 16, 3)).astype(np.uint16)
+    seen = np.arange(16) < 2  # two colours: the ends
+    aims = halves.view(np.float16)[:, seen].astype(float).sum(1)
+    refitted = refit_blocks(np.zeros((1, 2), np.uint64), halves, aims, np.full((1, 3), 0.01), NO_PEAK, seen)
+    kept = decode_blocks(refitted).view(np.float16)[:, seen].astype(float)
+    np.testing.assert_allclose(kept, halves.view(np.float16)[:, seen].astype(float), rtol=0.03)
 
 
 def test_refitting_keeps_an_exact_block():
@@ -164,13 +175,22 @@ def test_block_of_colours_between_the_ends_of_its_subsets_is_found(partition):
     assert np.abs(decode_blocks(block)[0].astype(int) - target).max() < 1.5 * step + 30
 
 
-def test_small_levels_keep_their_energy_and_about_the_bare_encoders_error():
+def test_small_levels_have_about_the_bare_encoders_error():
     for seed, size in itertools.product(range(3), (4, 8, 16)):
         colours = sky(size, seed) ** 2
-        kept, bare = coded(colours), bare_encoder(colours)
-        energy = kept.sum((0, 1, 2), np.float64) / colours.sum((0, 1, 2), np.float64)
-        np.testing.assert_allclose(energy, 1, atol=3e-3)
-        assert log_error(kept, colours) <= 1.05 * log_error(bare, colours)
+        assert log_error(coded(colours), colours) <= 1.05 * log_error(bare_encoder(colours), colours)
+
+
+@pytest.mark.parametrize("size", [1, 2, 4, 8, 16])
+def test_small_levels_keep_their_energy_plain_and_by_solid_angle(size):
+    a = (2 * np.arange(size) + 1) / size - 1
+    solid_angles = ((1 + a[:, None] ** 2 + a**2) ** -1.5)[:, :, None]
+    for seed in range(4):
+        colours = sky(size, seed) ** 2
+        kept = coded(colours).astype(float)
+        for weights in (1, solid_angles):
+            energy = (weights * kept).sum((0, 1, 2)) / (weights * colours).sum((0, 1, 2))
+            np.testing.assert_allclose(energy, 1, atol=3e-3)
 
 
 def test_same_bytes_for_every_number_of_threads(monkeypatch):

@@ -320,7 +320,7 @@ def test_all_broken_rules_of_a_header_are_listed():
 
 @settings(max_examples=150, deadline=None)
 @given(offset=st.integers(0, 1023), value=st.integers(0, 255))
-def test_any_changed_byte_before_the_levels_is_refused_or_only_metadata(offset, value):
+def test_any_changed_byte_before_the_levels_is_refused_or_only_metadata_or_primaries(offset, value):
     texture = chain(size=2)
     data = write_ktx2(texture)
     start = struct.unpack_from("<Q", data, 80 + 24)[0]
@@ -330,7 +330,9 @@ def test_any_changed_byte_before_the_levels_is_refused_or_only_metadata(offset, 
     except FileError:
         return
     assert [level.shape for level in changed.levels] == [level.shape for level in texture.levels]
-    assert data[offset] == value or changed.metadata != read_ktx2(data, "sky").metadata
+    sound = read_ktx2(data, "sky")
+    told = (changed.metadata, changed.primaries) != (sound.metadata, sound.primaries)
+    assert told == (data[offset] != value)
 
 
 @settings(max_examples=60, deadline=None)

@@ -6,7 +6,7 @@
 with D the difference in half bits over 1,024, about the log2; F the flux that the channel is to have in
 the block, f the difference to it, and a the share of it that may be lost or won; e is the share by which
 a texel rises above the level's peak, or by which a texel of the peak's own falls below it. K is the
-caller's; Q was chosen by trial.
+caller's; Q was chosen by trial. Texels that only fill a block have targets of -1 and cost nothing.
 """
 
 import math
@@ -54,6 +54,8 @@ def channel_cost(mode, values, indices, target, c, facts, strength):
     low_1, high_1 = unquantise(values[6 + c], bits), unquantise(values[9 + c], bits)
     error, total = 0.0, 0.0
     for texel in range(16):
+        if target[texel, c] < 0:
+            continue
         second = subset_of(texel, two, values[PARTITION]) == 1
         low, high = (low_1, high_1) if second else (low_0, high_0)
         half = half_between(low, high, weight_of(two, indices[texel]))

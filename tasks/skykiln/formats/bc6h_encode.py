@@ -31,13 +31,15 @@ _ONE = 0x3C00  # half bits of the alpha that the encoder leaves unread
 def encode_bc6h(colours) -> np.ndarray:
     """(..., h, w, 3) float32 -> (blocks, 2) uint64, low half first, picture by picture, row by row."""
     encoder = _encoder()
+    weights = _texel_weights(colours.shape)
+    seen = weights[0] > 0
     with ThreadPoolExecutor(numba.get_num_threads()) as threads:
-        bands = threads.map(lambda band: _encode_band(encoder, band), _bands(colours))
+        bands = threads.map(lambda band: _encode_band(encoder, band, seen), _bands(colours))
         level = CodedLevel(*(np.concatenate(parts) for parts in zip(*bands, strict=True)))
-        _encode_worst_again(encoder, level, threads)
+        _encode_worst_again(encoder, level, seen, threads)
         if len(level.blocks) <= _FEW:
-            _encode_again(encoder, "slow", level, np.arange(len(level.blocks)), threads)
-        put_flux_right(level, _texel_weights(colours.shape), threads)
+            _encode_again(encoder, "slow", level, np.arange(len(level.blocks)), seen, threads)
+        put_flux_right(level, weights, threads)
     return level.blocks
 
 
@@ -50,12 +52,12 @@ def _bands(colours):
             yield picture[row : row + rows]
 
 
-def _encode_band(encoder, colours) -> CodedLevel:
+def _encode_band(encoder, colours, seen) -> CodedLevel:
     halves = _cut_into_blocks(nearest_half(colours).view(np.uint16))
-    return measure_blocks(halves, _call_encoder(encoder, "veryfast", halves))
+    return measure_blocks(halves, _call_encoder(encoder, "veryfast", halves), seen)
 
 
-def _encode_worst_again(encoder, level, threads):
+def _encode_worst_again(encoder, level, seen, threads):
     """Encode blocks by the basic profile, the worst first, until the others would gain little: they are
     taken to gain at most the share of their error that those before them gained."""
     order = np.argsort(-level.squared, kind="stable")
@@ -63,18 +65,18 @@ def _encode_worst_again(encoder, level, threads):
     done = 0
     for part in parts:
         before = level.squared[part].sum()
-        _encode_again(encoder, "basic", level, part, threads)
+        _encode_again(encoder, "basic", level, part, seen, threads)
         done += len(part)
         gained = before - level.squared[part].sum()
         if gained * level.squared[order[done:]].sum() <= _GAIN * before * level.squared.sum():
             break
 
 
-def _encode_again(encoder, profile, level, numbers, threads):
+def _encode_again(encoder, profile, level, numbers, seen, threads):
     """Encode some blocks of a level by another profile; each stays as the better of both."""
 
     def encode_some(some):
-        again = measure_blocks(level.halves[some], _call_encoder(encoder, profile, level.halves[some]))
+        again = measure_blocks(level.halves[some], _call_encoder(encoder, profile, level.halves[some]), seen)
         better = again.squared < level.squared[some]
         level.replace(some[better], again, better)
 
@@ -99,13 +101,12 @@ def _texel_numbers(size: int) -> np.ndarray:
 
 
 def _texel_weights(shape) -> np.ndarray:
-    """(16,) what the texels of a block weigh in a level's energy: by solid angle in a cube of one block a
-    face (the density of a face's solid angle, (1 + a^2 + b^2)^-3/2), alike in all others."""
+    """(2, 16) what the texels of the first block of a face weigh in a level's energy: in a plain sum, and
+    by solid angle (its density on a cube's face is (1 + a^2 + b^2)^-3/2). Filling texels weigh nothing."""
     *_, height, width, _ = shape
-    if shape[:-3] != (6,) or height != width or height > 4:
-        return np.ones(16)
-    squares = ((2 * _texel_numbers(height) + 1) / height - 1) ** 2
-    return ((1 + squares[:, None] + squares) ** -1.5).ravel()
+    rows, columns = ((2 * np.arange(4) + 1) / size - 1 for size in (height, width))
+    seen = (np.abs(rows) < 1)[:, None] & (np.abs(columns) < 1)
+    return np.stack([seen.ravel(), (seen * (1 + rows[:, None] ** 2 + columns**2) ** -1.5).ravel()])
 
 
 def _call_encoder(encoder, profile, halves) -> np.ndarray:

@@ -36,34 +36,36 @@ _NO_PEAK = np.zeros(3, np.int64)
 def put_flux_right(level, weights, threads):
     """Refit blocks of a `CodedLevel` in place, on the threads of an executor.
 
-    Parameters: weights (16,) : of a block's texels in the level's energy
+    Parameters: weights (2, 16) : of a block's texels in the level's energy, if it has one block a face
     """
     whole = _not_dim(level.flux.sum(0))
+    seen = weights[0] > 0
     peak = level.tallest[:, 0].max(0) if len(level.blocks) >= _LARGE else _NO_PEAK
     if len(level.blocks) <= _FEW:
         return _choose_together(level, weights, threads)
-    _refit_those_off(level, whole, peak, threads)
+    _refit_those_off(level, whole, peak, seen, threads)
     for share in _SHARES:
-        _balance(level, whole, peak, share)
+        _balance(level, whole, peak, seen, share)
 
 
 def _not_dim(flux):
     return np.maximum(flux, _DIM * flux.max(-1, keepdims=True)) + 1e-9
 
 
-def _refit(level, numbers, aims, free, peak):
+def _refit(level, numbers, aims, free, peak, seen):
     """Blocks of the level fitted again: a `CodedLevel` of these alone."""
-    blocks = refit_blocks(level.blocks[numbers], level.halves[numbers], aims, free, peak)
-    return measure_blocks(level.halves[numbers], blocks)
+    blocks = refit_blocks(level.blocks[numbers], level.halves[numbers], aims, free, peak, seen)
+    return measure_blocks(level.halves[numbers], blocks, seen)
 
 
-def _refit_those_off(level, whole, peak, threads):
+def _refit_those_off(level, whole, peak, seen, threads):
     allowed = np.maximum(_OFF * _not_dim(level.flux), _OFF_LEVEL * whole)
     off = np.flatnonzero((np.abs(level.error) > allowed).any(1) | _is_peak_off(level, peak))
 
     def refit_some(numbers):
         flux = level.flux[numbers]
-        level.replace(numbers, _refit(level, numbers, flux, allowed[numbers] / _not_dim(flux), peak))
+        free = allowed[numbers] / _not_dim(flux)
+        level.replace(numbers, _refit(level, numbers, flux, free, peak, seen))
 
     list(threads.map(refit_some, (off[k : k + 8] for k in range(0, len(off), 8))))
 
@@ -83,10 +85,10 @@ def _values(bits):
 def _choose_together(level, weights, threads):
     """Of every block the fit that makes the level's squared error and its energy's together least: pairs
     of blocks are changed for as long as that helps."""
-    every = np.arange(len(level.blocks))
+    every, seen = np.arange(len(level.blocks)), weights[0] > 0
 
     def fit(aim, free):
-        return _refit(level, every, level.flux * aim, np.full_like(level.flux, free), _NO_PEAK)
+        return _refit(level, every, level.flux * aim, np.full_like(level.flux, free), _NO_PEAK, seen)
 
     fits = [level, *threads.map(fit, *zip(*product(_AIMS, _FREE), strict=True))]
     squared = np.stack([fit.squared for fit in fits])
@@ -102,9 +104,8 @@ def _choose_together(level, weights, threads):
 
 
 def _energies(halves, weights):
-    """(blocks, 2, 3): sums over each block's texels, plain and weighted."""
-    values = _values(halves)
-    return np.stack([values.sum(1), np.einsum("t,btc->bc", weights, values)], 1)
+    """(blocks, 2, 3): sums over each block's texels by both weights."""
+    return np.einsum("wt,btc->bwc", weights, _values(halves))
 
 
 def _choose_pair(squared, errors, chosen, pair) -> bool:
@@ -125,7 +126,7 @@ def _choose_pair(squared, errors, chosen, pair) -> bool:
     return True
 
 
-def _balance(level, whole, peak, share):
+def _balance(level, whole, peak, seen, share):
     """Aim blocks, the most guilty first, at what the level lacks or has too much."""
     left = level.error.sum(0)
     for number in np.argsort(-(np.abs(level.error) / whole).max(1), kind="stable")[:_TRIES]:
@@ -135,7 +136,7 @@ def _balance(level, whole, peak, share):
         others = left - level.error[number]
         aim = flux - np.clip(others, -share * flux, share * flux)
         free = np.clip(_LEVEL / 2 * whole / np.maximum(flux, 1e-9), 5e-4, _OFF)
-        again = _refit(level, numbers, aim[None], free[None], peak)
+        again = _refit(level, numbers, aim[None], free[None], peak, seen)
         now = others + again.error[0]
         if (np.abs(now) / whole).max() < (np.abs(left) / whole).max():
             level.replace(numbers, again)

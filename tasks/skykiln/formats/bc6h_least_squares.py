@@ -23,7 +23,7 @@ _FINEST_OF_TWO_FIRST = np.array([2, 6, 10, 0, 14, 18, 22, 26, 1, 30])
 def least_squares(target, partition, by_radiance, spread, values, indices):
     """Begin a block, in place.
 
-    Parameters: target : (16, 3) half bits
+    Parameters: target : (16, 3) half bits, or -1 of texels that only fill the block
                 partition : 0 to 31, or -1 for one subset
                 by_radiance : whether bright texels weigh more; else all weigh alike
                 spread : at which share of the way from end to end the texels' first spread is taken to end
@@ -32,10 +32,12 @@ def least_squares(target, partition, by_radiance, spread, values, indices):
     two = partition >= 0
     weights, ends = np.empty(16), np.empty((4, 3))
     values[PARTITION] = max(partition, 0)
+    indices[:] = 0
     for subset in range(2 if two else 1):
         for texel in range(16):
-            weights[texel] = 1.0 if subset_of(texel, two, values[PARTITION]) == subset else 0.0
-            if by_radiance:
+            mine = subset_of(texel, two, values[PARTITION]) == subset and target[texel, 0] >= 0
+            weights[texel] = 1.0 if mine else 0.0
+            if mine and by_radiance:
                 brightest = half_value(target.max()), half_value(target[texel].max())
                 weights[texel] *= 1e-3 * brightest[0] + brightest[1]
         _fit_subset(target, weights, two, spread, indices, ends[2 * subset], ends[2 * subset + 1])
@@ -89,7 +91,7 @@ def _along_principal_axis(target, weights, spread, place):
     """Where each texel lies between the ends of the texels' spread, 0..`spread`, into `place` (16,)."""
     mean, axis, turned = np.zeros(3), np.ones(3), np.empty(3)
     for c in range(3):
-        mean[c] = (weights * target[:, c]).sum() / weights.sum()
+        mean[c] = (weights * target[:, c]).sum() / max(weights.sum(), 1e-30)
     for _ in range(8):  # power iteration on the weighted covariance
         turned[:] = 0.0
         for texel in range(16):
@@ -130,7 +132,7 @@ def _solve_endpoints(target, weights, two, indices, low, high):
             at[c], bt[c] = at[c] + w * a * v, bt[c] + w * b * v
     det = aa * bb - ab * ab
     for c in range(3):
-        mean = (at[c] + bt[c]) / (aa + 2 * ab + bb)
+        mean = (at[c] + bt[c]) / max(aa + 2 * ab + bb, 1e-30)
         singular = det <= 1e-9 * (aa + bb) ** 2
         low[c] = mean if singular else (bb * at[c] - ab * bt[c]) / det
         high[c] = mean if singular else (aa * bt[c] - ab * at[c]) / det

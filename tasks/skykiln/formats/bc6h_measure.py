@@ -25,14 +25,16 @@ class CodedLevel(NamedTuple):
             mine[numbers] = theirs[chosen]
 
 
-def measure_blocks(halves, blocks) -> CodedLevel:
-    """Decode blocks and compare them with the half bits that they stand for."""
+def measure_blocks(halves, blocks, seen) -> CodedLevel:
+    """Decode blocks and compare them with the half bits that they stand for, at the texels that are seen:
+    (16,) bool."""
     count = len(halves)
     level = CodedLevel(
         halves, blocks.copy(), np.empty(count), *(np.empty((count, 3)) for _ in range(2)),
         np.empty((count, 2, 3), np.int64),
     )  # fmt: skip
-    _measure(halves, decode_blocks(blocks), *level[2:])
+    texels = slice(None) if seen.all() else seen
+    _measure(halves[:, texels], decode_blocks(blocks)[:, texels], *level[2:])
     return level
 
 
@@ -43,7 +45,7 @@ def _measure(wanted, coded, squared, flux, error, tallest):
         for c in range(3):
             flux[i, c], error[i, c] = 0.0, 0.0
             tallest[i, 0, c], tallest[i, 1, c] = wanted[i, :, c].max(), coded[i, :, c].max()
-            for texel in range(16):
+            for texel in range(wanted.shape[1]):
                 a, b = np.int64(wanted[i, texel, c]), np.int64(coded[i, texel, c])
                 squared[i] += ((a - b) / 1024.0) ** 2
                 flux[i, c] += half_value(a)

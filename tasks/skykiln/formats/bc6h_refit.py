@@ -39,7 +39,7 @@ _STAY = _NEARBY // 2  # the one that moves neither
 _SPREADS = np.array([64, 60, 55]) / 64.0
 
 
-def refit_blocks(blocks, halves, aims, free, peak) -> np.ndarray:
+def refit_blocks(blocks, halves, aims, free, peak, seen) -> np.ndarray:
     """Fit blocks again.
 
     Parameters
@@ -49,13 +49,14 @@ def refit_blocks(blocks, halves, aims, free, peak) -> np.ndarray:
     aims : (count, 3) float64, per channel the sum of values that the block is to have.
     free : (count, 3) float64, the relative error of that sum that costs nothing.
     peak : (3,) int, half bits of the level's largest values, which are to come out near; 0 for none.
+    seen : (16,) bool, texels that count; the others fill the block.
 
     Returns
     -------
     (count, 2) uint64, each block the cheapest that was found.
     """
     refitted = np.empty_like(blocks)
-    _refit(blocks, halves.astype(np.int64), aims, free, peak, refitted)
+    _refit(blocks, np.where(seen[:, None], halves.astype(np.int64), -1), aims, free, peak, refitted)
     return refitted
 
 
@@ -193,7 +194,7 @@ def _price_ends(mode, values, indices, target, c, facts, subset, errors, totals)
             continue
         first, second = unquantise(first, bits), unquantise(second, bits)
         for texel in range(16):
-            if subset_of(texel, two, values[PARTITION]) == subset:
+            if subset_of(texel, two, values[PARTITION]) == subset and target[texel, c] >= 0:
                 half = half_between(first, second, weight_of(two, indices[texel]))
                 value = half_value(half)
                 errors[number] += texel_cost(half, value, target[texel, c], facts)
@@ -214,9 +215,11 @@ def _improve_indices(mode, values, indices, target, facts, strength):
                 halves[subset, index, c] = half_between(low, high, weight_of(two, index))
     total = np.zeros(3)
     for texel in range(16):
-        for c in range(3):
+        for c in range(3 if target[texel, 0] >= 0 else 0):
             total[c] += half_value(halves[subset_of(texel, two, values[PARTITION]), indices[texel], c])
     for texel in range(16):
+        if target[texel, 0] < 0:
+            continue
         palette = halves[subset_of(texel, two, values[PARTITION])]
         usable = count // 2 if is_anchor(texel, two, values[PARTITION]) else count
         _choose_index(texel, palette[:usable], indices, target[texel], total, facts, strength)
