@@ -92,6 +92,62 @@ def sample_texture(texture, directions, levels):
     return np.frombuffer(raw, np.float32).reshape(-1, 4)
 
 
+_FOR_EACH = """
+layout(local_size_x = 64) in;
+layout(std430, binding = 0) buffer A { vec4 a_of[]; };
+layout(std430, binding = 1) buffer B { vec4 b_of[]; };
+layout(std430, binding = 2) buffer Values { vec4 values[]; };
+void main() {
+    uint i = gl_GlobalInvocationID.x;
+    if (i >= a_of.length()) return;
+    vec4 a = a_of[i], b = b_of[i];
+    values[i] = vec4(%s, 0.0);
+}
+"""
+
+
+def run_for_each(functions, expressions, a, b, textures, uniforms):
+    """Values of GLSL expressions of `a` and `b`, for every row of these.
+
+    Parameters: functions : GLSL that the expressions call; expressions : each a vec3
+                a : (k, 3), b : (k, 4); textures : by unit; uniforms : by name
+    Returns:    (expressions, k, 3) float32
+    """
+    return np.stack([_values_of(functions, one, a, b, textures, uniforms) for one in expressions])
+
+
+def _values_of(functions, expression, a, b, textures, uniforms):
+    source = "#version 430\n" + functions + _FOR_EACH % expression
+    program = shaders.compileProgram(shaders.compileShader(source, GL.GL_COMPUTE_SHADER))
+    GL.glUseProgram(program)
+    for unit, texture in textures.items():
+        GL.glActiveTexture(GL.GL_TEXTURE0 + unit)
+        target = GL.GL_TEXTURE_2D if unit == 2 else GL.GL_TEXTURE_CUBE_MAP
+        GL.glBindTexture(target, texture)
+    for name, value in uniforms.items():
+        _set_uniform(GL.glGetUniformLocation(program, name), value)
+    rows = np.float32(np.c_[a, np.zeros(len(a))]), np.float32(b), np.zeros((len(a), 4), np.float32)
+    for binding, data in enumerate(rows):
+        GL.glBindBufferBase(GL.GL_SHADER_STORAGE_BUFFER, binding, GL.glGenBuffers(1))
+        GL.glBufferData(GL.GL_SHADER_STORAGE_BUFFER, data.nbytes, data, GL.GL_STATIC_READ)
+    GL.glDispatchCompute((len(a) + 63) // 64, 1, 1)
+    GL.glMemoryBarrier(GL.GL_BUFFER_UPDATE_BARRIER_BIT)
+    raw = GL.glGetBufferSubData(GL.GL_SHADER_STORAGE_BUFFER, 0, rows[2].nbytes)
+    GL.glActiveTexture(GL.GL_TEXTURE0)
+    return np.frombuffer(raw, np.float32).reshape(-1, 4)[:, :3]
+
+
+def _set_uniform(place, value):
+    """An int, a float, a vec3, or an array of floats or vec3; one that the program leaves out is at -1."""
+    array = np.atleast_1d(np.float32(value))
+    if isinstance(value, int):
+        GL.glUniform1i(place, value)
+    elif array.shape[-1] == 3:
+        GL.glUniform3fv(place, array.size // 3, array)
+    else:
+        GL.glUniform1fv(place, array.size, array)
+
+
 def read_level(texture, level, size):
     """What the driver decoded of a level: (6, size, size, 3) float32."""
     GL.glBindTexture(GL.GL_TEXTURE_CUBE_MAP, texture)
