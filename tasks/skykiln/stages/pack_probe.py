@@ -15,7 +15,7 @@ class PackProbe(ProbeStage):
     them by name.
     """
 
-    version = 2
+    version = 3
     pack = luigi.Parameter()
 
     @property
