@@ -16,6 +16,7 @@ from luigi.worker import Worker
 from ..errors import SkykilnError
 
 PENDING = 300
+COMES_BACK = 15.0  # seconds after which a failed task is not expected to be handed out again
 
 
 def waves_of(tasks) -> list:
@@ -74,10 +75,16 @@ def build_on(address: str, tasks, workers: int, verbose: bool):
 
     with _told_as_no_scheduler(address):
         build(tasks)
-        # What others run comes back if they die, and may then be taken up here.
-        while (waiting := _with_status(url, tasks, "PENDING")) or _with_status(url, tasks, "RUNNING"):
+        # What others run comes back if they die, and may then be taken up here: as failed at first.
+        quiet_since = time.monotonic()
+        while time.monotonic() - quiet_since < COMES_BACK:
+            waiting = _with_status(url, tasks, "PENDING")
             if waiting and workers:
                 build(waiting)
+            if waiting or _with_status(url, tasks, "RUNNING"):
+                quiet_since = time.monotonic()
+            elif not _with_status(url, tasks, "FAILED"):
+                break
             time.sleep(0.5)
 
 
