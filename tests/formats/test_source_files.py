@@ -9,6 +9,7 @@ import pytest
 from radiance_files import hdr
 
 from skykiln.errors import FileError
+from skykiln.formats.image import ReadOptions
 from skykiln.formats.source_files import read_source
 
 ONE_PIXEL = hdr(1, 1, [128, 128, 128, 129])
@@ -94,7 +95,7 @@ def test_file_too_large_for_the_limit_is_refused_before_it_is_read(tmp_path):
         file.write(ONE_PIXEL)
         file.truncate(1 << 33)  # sparse: takes no room
     with pytest.raises(FileError, match="larger than any picture"):
-        read_source(path, max_pixels=1000)
+        read_source(path, ReadOptions(max_pixels=1000))
 
 
 def test_read_error_is_named(tmp_path, monkeypatch):

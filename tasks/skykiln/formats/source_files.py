@@ -4,7 +4,7 @@ import stat
 from pathlib import Path
 
 from skykiln.errors import FileError
-from skykiln.formats.image import MAX_PIXELS, Image
+from skykiln.formats.image import AS_IT_IS, Image, ReadOptions
 from skykiln.formats.openexr import read_openexr
 from skykiln.formats.radiance_hdr import read_radiance_hdr
 
@@ -34,7 +34,7 @@ _REFUSED = {
 }
 
 
-def read_source(path: Path, max_pixels: int = MAX_PIXELS) -> Image:
+def read_source(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
     """Read a source picture of any known format.
 
     Raises: FileError naming the file, what is wrong with it and what to do.
@@ -43,7 +43,7 @@ def read_source(path: Path, max_pixels: int = MAX_PIXELS) -> Image:
     try:
         with path.open("rb") as file:
             start = file.read(16)
-        return _reader(path, start)(path, max_pixels)
+        return _reader(path, start)(path, options.max_pixels)
     except OSError as error:
         raise FileError(f"{path}: can't be read ({error.strerror}); check the file and its rights") from error
     except MemoryError as error:
