@@ -11,14 +11,8 @@ import numpy as np
 import pytest
 from scipy import integrate, stats
 
-from skykiln.light.sampling import (
-    around,
-    cosine_cosine,
-    cosine_density,
-    ggx_cosine,
-    ggx_density,
-    tangent_frame,
-)
+from skykiln.light.sampling import cosine_cosine, cosine_density, ggx_cosine, ggx_density
+from skykiln.light.tangent_frames import around, tangent_frame
 
 COUNT = 200_000
 

@@ -12,8 +12,8 @@ from skykiln.formats.source_files import read_source
 from skykiln.light.bright_regions import SUN_RADIUS, compact_regions, filled_from_rim, rim_of
 from skykiln.light.facing import irradiance_facing
 from skykiln.light.photometry import LUMINANCE_WEIGHTS, horizontal_illuminance
-from skykiln.light.sampling import around, tangent_frame
 from skykiln.light.separate_sun import restored_sun, separate_sun
+from skykiln.light.tangent_frames import around, tangent_frame
 
 SUNNY = {
     "clear_noon": NOON,

@@ -20,19 +20,25 @@ FILE = Path(__file__).with_name("golden.npz")
 
 
 def golden_pipeline(folder):
-    """A sky with all that stages have to deal with: a lamp, colours apart, spoiled pixels, a turn."""
-    pipeline = TinyPipeline(folder, probes=["ferry_noon"])
+    """A sky with all that stages have to deal with: a lamp, colours apart, spoiled pixels, a turn. And one
+    whose sun is taken out."""
+    pipeline = TinyPipeline(folder, probes=["ferry_noon", "low_sun"])
     pixels = sky_pixels(3)
     pixels[2, 5] = [4e5, 2e5, 1e5]
     pixels[5, 11] = [0, 0, 300]
     pixels[6, 2], pixels[0, 0, 1] = np.nan, -3
     write_sky(folder / "ferry_noon.exr", pixels=pixels)
     pipeline.settings["sources"]["ferry_noon"] |= {"yaw_deg": 30, "horizontal_lux": 5e4}
+    pixels = sky_pixels(4)
+    pixels[2, 6] = 3e4
+    write_sky(folder / "low_sun.exr", pixels=pixels)
+    pipeline.settings["recipes"]["apart"] = {**pipeline.recipe, "sun": {"action": "separate"}}
+    pipeline.settings["sources"]["low_sun"]["recipe"] = "apart"
     return pipeline
 
 
 def stage_outputs(pipeline):
-    """(array, version) by name of stage and output, of a baked pipeline."""
+    """(array, version) by name of stage and output, of a baked pipeline; of its first probe that has it."""
     snapshot = pipeline.snapshot()
     found = {}
     for target in snapshot.targets:
@@ -41,7 +47,7 @@ def stage_outputs(pipeline):
             for role, path in stage.files().items():
                 array = _array(Path(path))
                 if array is not None and stage.title != "published files":
-                    found[f"{stage.title}/{role}"] = (array, stage.version)
+                    found.setdefault(f"{stage.title}/{role}", (array, stage.version))
     return found
 
 

@@ -70,6 +70,11 @@ def _probe_stages(asked, name, entry, source):
     pixels, facts = f"{work}/panorama.npy", f"{work}/source.json"
     cube, totals = f"{work}/irradiance.npy", f"{work}/irradiance.json"
     yield f"panorama of {name}", "DecodeSource", entry["exposure_ev"], [source], [pixels, facts]
+    sun = []
+    if recipe["sun"]["action"] == "separate":
+        sky, sun = f"{work}/sky.npy", [f"{work}/sun.json"]
+        yield f"sky without its sun of {name}", "SeparateSun", yaw, [pixels], [sky, *sun]
+        pixels = sky
     yield f"faces of {name}", "ExtractFaces", (recipe["face_size"], yaw), [pixels], [f"{work}/faces.npy"]
     chain = [f"{work}/faces.npy"]
     for level, roughness in list(enumerate(levels))[1:]:
@@ -88,7 +93,7 @@ def _probe_stages(asked, name, entry, source):
         yield f"pack {names[0]} of {name}", "PackProbe", settings, [*chain, cube], packed[-3:]
     said = (entry["recipe"], repr(entry["extra"]), tuple(levels), yaw, repr(recipe["pack"]))
     judged = [f"{work}/record.json", f"{work}/judgement.json"]
-    yield f"judgement of {name}", "JudgeProbe", said, [facts, totals, *packed], judged
+    yield f"judgement of {name}", "JudgeProbe", said, [facts, *sun, totals, *packed], judged
     textures = [file for file in packed if file.endswith(".ktx2")]
     files = [file.replace(f"{work}/packed", f"probes/{name}") for file in textures]
     outputs = [*files, f"probes/{name}/probe.json"]

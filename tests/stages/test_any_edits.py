@@ -32,6 +32,7 @@ from skykiln.stages.gather_irradiance import GatherIrradiance
 from skykiln.stages.judge_probe import JudgeProbe
 from skykiln.stages.pack_probe import PackProbe
 from skykiln.stages.publish_probe import PublishProbe
+from skykiln.stages.separate_sun import SeparateSun
 from skykiln.stages.tabulate_brdf import TabulateBrdf
 from tiny_pipeline import TinyPipeline, published, write_sky
 
@@ -43,6 +44,7 @@ KINDS = [
     JudgeProbe,
     PackProbe,
     PublishProbe,
+    SeparateSun,
     TabulateBrdf,
 ]
 NAMES = ["ferry_noon", "quay_night", "stair up"]
@@ -62,7 +64,7 @@ class AnyEdits(RuleBasedStateMachine):
         self.patch = pytest.MonkeyPatch()
         self.pipeline = TinyPipeline(Path(self.scratch.name))
         self.asked = self.pipeline.settings
-        self.asked["recipes"]["tiny"]["pack"] = [PLAIN]
+        self.asked["recipes"]["tiny"] |= {"pack": [PLAIN], "sun": {"action": "keep"}}
         self.asked["recipes"]["other"] = copy.deepcopy(self.asked["recipes"]["tiny"])
         self.asked["sources"] = {}
         self.model = StalenessModel()
@@ -131,6 +133,10 @@ class AnyEdits(RuleBasedStateMachine):
     @rule(recipe=recipes, roughness=st.sampled_from([[0, 0.5, 1], [0, 0.4, 1], [0, 0.5]]))
     def edit_roughness(self, recipe, roughness):
         self.asked["recipes"][recipe]["specular"] |= {"roughness": roughness, "levels": len(roughness)}
+
+    @rule(recipe=recipes, action=st.sampled_from(["keep", "separate"]))
+    def edit_sun(self, recipe, action):
+        self.asked["recipes"][recipe]["sun"] = {"action": action}
 
     @rule(recipe=recipes, tolerance=st.sampled_from([0.05, 0.02]))
     def edit_tolerance(self, recipe, tolerance):

@@ -109,7 +109,11 @@ class Colour(Section):
 class Sun(Section):
     """What becomes of the sun."""
 
-    action: Literal["keep"] = Field("keep", description="keep: the sun stays in the sky.")
+    action: Literal["keep", "separate"] = Field(
+        "keep",
+        description="keep: the sun stays in the sky; separate: it becomes a directional light in "
+        "probe.json, and the sky is filled in where it stood.",
+    )
 
 
 class Specular(Section):

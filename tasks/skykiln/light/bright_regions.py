@@ -20,8 +20,9 @@ from typing import NamedTuple
 import numpy as np
 from numba import prange
 
-from skykiln.jit import formula, parallel, serial
+from skykiln.jit import parallel, serial
 from skykiln.light.directions import panorama_row_solid_angles
+from skykiln.light.panorama_rows import neighbour
 
 # Nominal solar radius over one astronomical unit (IAU 2015 resolution B3, IAU 2012 resolution B2).
 SUN_RADIUS = math.asin(6.957e8 / 1.495978707e11)
@@ -172,22 +173,13 @@ def _grow(brightness, angles, row, column, thresholds, limit, label, seen, membe
             wait -= 1
             waiting[at] = waiting[wait]
             for k in range(9):
-                r, c = _neighbour(j, i, k, height, width)
+                r, c = neighbour(j, i, k, height, width)
                 if seen[r, c] != label:
                     seen[r, c] = label
                     waiting[wait] = r * width + c
                     wait += 1
         areas[level], counts[level] = area, count
     return len(thresholds)
-
-
-@formula
-def _neighbour(row, column, k, height, width):
-    """Row and column of the k-th of the nine pixels around and at one, across seam and poles."""
-    r, c = row + k // 3 - 1, column + k % 3 - 1
-    if r < 0 or r >= height:
-        r, c = min(max(r, 0), height - 1), c + width // 2
-    return r, c % width
 
 
 @parallel

@@ -13,7 +13,7 @@ from numba import prange
 
 from skykiln.jit import parallel
 from skykiln.light.panorama_rows import latitude_edges
-from skykiln.light.sampling import around
+from skykiln.light.tangent_frames import around
 
 _PATCH_POINTS = 4096
 _GOLDEN_TURN = (math.sqrt(5) - 1) / 2

@@ -1,4 +1,4 @@
-"""Exact integrals along the rows of a panorama, which harmonics and photometry share.
+"""The grid of a panorama: exact integrals along its rows, and which pixels stand side by side.
 
 Over one pixel of width d centred at longitude l:  ∫ 1 = d,  ∫ cos k l = cos(k l) (2/k) sin(k d/2), and
 the sine likewise. What remains across rows are polynomials in y = sin(latitude), integrated by
@@ -8,7 +8,7 @@ whoever needs them between the edges that `latitude_edges` gives.
 import numpy as np
 from numba import prange
 
-from skykiln.jit import parallel
+from skykiln.jit import formula, parallel
 
 
 def longitude_integrals(panorama, yaw=0.0):
@@ -45,6 +45,15 @@ def latitude_edges(height):
     """Sine and cosine of latitude, and latitude itself, at the H + 1 edges between rows, top first."""
     latitude = np.pi / 2 - np.pi * np.arange(height + 1) / height
     return np.sin(latitude), np.cos(latitude), latitude
+
+
+@formula
+def neighbour(row, column, k, height, width):
+    """Row and column of the k-th of the nine pixels around and at one, across seam and poles."""
+    r, c = row + k // 3 - 1, column + k % 3 - 1
+    if r < 0 or r >= height:
+        r, c = min(max(r, 0), height - 1), c + width // 2
+    return r, c % width
 
 
 @parallel

@@ -15,6 +15,7 @@ import numpy as np
 from numba import prange
 
 from skykiln.jit import formula, parallel, serial
+from skykiln.light.panorama_rows import neighbour
 
 LARGEST_VALID = 0x7F7FFFFF  # bits of the largest finite float32; greater: infinite, NaN, sign set
 INFINITE = 0x7F800000
@@ -123,7 +124,7 @@ def _close_holes(pixels, faults, channel):
         for i in range(start, ring):
             row, column = queue[i] // width, queue[i] % width
             for k in range(9):
-                r, c = _neighbour(row, column, k, height, width)
+                r, c = neighbour(row, column, k, height, width)
                 if NAN <= faults[r, c, channel] <= NEGATIVE:
                     faults[r, c, channel] = WAITING
                     queue[end] = r * width + c
@@ -138,19 +139,8 @@ def _valid_neighbours(pixels, faults, row, column, channel):
     count = 0
     total = 0.0
     for k in range(9):
-        r, c = _neighbour(row, column, k, height, width)
+        r, c = neighbour(row, column, k, height, width)
         if faults[r, c, channel] == GOOD:
             count += 1
             total += np.float64(pixels[r, c, channel])
     return count, total
-
-
-@formula
-def _neighbour(row, column, k, height, width):
-    """Row and column of the k-th of the nine pixels around and at one, across seam and poles."""
-    r = row + k // 3 - 1
-    c = column + k % 3 - 1
-    if r < 0 or r >= height:
-        r = min(max(r, 0), height - 1)
-        c += width // 2
-    return r, c % width

@@ -10,8 +10,9 @@ from typing import NamedTuple
 import numpy as np
 
 from skykiln.light.directions import FACE_AXES, cube_texel_solid_angles
-from skykiln.light.sampling import around, ggx_cosine
+from skykiln.light.sampling import ggx_cosine
 from skykiln.light.source_tree import source_samples
+from skykiln.light.tangent_frames import around
 
 
 class Texels(NamedTuple):

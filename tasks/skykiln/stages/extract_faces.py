@@ -2,8 +2,8 @@
 
 import math
 
-from .decode_source import DecodeSource
 from .probe_stage import ProbeStage
+from .sky_panorama import sky_of
 
 
 class ExtractFaces(ProbeStage):
@@ -13,7 +13,7 @@ class ExtractFaces(ProbeStage):
     title = "faces"
 
     def requires(self):
-        return {"pixels": self.of_same(DecodeSource)}
+        return {"pixels": sky_of(self)}
 
     def files(self):
         return {"faces": self.work_file("faces.npy")}

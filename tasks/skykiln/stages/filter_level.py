@@ -3,10 +3,10 @@
 import luigi
 
 from ..errors import FileError
-from .decode_source import DecodeSource
 from .extract_faces import face_size_of
 from .probe_stage import ProbeStage
 from .pyramids import pyramid_of
+from .sky_panorama import sky_of
 
 
 class FilterLevel(ProbeStage):
@@ -23,7 +23,7 @@ class FilterLevel(ProbeStage):
         return f"specular level {self.level}"
 
     def requires(self):
-        return {"pixels": self.of_same(DecodeSource)}
+        return {"pixels": sky_of(self)}
 
     def files(self):
         return {"level": self.work_file(f"level_{self.level}.npy")}

@@ -2,9 +2,9 @@
 
 import math
 
-from .decode_source import DecodeSource
 from .probe_stage import ProbeStage
 from .pyramids import pyramid_of
+from .sky_panorama import sky_of
 
 
 class GatherIrradiance(ProbeStage):
@@ -14,7 +14,7 @@ class GatherIrradiance(ProbeStage):
     title = "irradiance"
 
     def requires(self):
-        return {"pixels": self.of_same(DecodeSource)}
+        return {"pixels": sky_of(self)}
 
     def files(self):
         return {"irradiance": self.work_file("irradiance.npy"), "totals": self.work_file("irradiance.json")}

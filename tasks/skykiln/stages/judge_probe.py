@@ -11,6 +11,8 @@ from .gather_irradiance import GatherIrradiance
 from .pack_probe import PackProbe, packed_names, units_of
 from .probe_record import probe_record
 from .probe_stage import ProbeStage
+from .separate_sun import SeparateSun
+from .sky_panorama import is_sun_apart
 
 
 class JudgeProbe(ProbeStage):
@@ -25,8 +27,10 @@ class JudgeProbe(ProbeStage):
 
     def requires(self):
         packs = [self.of_same(PackProbe, pack=name) for name in packed_names(self.probe)]
+        sun = {"sun": self.of_same(SeparateSun)} if is_sun_apart(self.probe) else {}
         return {
             "facts": self.of_same(DecodeSource),
+            **sun,
             "totals": self.of_same(GatherIrradiance),
             **{role: pack for pack in packs for role in pack.files()},
         }

@@ -40,17 +40,25 @@ def _run_every_kernel():
 
     from ..formats.radiance_hdr import read_radiance_hdr
     from ..light import brdf, faces, harmonics, irradiance, photometry, pyramid, repair, specular
+    from ..light.charts import PANORAMA
+    from ..light.colour import converted
     from ..light.directions import alpha_from_roughness
+    from ..light.resampling import footprint_means
+    from ..light.separate_sun import separate_sun
 
     sky = read_radiance_hdr(TINY_PICTURE, "tiny.hdr", 128).pixels
     sky[0, 0] = np.nan  # so that there is something to repair
     sky, _ = repair.repair_pixels(sky)
+    converted(sky, np.eye(3))
+    footprint_means(sky[None], PANORAMA, 8, 4)
     faces.extract_faces(sky, 8)
     nodes = pyramid.build_pyramid(sky)
     specular.filter_level(nodes, 4, alpha_from_roughness(0.5), 0.1)
     irradiance.irradiance_cube(nodes, 4, 0.1)
     harmonics.irradiance_coefficients(sky)
     photometry.horizontal_illuminance(sky)
+    sky[2, 5] = 60_000  # a sun
+    separate_sun(sky)
     brdf.brdf_table(4)
     faces_with_a_sun = np.ones((6, 8, 8, 3), np.float32)
     faces_with_a_sun[0, 1, 2] = 60_000  # a block that BC6H has to fit anew

@@ -31,7 +31,7 @@ def probe_record(settings, packed_names, inputs) -> dict:
             "files": listed["irradiance"],
             **{key: totals[key] for key in ("sh", "sh_smallest", "sh_window")},
         },
-        "sun": None,
+        "sun": inputs["sun"].json()["sun"] if "sun" in inputs else None,
         "energy": {
             **{key: totals[key] for key in ("mean_radiance", "level_irradiance", "horizontal_illuminance")},
             "lost_to_clamping": max(pack["lost_to_clamping"] for pack in packs.values()),
