@@ -11,6 +11,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from skykiln.errors import FileError
+from skykiln.formats.image import ReadOptions
 from skykiln.formats.openexr import read_openexr
 
 RNG = np.random.default_rng(5)
@@ -29,8 +30,8 @@ def write(path, channels=None, **header):
     return path
 
 
-def read(path, max_pixels=1 << 20):
-    return read_openexr(path, max_pixels)
+def read(path, max_pixels=1 << 20, **options):
+    return read_openexr(path, ReadOptions(max_pixels=max_pixels, **options))
 
 
 def assert_refused(path, words, **options):
@@ -105,59 +106,6 @@ def test_mixed_half_and_float_channels_are_read(tmp_path):
     image = read(write(tmp_path / "sky.exr", channels))
     np.testing.assert_array_equal(image.pixels[..., 0], np.float32(PIXELS[..., 0].astype("f2")))
     assert image.facts["pixel_type"] == "float"
-
-
-def plane(dtype="float32"):
-    return np.ones((24, 48), dtype)
-
-
-@pytest.mark.parametrize(
-    ("channels", "words"),
-    [
-        ({"Y": plane()}, "channels are Y"),
-        ({"R": plane(), "G": plane()}, "channels are G, R"),
-        ({f"sky.{c}": plane() for c in "RGB"}, "channels are sky.B, sky.G, sky.R"),
-        ({"RGB": PIXELS, "Z": plane()}, "channels are B, G, R, Z"),
-        ({c: plane("uint32") for c in "RGB"}, "whole numbers"),
-        ({f"c{i:03}": plane() for i in range(100)}, r"c007, \.\.\.;"),
-    ],
-)
-def test_other_channels_are_named_and_refused(tmp_path, channels, words):
-    assert_refused(write(tmp_path / "sky.exr", channels), words)
-
-
-def test_luminance_chroma_is_refused(tmp_path):
-    path = write(tmp_path / "sky.exr", {"Y": plane(), "RY": plane(), "BY": plane()})
-    assert_refused(path, "luminance-chroma")
-
-
-def test_subsampled_channels_are_refused(tmp_path):
-    path = write(tmp_path / "sky.exr")
-    # A channel list entry ("OpenEXR File Layout"): name, 0, type, pLinear, 3 reserved, x and y sampling.
-    entry, subsampled = (b"R\0" + struct.pack("<iIii", 2, 0, step, step) for step in (1, 2))
-    assert path.read_bytes().count(entry) == 1
-    path.write_bytes(path.read_bytes().replace(entry, subsampled))
-    assert_refused(path, "subsampled")
-
-
-@pytest.mark.parametrize(
-    ("header", "words"),
-    [
-        ({"envmap": OpenEXR.ENVMAP_CUBE}, "cube map"),
-        ({"chromaticities": ACESCG}, "0.7130 .* Rec. 709"),
-        ({"displayWindow": (np.array([0, 0], "i4"), np.array([99, 99], "i4"))}, "display window"),
-    ],
-)
-def test_other_layouts_are_named_and_refused(tmp_path, header, words):
-    assert_refused(write(tmp_path / "sky.exr", **header), words)
-
-
-def test_multi_part_file_is_refused(tmp_path):
-    path = tmp_path / "sky.exr"
-    header = {"compression": OpenEXR.ZIP_COMPRESSION, "type": OpenEXR.scanlineimage}
-    parts = [OpenEXR.Part(dict(header), {"RGB": PIXELS}, name) for name in ("left", "right")]
-    OpenEXR.File(parts).write(str(path))
-    assert_refused(path, "2 parts")
 
 
 def test_deep_image_is_refused(tmp_path):

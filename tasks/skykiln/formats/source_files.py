@@ -9,11 +9,13 @@ from skykiln.formats.openexr import read_openexr
 from skykiln.formats.radiance_hdr import read_radiance_hdr
 
 
-def _read_radiance(path: Path, max_pixels: int) -> Image:
+def _read_radiance(path: Path, options: ReadOptions) -> Image:
     # Run lengths can at most double a pixel's four bytes.
-    if path.stat().st_size > 8 * max_pixels + (1 << 20):
-        raise FileError(f"{path}: larger than any picture of {max_pixels} pixels; scale the picture down")
-    return read_radiance_hdr(path.read_bytes(), str(path), max_pixels)
+    if path.stat().st_size > 8 * options.max_pixels + (1 << 20):
+        raise FileError(
+            f"{path}: larger than any picture of {options.max_pixels} pixels; scale the picture down"
+        )
+    return read_radiance_hdr(path.read_bytes(), str(path), options.max_pixels)
 
 
 READERS = {
@@ -43,7 +45,7 @@ def read_source(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
     try:
         with path.open("rb") as file:
             start = file.read(16)
-        return _reader(path, start)(path, options.max_pixels)
+        return _reader(path, start)(path, options)
     except OSError as error:
         raise FileError(f"{path}: can't be read ({error.strerror}); check the file and its rights") from error
     except MemoryError as error:
