@@ -39,6 +39,7 @@ class DecodeSource(ProbeStage):
         path = Path(self.pinned.source_path)
         image = read_source(path)
         self._check_pin(path)
+        _check_plain(path, image)
         _check_layout(path, self.probe.layout, image)
         try:
             pixels, repairs = repair_pixels(image.pixels)
@@ -64,6 +65,17 @@ class DecodeSource(ProbeStage):
             digest = None
         if digest != self.pinned.pin:
             raise FileError(f"{path}: changed since the bake began; bake again")
+
+
+def _check_plain(path, image):
+    """Refuse what is read, but not yet converted or filled."""
+    import numpy as np
+
+    rec709 = np.array([(0.64, 0.33), (0.30, 0.60), (0.15, 0.06), (0.3127, 0.3290)])
+    if image.chromaticities and not np.allclose(image.chromaticities, rec709, atol=2e-3):
+        raise FileError(f"{path}: not in Rec. 709, by its chromaticities; convert it to linear Rec. 709")
+    if image.uncovered is not None or image.pixels.ndim != 3:
+        raise FileError(f"{path}: not a whole panorama; export one, uncropped")
 
 
 def _check_layout(path, layout, image):
