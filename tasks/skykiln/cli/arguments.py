@@ -66,3 +66,10 @@ def count(text):
     if number < 0:
         raise argparse.ArgumentTypeError(f"{number} is less than 0")
     return number
+
+
+def port(text):
+    number = count(text)
+    if number > 65535:
+        raise argparse.ArgumentTypeError(f"{number} is no port; the largest is 65535")
+    return number

@@ -1,0 +1,45 @@
+"""skykiln report"""
+
+import json
+
+from ..errors import ALL_WELL, FileError
+from .arguments import add_command, port
+
+
+def add_to(commands):
+    text = "say where the page of the last night lies, print it, serve it"
+    report = add_command(commands, "report", run, text)
+    shown = report.add_mutually_exclusive_group()
+    shown.add_argument(
+        "--text", action="store_true", help="print it, at most a screenful, for a mail or a chat"
+    )
+    shown.add_argument(
+        "--serve", nargs="?", type=port, const=8017, metavar="PORT", help="serve it on 127.0.0.1 (8017)"
+    )
+
+
+def run(options):
+    from ..config import load_pipeline
+    from ..stages.nights import night_file
+
+    pipeline = load_pipeline(options.file)
+    record = _read(night_file(pipeline))
+    if options.text:
+        from ..report.night_text import night_lines
+
+        print("\n".join(night_lines(record)))
+        return ALL_WELL
+    folder = pipeline.build_dir / "report"
+    if options.serve is not None:
+        from ..report.serving import serve
+
+        serve(folder, options.serve)
+    print(folder / "index.html")
+    return ALL_WELL
+
+
+def _read(path):
+    try:
+        return json.loads(path.read_bytes())
+    except (OSError, ValueError) as error:
+        raise FileError(f"{path}: no night is on record there; run skykiln bake first") from error

@@ -1,0 +1,109 @@
+"""What a night asks a person to look at, from the values of night.json: the worst first.
+
+The page and the text tell the same findings.
+"""
+
+from typing import NamedTuple
+
+
+class Finding(NamedTuple):
+    """One kind of trouble. `urgent`: something is not published, or wrong; else worth a look.
+
+    cases : pairs of a probe's name (empty: the night itself) and a sentence
+    """
+
+    title: str
+    advice: str
+    urgent: bool
+    cases: list
+
+
+def findings(record) -> list:
+    """The findings of a night, empty ones left out."""
+    probes = record["probes"]
+    found = [
+        Finding(
+            "Failed",
+            "Nothing new was published of these; what an earlier night published stays.",
+            True,
+            [(p["name"], _cause(p["failure"])) for p in probes if p["failure"]],
+        ),
+        Finding(
+            "Held by a gate",
+            "Look at the change; skykiln bake --accept NAME publishes it.",
+            True,
+            _broken(p for p in probes if p["state"] == "held"),
+        ),
+        Finding(
+            "Limits of the night",
+            "They hold no probe.",
+            True,
+            _broken([{"name": "", "gates": record["gates"]}]),
+        ),
+        Finding(
+            "Audit out of tolerance",
+            "The packed files differ from an unbiased estimate of the source by more than chance.",
+            True,
+            list(_cases(probes, _audit_failed)),
+        ),
+        Finding(
+            "Published although a gate is broken",
+            "Accepted as they are, until they change.",
+            False,
+            _broken(p for p in probes if p["accepted"]),
+        ),
+        Finding(
+            "Light lost",
+            "Values did not fit the coding even after storage_ev.",
+            False,
+            list(_cases(probes, _lost)),
+        ),
+        Finding(
+            "Pixels repaired",
+            "They were no light, and took their neighbours' values; export the source again.",
+            False,
+            list(_cases(probes, _repaired)),
+        ),
+        Finding(
+            "Harmonics below zero",
+            "Order 2 rings opposite a strong light; probe.json has a windowed set beside it.",
+            False,
+            list(_cases(probes, _negative)),
+        ),
+    ]
+    return [finding for finding in found if finding.cases]
+
+
+def _broken(probes):
+    return [(probe["name"], f"{gate['gate']}: {gate['why']}") for probe in probes for gate in probe["gates"]]
+
+
+def _cause(failure):
+    return f"{failure['file']}, {failure['stage']}: {failure['cause']}"
+
+
+def _cases(probes, sentence):
+    told = ((probe["name"], sentence(probe.get("light") or {})) for probe in probes)
+    return ((name, text) for name, text in told if text)
+
+
+def _audit_failed(light):
+    audit = light.get("audit")
+    if not audit or audit.get("passed", True):
+        return None
+    return "see its page"
+
+
+def _lost(light):
+    share = light.get("lost_to_clamping") or 0
+    return f"{100 * share:.2g} % of the flux" if share > 0 else None
+
+
+def _repaired(light):
+    count = light.get("repaired") or 0
+    return f"{count} pixel{'s' if count > 1 else ''}" if count else None
+
+
+def _negative(light):
+    smallest = light.get("sh_smallest") or 0
+    return f"down to {smallest:.4g}" if smallest < 0 else None
