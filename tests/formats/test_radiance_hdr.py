@@ -30,8 +30,10 @@ def test_result_is_float32_contiguous_and_names_its_facts():
     image = read(hdr(2, 1, [128, 128, 128, 128] * 2))
     assert image.pixels.dtype == np.float32
     assert image.pixels.flags.c_contiguous
+    assert image.chromaticities is None
     assert image.facts == {
-        "format": "radiance", "width": 2, "height": 1, "pixel_type": "rgbe", "exposure": 1.0,
+        "format": "radiance", "width": 2, "height": 1, "pixel_type": "rgbe", "orientation": "-Y +X",
+        "exposure": 1.0, "colour_correction": [1, 1, 1], "chromaticities": None,
     }  # fmt: skip
 
 
@@ -82,6 +84,47 @@ def test_exposures_multiply_and_are_taken_out_of_the_pixels():
     assert image.facts["exposure"] == 2.0
 
 
+def test_colour_corrections_multiply_per_channel_on_top_of_the_exposure():
+    header = (b"#?RADIANCE", b"COLORCORR=2 1 0.5", b"EXPOSURE=4", b"COLORCORR= 1 8 0.5", b" COLORCORR=9 9 9")
+    image = read(hdr(1, 1, [128, 128, 128, 129], header))
+    np.testing.assert_allclose(image.pixels[0, 0], 128.5 * 2.0**-7 / np.array([8, 32, 1]), rtol=1e-7)
+    assert image.facts["colour_correction"] == [2, 8, 0.25]
+
+
+@pytest.mark.parametrize("rows", ["-Y", "+Y"])
+@pytest.mark.parametrize("columns", ["+X", "-X"])
+@pytest.mark.parametrize("by_columns", [False, True])
+def test_every_orientation_comes_out_upright(rows, columns, by_columns):
+    # Radiance counts Y from the bottom, X from the left; the axis that comes first is the scan lines'.
+    upright = random_rgbe(9, 5)
+    stored = [[upright[y, x] for x in (range(9) if columns == "+X" else reversed(range(9)))]
+              for y in (range(5) if rows == "-Y" else reversed(range(5)))]  # fmt: skip
+    axes = [f"{rows} 5", f"{columns} 9"]
+    if by_columns:
+        stored, axes = list(zip(*stored, strict=True)), axes[::-1]
+    pack = packed_line if len(stored[0]) >= 8 else old_line
+    body = b"".join(pack(np.array(line)) for line in stored)
+    image = read(hdr(9, 5, body).replace(b"-Y 5 +X 9", " ".join(axes).encode()))
+    np.testing.assert_array_equal(image.pixels, np.float32(radiance(upright)))
+    assert image.pixels.flags.c_contiguous
+    assert (image.facts["width"], image.facts["height"]) == (9, 5)
+    assert image.facts["orientation"] == " ".join(axis[:2] for axis in axes)
+
+
+def test_last_primaries_are_handed_on():
+    header = (b"#?RADIANCE", b"PRIMARIES=1 0 0 1 0 0 .3 .3", b"PRIMARIES= .64 .33 .29 .6 .15 .06 .3333 .3333")
+    image = read(hdr(1, 1, [128, 128, 128, 129], header))
+    assert image.chromaticities == ((0.64, 0.33), (0.29, 0.6), (0.15, 0.06), (0.3333, 0.3333))
+
+
+def test_tristimulus_values_are_told_as_the_space_of_cie_xyz():
+    header = (b"#?RADIANCE", b"FORMAT=32-bit_rle_xyze")
+    image = read(hdr(1, 1, [128, 64, 32, 129], header))
+    np.testing.assert_array_equal(image.pixels[0, 0], np.array([128.5, 64.5, 32.5]) * 2.0**-7)
+    assert image.chromaticities == ((1, 0), (0, 1), (0, 0), (1 / 3, 1 / 3))
+    assert image.facts["pixel_type"] == "xyze"
+
+
 def test_header_forms_of_other_writers_are_read():
     header = (b"#?RGBE\r", b"# made by hand\r", b"GAMMA=1\r", b"VIEW=" + b"x" * 4000 + b"\r", b"\r")
     data = b"\n".join(header) + b"\n-Y %8d +X %8d\r\n" % (1, 2) + bytes([128, 0, 0, 128] * 2)
@@ -91,20 +134,20 @@ def test_header_forms_of_other_writers_are_read():
 @pytest.mark.parametrize(
     ("data", "words"),
     [
-        (hdr(2, 2, [0] * 16).replace(b"-Y 2 +X 2", b"+Y 2 +X 2"), "orientation"),
-        (hdr(2, 2, [0] * 16).replace(b"-Y 2 +X 2", b"+X 2 -Y 2"), "orientation"),
+        (hdr(2, 2, [0] * 16).replace(b"-Y 2 +X 2", b"+Y 2"), "resolution line"),
         (hdr(2, 2, [0] * 16).replace(b"-Y 2 +X 2", b"-Y 2 +Y 2"), "resolution line"),
         (hdr(2, 2, [0] * 16).replace(b"-Y 2 +X 2", b"pixels"), "resolution line"),
-        (hdr(2, 2, [0] * 16).replace(b"rgbe", b"xyze"), "XYZ"),
         (hdr(2, 2, [0] * 16).replace(b"32-bit_rle_rgbe", b"Radiance_rle_spectra"), "spectra"),
         (hdr(0, 2, []), "empty picture"),
         (hdr(999999999, 999999999, [0] * 16), "limit"),
         (hdr(1025, 1024, []), "limit"),
-        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"PRIMARIES=.6 .3 .3 .6 .1 .1 .3 .3")), "PRIMARIES"),
-        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"COLORCORR=1 2 3")), "COLORCORR"),
+        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"PRIMARIES=.6 .3 .3 .6 .1 .1 .3")), "doesn't hold 8 numbers"),
+        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"PRIMARIES=.3 .3 .3 .3 .3 .3 .3 .3")), "span no colour space"),
+        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"COLORCORR=1 2")), "doesn't hold 3 numbers"),
+        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"COLORCORR=1 2 0")), "exposure"),
         (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"EXPOSURE=0")), "exposure"),
-        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"EXPOSURE=nan")), "exposure"),
-        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"EXPOSURE=bright")), "exposure"),
+        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"EXPOSURE=nan")), "doesn't hold 1 number;"),
+        (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"EXPOSURE=bright")), "doesn't hold 1 number;"),
         (hdr(1, 1, [0] * 4, (b"#?RADIANCE", b"EXPOSURE=-1")), "exposure"),
         (hdr(1, 1, [0] * 4, (b"#?RADIANCE", *[b"EXPOSURE=1e20"] * 2)), "exposure"),
         (b"#?RADIANCE\nno end", "header"),

@@ -1,26 +1,21 @@
 """Radiance pictures (.hdr), by our own reader.
 
-No library at hand reads both kinds of run lengths and takes EXPOSURE out of the pixels, so the form
-is read here, from Radiance's "Picture File Format" (doc/filefmts) and the behaviour of its own
-reader: text lines up to an empty one, a resolution line, then scan lines of four-byte pixels
-r, g, b, e that are packed in one of three ways, told apart line by line.
+No library at hand reads both kinds of run lengths, takes EXPOSURE out of the pixels and turns pictures
+upright, so the form is read here, from Radiance's "Picture File Format" (doc/filefmts) and the behaviour
+of its own reader: the header, then scan lines of four-byte pixels r, g, b, e that are packed in one of
+three ways, told apart line by line.
 
 A pixel is (mantissa + 0.5) * 2^(e - 136), and 0 where e is 0. The half step is Radiance's own: its
 writer cuts mantissas off, so the middle of the step is the unbiased value. Readers that leave the
 half out give values that are up to 0.4 % of the largest channel smaller.
 """
 
-import re
-
 import numpy as np
 
 from skykiln.errors import FileError
-from skykiln.formats.image import Image, check_size
+from skykiln.formats.image import MAX_PIXELS, Image, check_size
+from skykiln.formats.radiance_header import Header, read_header
 from skykiln.jit import exact
-
-_RESOLUTION = re.compile(rb"([-+][XY]) +(\d{1,9}) +([-+][XY]) +(\d{1,9})")
-_NUMBER = re.compile(rb"[-+]?(\d+\.?\d*|\.\d+)([eE][-+]?\d+)?")
-_REFUSED = (b"PRIMARIES=", b"COLORCORR=")
 
 # What `_decode` found wrong; 0 is nothing.
 _CUT, _WIDTH, _OVERRUN, _EMPTY_RUN, _NO_PREVIOUS = 1, 2, 3, 4, 5
@@ -33,81 +28,47 @@ _FAULTS = {
 }
 
 
-def read_radiance_hdr(data: bytes, name: str, max_pixels: int) -> Image:
-    """Read a picture whose rows run from top to bottom and left to right.
+def read_radiance_hdr(data: bytes, name: str, max_pixels: int = MAX_PIXELS) -> Image:
+    """Read a picture of any orientation; it comes out upright.
 
-    The product of all EXPOSURE lines is taken out: pixels are radiance, not what was displayed.
+    All EXPOSURE and COLORCORR lines are taken out: pixels are radiance, not what was displayed.
 
-    Raises: FileError for damaged or cut files, and for what is not read yet.
+    Raises: FileError for damaged or cut files, and for other kinds of pixels.
     """
-    exposure, start = _read_header(data, name)
-    width, height, start = _read_resolution(data, start, name)
-    check_size(name, width, height, max_pixels)
-    pixels = np.empty((height, width, 3), np.float32)
-    fault, row = _decode(np.frombuffer(data, np.uint8), start, _scales(exposure), pixels)
+    header, start = read_header(data, name)
+    check_size(name, *header.size, max_pixels)
+    pixels = np.empty((header.lines, header.length, 3), np.float32)
+    fault, row = _decode(np.frombuffer(data, np.uint8), start, _scales(header.factors), pixels)
     if fault:
         raise FileError(f"{name}: {_FAULTS[fault].format(row=row)}; export it again")
-    facts = {"format": "radiance", "width": width, "height": height, "pixel_type": "rgbe"}
-    return Image(pixels, facts | {"exposure": exposure})
+    return Image(_upright(pixels, header.axes), _facts(header), chromaticities=header.primaries)
 
 
-def _read_header(data: bytes, name: str) -> tuple[float, int]:
-    """Returns the product of the EXPOSURE lines, and where the resolution line starts."""
-    exposure, position = 1.0, 0
-    while (end := data.find(b"\n", position)) >= 0:
-        line, position = data[position:end].removesuffix(b"\r"), end + 1
-        if not line:
-            return exposure, position
-        # A line counts only where the name is at its very start: an indented one is history.
-        if line.startswith(b"EXPOSURE="):
-            exposure = _exposure(exposure, line, name)
-        elif line.startswith(b"FORMAT="):
-            _check_format(line, name)
-        elif line.startswith(_REFUSED):
-            raise FileError(
-                f"{name}: its header holds {_shown(line)}, which is not read; convert it to linear Rec. 709"
-            )
-    raise FileError(f"{name}: the file ends inside its header; export it again")
+def _upright(pixels: np.ndarray, axes: tuple[str, str]) -> np.ndarray:
+    """Rows from the top, columns from the left. Y counts from the bottom, X from the left."""
+    if axes[0][1] == "X":
+        pixels = pixels.transpose(1, 0, 2)
+    rows, columns = (-1 if axis in axes else 1 for axis in ("+Y", "-X"))
+    return np.ascontiguousarray(pixels[::rows, ::columns])
 
 
-def _exposure(product: float, line: bytes, name: str) -> float:
-    """The product of the exposures so far and of this line's."""
-    text = line.partition(b"=")[2].strip()
-    product *= float(text) if _NUMBER.fullmatch(text) else 0.0
-    if not 1e-30 < product < 1e30:
-        raise FileError(f"{name}: {_shown(line)} is no usable exposure; mend that line of its header")
-    return product
+def _facts(header: Header) -> dict:
+    width, height = header.size
+    return {
+        "format": "radiance",
+        "width": width,
+        "height": height,
+        "pixel_type": header.pixels,
+        "orientation": " ".join(header.axes),
+        "exposure": header.exposure,
+        "colour_correction": [factor / header.exposure for factor in header.factors],
+        "chromaticities": header.primaries and [number for pair in header.primaries for number in pair],
+    }
 
 
-def _check_format(line: bytes, name: str) -> None:
-    found = line.partition(b"=")[2].strip()
-    if found == b"32-bit_rle_xyze":
-        raise FileError(f"{name}: its pixels are CIE XYZ; convert it to linear Rec. 709 RGB")
-    if found != b"32-bit_rle_rgbe":
-        raise FileError(f"{name}: {_shown(line)} is not read; export it as 32-bit_rle_rgbe")
-
-
-def _read_resolution(data: bytes, start: int, name: str) -> tuple[int, int, int]:
-    """Returns width, height, and where the first scan line starts."""
-    end = data.find(b"\n", start, start + 200)
-    line = data[start : max(end, start)].removesuffix(b"\r")
-    found = _RESOLUTION.fullmatch(line.strip())
-    if not found or {found[1][1:], found[3][1:]} != {b"X", b"Y"}:
-        raise FileError(
-            f"{name}: no resolution line such as '-Y 512 +X 1024' after the header; export it again"
-        )
-    if (found[1], found[3]) != (b"-Y", b"+X"):
-        raise FileError(f"{name}: its orientation '{_shown(line)}' is not read; turn it to '-Y H +X W'")
-    return int(found[4]), int(found[2]), end + 1
-
-
-def _shown(line: bytes) -> str:
-    return line[:60].decode("ascii", "replace")
-
-
-def _scales(exposure: float) -> np.ndarray:
-    """(256,) float32: what a mantissa is multiplied by, for each exponent byte."""
-    scales = np.ldexp(1.0, np.arange(256) - 136) / exposure
+def _scales(factors: tuple[float, float, float]) -> np.ndarray:
+    """(256, 3) float32: what a channel's mantissa is multiplied by, for each exponent byte."""
+    scales = np.ldexp(1.0, np.arange(256) - 136)[:, None] / np.array(factors)
     scales[0] = 0.0
     with np.errstate(over="ignore"):
         return scales.astype(np.float32)
@@ -132,9 +93,8 @@ def _decode(data, position, scales, pixels):
         if fault:
             return fault, row
         for i in range(width):
-            scale = scales[rgbe[i, 3]]
             for c in range(3):
-                pixels[row, i, c] = (np.float32(rgbe[i, c]) + np.float32(0.5)) * scale
+                pixels[row, i, c] = (np.float32(rgbe[i, c]) + np.float32(0.5)) * scales[rgbe[i, 3], c]
     return 0, 0
 
 
