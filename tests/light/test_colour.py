@@ -86,6 +86,18 @@ def test_white_stays_white_whatever_its_colour_was(target):
     np.testing.assert_allclose(matrix @ np.ones(3), 1.0, atol=1e-13)
 
 
+def test_tristimulus_values_are_a_space_themselves():
+    xyz = Chromaticities((1, 0), (0, 1), (0, 0), (1 / 3, 1 / 3))
+    np.testing.assert_allclose(rgb_to_xyz(xyz), np.eye(3), atol=1e-15)
+
+
+def test_primaries_below_the_diagram_are_those_of_colour_science():
+    theirs = colour_science.RGB_COLOURSPACES["ACES2065-1"]
+    space = Chromaticities(*theirs.primaries, theirs.whitepoint)
+    derived = colour_science.normalised_primary_matrix(theirs.primaries, theirs.whitepoint)
+    np.testing.assert_allclose(rgb_to_xyz(space), derived, atol=1e-12)
+
+
 chromaticity = st.tuples(st.floats(-0.05, 0.05), st.floats(-0.05, 0.05))
 
 
@@ -100,7 +112,7 @@ def test_there_and_back_is_the_identity(shifts):
 @pytest.mark.parametrize(
     ("space", "words"),
     [
-        (REC709._replace(blue=(0.15, 0.0)), "y not 0"),
+        (REC709._replace(white=(0.3, 0.0)), "white's y above 0"),
         (REC709._replace(white=(np.nan, 0.3)), "finite"),
         (REC709._replace(blue=(0.47, 0.465)), "one line"),
         (REC709._replace(white=(0.7, 0.25)), "outside"),

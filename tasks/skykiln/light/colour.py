@@ -61,18 +61,20 @@ def weights_of(space):
 def rgb_to_xyz(space):
     """(3, 3) float64: linear RGB of `space` to XYZ, white at Y = 1.
 
+    A primary may lie on the line y = 0 or below it, as those of CIE XYZ and of ACES 2065-1 do.
+
     Raises: ValueError when the primaries don't span a triangle that holds the white.
     """
     xy = np.array(space, dtype=np.float64)
-    if xy.shape != (4, 2) or not np.isfinite(xy).all() or (xy[:, 1] == 0).any():
-        raise ValueError("chromaticities must be four finite pairs x, y with y not 0")
-    xyz = np.stack([xy[:, 0] / xy[:, 1], np.ones(4), (1 - xy.sum(1)) / xy[:, 1]])
-    if abs(np.linalg.det(np.vstack([xy[:3].T, np.ones(3)]))) < 1e-6:
+    if xy.shape != (4, 2) or not np.isfinite(xy).all() or not xy[3, 1] > 0:
+        raise ValueError("chromaticities must be four finite pairs x, y, the white's y above 0")
+    columns = np.vstack([xy.T, 1 - xy.sum(1)])
+    if abs(np.linalg.det(columns[:, :3])) < 1e-6:
         raise ValueError("the three primaries lie on one line")
-    amounts = np.linalg.solve(xyz[:, :3], xyz[:, 3])
+    amounts = np.linalg.solve(columns[:, :3], columns[:, 3] / xy[3, 1])
     if not (amounts > 0).all():
         raise ValueError("the white lies outside the triangle of the primaries")
-    return xyz[:, :3] * amounts
+    return columns[:, :3] * amounts
 
 
 def bradford_adaptation(white, target_white):
