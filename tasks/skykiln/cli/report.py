@@ -4,6 +4,7 @@ import json
 
 from ..errors import ALL_WELL, FileError
 from .arguments import add_command, port
+from .view import add_options, write_view
 
 
 def add_to(commands):
@@ -16,6 +17,7 @@ def add_to(commands):
     shown.add_argument(
         "--serve", nargs="?", type=port, const=8017, metavar="PORT", help="serve it on 127.0.0.1 (8017)"
     )
+    add_options(report, shown)
 
 
 def run(options):
@@ -23,6 +25,8 @@ def run(options):
     from ..stages.nights import night_file
 
     pipeline = load_pipeline(options.file)
+    if options.view is not None:
+        return write_view(options, pipeline)
     record = _read(night_file(pipeline))
     if options.text:
         from ..report.night_text import night_lines

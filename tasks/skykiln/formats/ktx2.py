@@ -57,6 +57,17 @@ def write_ktx2(texture: Ktx2Texture, compress: int = 0) -> bytes:
     scheme = ZSTANDARD if compress else PLAIN
     dfd = write_dfd(coding, texture.primaries)
     pairs = write_key_values({**texture.metadata, "KTXorientation": "rd"})
+    return assembled(coding, (faces, height, width), stored, plain, scheme, dfd, pairs)
+
+
+def assembled(coding, shape, stored, plain, scheme, dfd, pairs) -> bytes:
+    """A file from its parts.
+
+    Parameters: shape : (faces, height, width) of the base level
+                stored, plain : bytes of every level as they stand in the file, and inflated; the base first
+                scheme : of supercompression; dfd, pairs : the descriptor's and the metadata's bytes
+    """
+    faces, height, width = shape
     start = index_end(len(stored))
     header = Header(
         coding.vk_format, coding.type_size, width, height, 0, 0, faces, len(stored), scheme,
