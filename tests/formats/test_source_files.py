@@ -36,13 +36,19 @@ def test_first_bytes_choose_the_reader_whatever_the_suffix(tmp_path):
     ("data", "words"),
     [
         (b"", "empty"),
-        (b"#", "neither"),
-        (b"\x76\x2f\x31", "neither"),
+        (b"#", "is none of OpenEXR, Radiance .hdr, TIFF, PFM or KTX2"),
+        (b"\x76\x2f\x31", "is none of"),
         (b"\x76\x2f\x31\x01", "not a readable OpenEXR file"),
         (b"#?", "header"),
-        (b"\x89PNG\r\n\x1a\n", "is a PNG picture, not OpenEXR or Radiance .hdr; convert it"),
+        (b"\x89PNG\r\n\x1a\n", "not that of a PNG picture"),
+        (b"DDS " + bytes(200), "is a DDS texture, not OpenEXR, .* KTX2; convert it to OpenEXR"),
+        (b"PF rubbish", "not that of a PFM picture"),
+        (b"II*\0", "damaged or cut TIFF"),
+        (b"\xabKTX 11\xbb", "KTX texture of version 1"),
+        (b"\xabKTX 20\xbb", "KTX2"),
+        (b"\xff\xd8\xff\xe0", "no range for a sun"),
         (b"ENVI\nsamples = 100\n", "ENVI"),
-        (b"\0" * 5000, "is neither OpenEXR nor Radiance .hdr; convert it to one of them"),
+        (b"\0" * 5000, "is none of .*; convert it to OpenEXR"),
     ],
 )
 def test_unreadable_content_is_named(tmp_path, data, words):

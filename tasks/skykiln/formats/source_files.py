@@ -4,9 +4,13 @@ import stat
 from pathlib import Path
 
 from skykiln.errors import FileError
+from skykiln.formats.cube_textures import read_cube_texture
 from skykiln.formats.image import AS_IT_IS, Image, ReadOptions
 from skykiln.formats.openexr import read_openexr
+from skykiln.formats.pfm import read_pfm
 from skykiln.formats.radiance_hdr import read_radiance_hdr
+from skykiln.formats.screen_pictures import read_jpeg, read_png
+from skykiln.formats.tiff import read_tiff
 
 
 def _read_radiance(path: Path, options: ReadOptions) -> Image:
@@ -21,19 +25,26 @@ def _read_radiance(path: Path, options: ReadOptions) -> Image:
 READERS = {
     b"\x76\x2f\x31\x01": read_openexr,  # OpenEXR, "OpenEXR File Layout": magic number
     b"#?": _read_radiance,  # Radiance, "Picture File Format": first line of the header
+    b"PF": read_pfm,
+    b"Pf": read_pfm,
+    b"II*\0": read_tiff,  # TIFF 6.0, section 2: byte order and 42
+    b"MM\0*": read_tiff,
+    b"II+\0": read_tiff,  # BigTIFF: 43
+    b"MM\0+": read_tiff,
+    b"\xabKTX 20": read_cube_texture,
+    b"\x89PNG": read_png,
+    b"\xff\xd8\xff": read_jpeg,
 }
 
 # Pictures that people do try, so that the message can say more than 'unknown'.
 _REFUSED = {
-    b"\x89PNG": "a PNG picture",
-    b"\xff\xd8\xff": "a JPEG picture",
-    b"II*\0": "a TIFF picture",
-    b"MM\0*": "a TIFF picture",
-    b"PF\n": "a PFM picture",
-    b"\xabKTX": "a KTX texture",
+    b"\xabKTX": "a KTX texture of version 1",
     b"DDS ": "a DDS texture",
     b"ENVI": "an ENVI remote-sensing header",
+    b"RIFF": "a WebP picture",
+    b"BM": "a BMP picture",
 }
+_READ = "OpenEXR, Radiance .hdr, TIFF, PFM or KTX2"
 
 
 def read_source(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
@@ -73,6 +84,5 @@ def _reader(path: Path, start: bytes):
         if start.startswith(magic):
             return reader
     found = next((what for magic, what in _REFUSED.items() if start.startswith(magic)), None)
-    what = f"is {found}, not" if found else "is neither"
-    one = f"{what} OpenEXR {'or' if found else 'nor'} Radiance .hdr"
-    raise FileError(f"{path}: {one}; convert it to one of them")
+    what = f"is {found}, not {_READ}" if found else f"is none of {_READ}, by its first bytes"
+    raise FileError(f"{path}: {what}; convert it to OpenEXR")
