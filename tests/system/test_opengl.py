@@ -5,11 +5,7 @@ renderer's vector is the world direction times the signs of `cube_axes`; what co
 faces at that direction.
 """
 
-import itertools
-import json
-import re
 import struct
-from pathlib import Path
 
 import imagecodecs
 import numpy as np
@@ -22,17 +18,27 @@ from opengl_context import (
     upload_cube,
     words_that_the_driver_packs,
 )
+from packed_probe import (
+    CODING_ERRORS,
+    CODINGS,
+    HARMONICS,
+    SHADING,
+    every_pack,
+    expected_values,
+    listing,
+    plain_files,
+    surfaces,
+    uniforms_of,
+    world_of,
+)
 
 from skykiln.formats.dds import DdsTexture, write_dds
 from skykiln.formats.ktx2 import Ktx2Texture, read_ktx2, write_ktx2
 from skykiln.formats.pixels import PIXELS
 from skykiln.formats.texture_files import read_texture
 from skykiln.light.cube_axes import CUBE_AXES, SAMPLING_SIGNS, from_cube_space, to_cube_space
-from skykiln.light.harmonics import irradiance_from_coefficients
 from skykiln.light.sample_cube import sample_cube
-from tiny_pipeline import TinyPipeline, write_sky
 
-CODINGS = ["rgba16f", "rgb9e5", "r11g11b10f", "bc6h"]
 SIZE = 16
 
 
@@ -135,40 +141,6 @@ def test_our_rgb9e5_words_are_the_drivers(renderer):
     np.testing.assert_array_equal(ours, words_that_the_driver_packs(colours))
 
 
-# What a coding may take from a texel of the smooth sky below.
-CODING_ERRORS = {"rgba16f": 1e-3, "rgb9e5": 0.01, "r11g11b10f": 0.03, "bc6h": 0.15}
-KINDS = {"plain": ("ktx2", None), "packed": ("ktx2", 3), "dds": ("dds", None)}
-
-
-def every_pack():
-    """Entries of a recipe's pack list, by name: all codings, containers and cube_axes."""
-    packs = {}
-    for pixels, (kind, (container, compress)), axes in itertools.product(CODINGS, KINDS.items(), CUBE_AXES):
-        entry = {"container": container, "pixels": pixels, "cube_axes": axes, "compress": compress}
-        packs[f"{pixels}_{kind}_{axes}"] = {**entry, "name": f"{pixels}_{kind}_{axes}"}
-    return packs
-
-
-@pytest.fixture(scope="module")
-def probe(tmp_path_factory):
-    """A small sky baked by the product, packed in every way."""
-    pipeline = TinyPipeline(tmp_path_factory.mktemp("probe"), probes=["ferry_noon"])
-    y, x = np.mgrid[0:32, 0:64] / 32.0
-    sky = np.exp(np.sin(np.pi * x)[..., None] * [0.5, 0.3, -0.4] + np.cos(3 * y)[..., None] * [0.2, 0.6, 0.9])
-    write_sky(pipeline.folder / "ferry_noon.exr", pixels=np.float32(1e5 * sky))  # needs a storage_ev
-    pipeline.recipe["face_size"] = 16
-    pipeline.recipe["specular"] = {"levels": 5, "roughness": [0, 0.2, 0.5, 0.6, 1], "tolerance": 0.01}
-    pipeline.recipe["pack"] = list(every_pack().values())
-    pipeline.bake()
-    return pipeline
-
-
-def world_of(probe):
-    """What was baked, in true units: world faces of every level."""
-    work = probe.build / "work/ferry_noon"
-    return [np.load(work / name) for name in ("faces.npy", *(f"level_{k}.npy" for k in range(1, 5)))]
-
-
 @pytest.mark.parametrize("name", every_pack())
 def test_renderer_sees_what_was_baked_in_every_pack(renderer, probe, name):
     entry = every_pack()[name]
@@ -187,14 +159,6 @@ def test_renderer_sees_what_was_baked_in_every_pack(renderer, probe, name):
     np.testing.assert_allclose(seen, baked, rtol=CODING_ERRORS[entry["pixels"]])
 
 
-PAGE = Path(__file__).parents[2] / "docs/for_renderers.md"
-
-
-def listing(language):
-    (block,) = re.findall(rf"^```{language}\n(.*?)^```", PAGE.read_text(), re.MULTILINE | re.DOTALL)
-    return block
-
-
 def loaded_by_the_page(path):
     scope = {}
     exec(listing("python"), scope)
@@ -202,55 +166,15 @@ def loaded_by_the_page(path):
     return scope["load_texture"](path.read_bytes())
 
 
-def uniforms_of(record, axes):
-    """Values of the listing's uniforms, from probe.json."""
-    roughness = [level["roughness"] for level in record["specular"]["levels"]]
-    return {
-        "signs": SAMPLING_SIGNS[axes],
-        "true_scale": 2.0 ** record["storage_ev"],
-        "level_count": len(roughness),
-        "roughness_of": roughness,
-        "sh": record["irradiance"]["sh"],
-    }
-
-
-def table_at(table, mu, roughness):
-    """Bilinear values of a 2-D table (n, n, 2), clamped to its edge."""
-    x, y = (np.clip(c * len(table) - 0.5, 0, len(table) - 1) for c in (mu, roughness))
-    i, j = np.minimum(x.astype(int), len(table) - 2), np.minimum(y.astype(int), len(table) - 2)
-    u, v = (x - i)[:, None], (y - j)[:, None]
-    above = (1 - u) * table[j, i] + u * table[j, i + 1]
-    below = (1 - u) * table[j + 1, i] + u * table[j + 1, i + 1]
-    return (1 - v) * above + v * below
-
-
 @pytest.mark.parametrize("axes", CUBE_AXES)
 def test_listing_for_opengl_shades_as_computed_here(renderer, probe, axes):
-    record, folder = probe.probe_record("ferry_noon"), probe.build / "probes/ferry_noon"
-    cubes = [
-        f["file"]
-        for f in record["irradiance"]["files"]
-        if (f["container"], f["pixels"], f["cube_axes"]) == ("ktx2", "rgba16f", axes)
-    ]
-    brdf = probe.build / "brdf/brdf.rg16f.ktx2"
-    files = [folder / f"specular.rgba16f_plain_{axes}.ktx2", folder / cubes[0], brdf]
-    textures = [loaded_by_the_page(file) for file in files]
-    rng = np.random.default_rng(11)
-    n, v = (d / np.linalg.norm(d, axis=1)[:, None] for d in rng.normal(size=(2, 1000, 3)))
-    v *= np.sign((n * v).sum(1))[:, None]
-    rough, albedo, f0 = rng.random(1000), np.array([0.2, 0.5, 0.8]), np.array([0.04, 0.3, 0.9])
-    shading = "lit_by_probe(a.xyz, b.xyz, vec3(0.2, 0.5, 0.8), vec3(0.04, 0.3, 0.9), b.w)"
+    record = probe.probe_record("ferry_noon")
+    textures = [loaded_by_the_page(file) for file in plain_files(probe, "rgba16f", axes)]
+    n, sight = surfaces()
     seen = run_for_each(
-        listing("glsl"), [shading, "irradiance_from_sh(a.xyz)"], n, np.c_[v, rough],
-        dict(enumerate(textures)), uniforms_of(record, axes),
-    )  # fmt: skip
-    mu = (n * v).sum(1)
-    level = np.interp(rough, [0, 0.2, 0.5, 0.6, 1], range(5))
-    mirror = sample_cube(world_of(probe), 2 * mu[:, None] * n - v, level)
-    scale, bias = table_at(read_ktx2(brdf.read_bytes(), "table").levels[0][0], mu, rough).T
-    e = sample_cube([np.load(probe.build / "work/ferry_noon/irradiance.npy")], n, 0)
-    expected = albedo / np.pi * e + mirror * (f0 * scale[:, None] + bias[:, None])
-    np.testing.assert_allclose(seen[0], expected, rtol=3e-3)
-    sh = np.array(record["irradiance"]["sh"])
-    np.testing.assert_allclose(seen[1], irradiance_from_coefficients(sh, n), rtol=1e-4)
-    assert json.dumps(record["sun"]) == "null"
+        listing("glsl"), [SHADING, HARMONICS], n, sight, dict(enumerate(textures)), uniforms_of(record, axes)
+    )
+    shading, harmonics = expected_values(probe, n, sight)
+    np.testing.assert_allclose(seen[0], shading, rtol=3e-3)
+    np.testing.assert_allclose(seen[1], harmonics, rtol=1e-4)
+    assert record["sun"] is None
