@@ -3,7 +3,8 @@
 A node stands for all its pixels in a sum over the sphere. It keeps their flux and the moments of their
 directions about the mean direction, so that a smooth kernel can be summed over it (`lobe_sums`), and
 the size of what is then left out. A mean direction is not normalised: n . m is the mean of n . l.
-A pixel is a patch of constant radiance, with its own exact mean direction and its spread.
+A pixel is a patch of constant radiance, with its own exact mean direction and its spread. What all pixels
+have in common, the smallest radiance of each channel, stays out: a filter leaves a constant as it is.
 
 Colours apart inside a node (a red lamp beside a blue one) have different mean directions: each
 channel's own mean is kept beside the common one.
@@ -51,11 +52,13 @@ class Pyramid(NamedTuple):
         float64, geometry of its pixels; weights (3,) float64, by which channels count alike; nodes
         (count, RECORD) float32, level 1 first, each level as two squares side by side in Z order: the
         quarters of node p are 4 p .. 4 p + 3 one level down; offsets (levels + 2,) int64, where level
-        l >= 1 starts; block, the pixels along an edge of a level-1 node.
-    mean : (3,) float64, mean radiance over the sphere.
+        l >= 1 starts; block, the pixels along an edge of a level-1 node; base.
+    base : (3,) float32, the smallest radiance of each channel: the nodes hold what is above it.
+    mean : (3,) float64, mean radiance over the sphere, with the base.
     """
 
     tree: tuple
+    base: np.ndarray
     mean: np.ndarray
 
 
@@ -73,14 +76,15 @@ def build_pyramid(panorama, yaw=0.0):
     counts = [2 * (across >> level) ** 2 for level in range(levels)]
     offsets = np.concatenate([[0, 0], np.cumsum(counts, dtype=np.int64)]).astype(np.int64)
     rows, columns = _row_geometry(height, width), _column_geometry(width, yaw)
-    flux = _row_fluxes(panorama, rows).sum(axis=0)
+    base = _smallest_radiance(panorama).min(axis=0)
+    flux = _row_fluxes(panorama, base, rows).sum(axis=0)
     weights = np.divide(4 * np.pi, flux, out=np.zeros(3), where=flux > 0)
     nodes = np.zeros((int(offsets[-1]), RECORD), np.float32)
-    tree = (panorama, rows, columns, weights, nodes, offsets, block)
+    tree = (panorama, rows, columns, weights, nodes, offsets, block, base)
     _gather_pixels(tree)
     for level in range(2, levels + 1):
         _gather_level(nodes, offsets[level - 1], offsets[level], offsets[level + 1], weights)
-    return Pyramid(tree, flux / (4 * np.pi))
+    return Pyramid(tree, base, base + flux / (4 * np.pi))
 
 
 def _column_geometry(width, yaw):
@@ -127,16 +131,31 @@ def _set_band(angle, half, half_width, row):
 
 
 @parallel
-def _row_fluxes(panorama, rows):
-    """Flux of every row of pixels, (H, 3) float64."""
+def _smallest_radiance(panorama):
+    """Of every row of pixels, (H, 3) float32."""
+    height, width, _ = panorama.shape
+    smallest = np.empty((height, 3), np.float32)
+    for j in numba.prange(height):
+        red, green, blue = panorama[j, 0, 0], panorama[j, 0, 1], panorama[j, 0, 2]
+        for i in range(width):
+            red = min(red, panorama[j, i, 0])
+            green = min(green, panorama[j, i, 1])
+            blue = min(blue, panorama[j, i, 2])
+        smallest[j, 0], smallest[j, 1], smallest[j, 2] = red, green, blue
+    return smallest
+
+
+@parallel
+def _row_fluxes(panorama, base, rows):
+    """Flux above the base of every row of pixels, (H, 3) float64."""
     height, width, _ = panorama.shape
     fluxes = np.zeros((height, 3))
     for j in numba.prange(height):
         red, green, blue = 0.0, 0.0, 0.0
         for i in range(width):
-            red += panorama[j, i, 0]
-            green += panorama[j, i, 1]
-            blue += panorama[j, i, 2]
+            red += panorama[j, i, 0] - base[0]
+            green += panorama[j, i, 1] - base[1]
+            blue += panorama[j, i, 2] - base[2]
         fluxes[j, 0] = red * rows[j, _SOLID_ANGLE]
         fluxes[j, 1] = green * rows[j, _SOLID_ANGLE]
         fluxes[j, 2] = blue * rows[j, _SOLID_ANGLE]
@@ -276,7 +295,7 @@ def cell_moments(tree, level, p, node):
 
     Level 1 is a block of `block` pixels, each level below halves it; p counts cells in Z order.
     """
-    panorama, _, columns, _, _, offsets, block = tree
+    panorama, _, columns, _, _, offsets, block, base = tree
     height, width, _ = panorama.shape
     node[:] = 0.0
     squared = (offsets[2] // 2) << (2 - 2 * level)
@@ -301,17 +320,17 @@ def cell_moments(tree, level, p, node):
         sin_t, cos_t = math.sin(turn), math.cos(turn)
         sine = columns[column, _SIN_LONGITUDE] * cos_t - columns[column, _COS_LONGITUDE] * sin_t
         cosine = columns[column, _COS_LONGITUDE] * cos_t + columns[column, _SIN_LONGITUDE] * sin_t
-        _set_patch(panorama[row, column], band, sine, cosine, math.sin(half_width) / half_width, node)
+        _set_patch(panorama[row, column], base, band, sine, cosine, math.sin(half_width) / half_width, node)
 
 
 @formula
-def _set_patch(radiance, band, sine, cosine, mean, node):
+def _set_patch(radiance, base, band, sine, cosine, mean, node):
     """The record of one patch of constant radiance at a longitude; `mean` is how much its width shortens
     the mean sine and cosine of longitude."""
     mx, my, mz = band[_RHO] * mean * sine, band[_Y], band[_RHO] * mean * cosine
     node[MEAN], node[MEAN + 1], node[MEAN + 2] = mx, my, mz
     for c in range(3):
-        node[FLUX + c] = radiance[c] * band[_SOLID_ANGLE]
+        node[FLUX + c] = (radiance[c] - base[c]) * band[_SOLID_ANGLE]
     up, along = band[_VAR_LATITUDE], band[_VAR_LONGITUDE]
     ux, uy, uz = -band[_COS] * sine, band[_SIN], -band[_COS] * cosine  # towards the upper pole
     spread = up + along
@@ -331,7 +350,7 @@ def _set_patch(radiance, band, sine, cosine, mean, node):
 @formula
 def _add_pixels(tree, row0, row1, column0, column1, node):
     """Moments of a block of pixels: summed about the block's first pixel, then moved to their mean."""
-    panorama, rows, columns, weights = tree[0], tree[1], tree[2], tree[3]
+    panorama, rows, columns, weights, base = tree[0], tree[1], tree[2], tree[3], tree[7]
     rho, ry = rows[row0, _RHO], rows[row0, _Y]
     rx, rz = rho * columns[column0, _MEAN_SIN], rho * columns[column0, _MEAN_COS]
     total, s2, s4 = 0.0, 0.0, 0.0
@@ -347,7 +366,8 @@ def _add_pixels(tree, row0, row1, column0, column1, node):
         for i in range(column0, column1):
             x, z = rho * columns[i, _MEAN_SIN] - rx, rho * columns[i, _MEAN_COS] - rz
             sine, cosine = columns[i, _SIN_LONGITUDE], columns[i, _COS_LONGITUDE]
-            f, g, h = panorama[j, i, 0] * area, panorama[j, i, 1] * area, panorama[j, i, 2] * area
+            f, g, h = panorama[j, i, 0] - base[0], panorama[j, i, 1] - base[1], panorama[j, i, 2] - base[2]
+            f, g, h = f * area, g * area, h * area
             w = weights[0] * f + weights[1] * g + weights[2] * h
             square = x * x + y * y + z * z
             ux, uz = -cos_j * sine, -cos_j * cosine
@@ -399,18 +419,21 @@ def _add_pixels(tree, row0, row1, column0, column1, node):
         _set_channel(node, 1, green, green_x / green - x1, green_y / green - y1, green_z / green - z1)
     if blue > 0.0:
         _set_channel(node, 2, blue, blue_x / blue - x1, blue_y / blue - y1, blue_z / blue - z1)
-    node[RADIUS] = _reach(panorama, rows, columns, row0, row1, column0, column1, rx + x1, ry + y1, rz + z1)
+    middle = (rx + x1, ry + y1, rz + z1)
+    node[RADIUS] = _reach(panorama, base, rows, columns, row0, row1, column0, column1, middle)
     _sum_up(node)
 
 
 @formula
-def _reach(panorama, rows, columns, row0, row1, column0, column1, mx, my, mz):
+def _reach(panorama, base, rows, columns, row0, row1, column0, column1, middle):
     """The largest distance of any lit pixel's edge from a direction."""
+    mx, my, mz = middle
     largest = 0.0
     for j in range(row0, row1):
         rho, y = rows[j, _RHO], rows[j, _Y] - my
         for i in range(column0, column1):
-            if panorama[j, i, 0] + panorama[j, i, 1] + panorama[j, i, 2] > 0.0:
+            red, green, blue = panorama[j, i, 0], panorama[j, i, 1], panorama[j, i, 2]
+            if red > base[0] or green > base[1] or blue > base[2]:
                 x, z = rho * columns[i, _MEAN_SIN] - mx, rho * columns[i, _MEAN_COS] - mz
                 largest = max(largest, math.sqrt(x * x + y * y + z * z) + rows[j, _EXTENT])
     return largest

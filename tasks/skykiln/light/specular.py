@@ -20,8 +20,9 @@ import numpy as np
 from skykiln.jit import formula, parallel
 from skykiln.light.directions import FACE_AXES
 from skykiln.light.ggx import ggx_norm
+from skykiln.light.lobe_grid import KINK_ERROR, interpolated, lobe_grid, texel_grid
 from skykiln.light.lobe_sums import ENTRY, append, sum_above, sum_across, sum_coloured
-from skykiln.light.pyramid import RADIUS, RECORD
+from skykiln.light.pyramid import FLUX, RADIUS, RECORD, SPREAD
 from skykiln.light.walk import (
     ACROSS,
     BATCH,
@@ -41,6 +42,8 @@ _BLOCK = 256  # entries of a list that are summed at a time: they fit the neares
 _DEFERRED = 8192  # nodes that a group may leave to its tiles
 _ERRORS_PER_TEXEL = 2.0  # how many of the largest errors add up, as calibrated by the error tests
 _ROUGH = 0.2  # relative error of the first look at a group
+_SPARSE_TILE = 8  # points along an edge of a tile of a sparse grid
+_KINK_PARTS = 0.4  # allowed for interpolating kinks
 _DARK = 1e-3  # errors count against at least this share of the mean radiance
 
 
@@ -59,99 +62,117 @@ def filter_level(pyramid, face_size, alpha, tolerance):
     -------
     (6, face_size, face_size, 3) float32, radiance, never negative.
     """
-    brightest = pyramid.mean.max()
-    if brightest == 0.0:
-        return np.zeros((6, face_size, face_size, 3), np.float32)
     norm = ggx_norm(alpha)
-    tile = _tile_edge(face_size, alpha)
-    group = _group_edge(face_size, tile, alpha)
-    sums = _sum_groups(
-        pyramid.tree, FACE_AXES, face_size, tile, group, float(alpha),
-        tolerance / _ERRORS_PER_TEXEL, _DARK * brightest * norm,
+    grid = lobe_grid(face_size, alpha, tolerance, _SPARSE_TILE)
+    sums, kinks = _sums(pyramid, grid, alpha, tolerance, norm)
+    if grid.sparse and kinks * KINK_ERROR * grid.step <= _KINK_PARTS:
+        sums = interpolated(sums, grid, face_size)
+    elif grid.sparse:
+        sums, _ = _sums(pyramid, texel_grid(face_size), alpha, tolerance, norm)
+    return np.maximum(sums * np.float32(1.0 / norm), 0) + pyramid.base
+
+
+def _sums(pyramid, grid, alpha, tolerance, norm):
+    """The sums over all nodes at a grid's points, (6, n, n, 3) float32, and how strong a kink they hold, in
+    parts per radian: what the lights that cross one horizon weigh."""
+    count = len(grid.at)
+    tile = _SPARSE_TILE if grid.sparse else _tile_edge(count, grid.step, alpha)
+    group = _group_edge(count, grid.step, tile, alpha)
+    sums, kinks = _sum_groups(
+        pyramid.tree, FACE_AXES, grid.at, grid.step, tile, group, float(alpha), tolerance / _ERRORS_PER_TEXEL,
+        norm * pyramid.base, norm * _DARK * pyramid.mean.max(),
     )  # fmt: skip
-    return sums * np.float32(1.0 / norm)
+    return sums, kinks.max()
 
 
-def _tile_edge(face_size, alpha):
-    """A tile about as wide as the lobe, at most 8 texels and 0.3 rad; 1.6 / size is about a texel's angle."""
+def _tile_edge(count, step, alpha):
+    """A tile about as wide as the lobe, at most 8 points and 0.3 rad."""
     widest = min(3.0 * alpha, 0.3)
     edge = 1
-    while edge < 8 and 2 * edge <= face_size and 2 * edge * 1.6 / face_size < widest:
+    while edge < 8 and 2 * edge <= count and 2 * edge * step < widest:
         edge *= 2
     return edge
 
 
-def _group_edge(face_size, tile, alpha):
+def _group_edge(count, step, tile, alpha):
     """Up to four tiles, but not many lobes wide: a group looks at all it covers as finely as a lobe."""
     edge = tile
-    while edge < 4 * tile and 2 * edge <= face_size and 2 * edge * 1.6 / face_size < 12.0 * alpha:
+    while edge < 4 * tile and 2 * edge <= count and 2 * edge * step < 12.0 * alpha:
         edge *= 2
     return edge
 
 
 @parallel
-def _sum_groups(tree, face_axes, size, tile, group, alpha, part, floor):
-    across = size // group
-    result = np.empty((6, size, size, 3), np.float32)
+def _sum_groups(tree, face_axes, at, step, tile, group, alpha, part, base, floor):
+    count = at.shape[0]
+    across = (count + group - 1) // group
+    result = np.empty((6, count, count, 3), np.float32)
+    kinks = np.empty(6 * across * across)
     for g in numba.prange(6 * across * across):
         face = np.int64(g) // (across * across)
         j0 = np.int64(g) // across % across * group
         i0 = np.int64(g) % across * group
-        texels = _texels_by_tiles(face_axes[face], size, tile, group, j0, i0)
-        target = result[face, j0 : j0 + group, i0 : i0 + group]
-        _sum_group(tree, texels, tile, alpha, part, floor, target)
-    return result
+        down, along = at[j0 : min(count, j0 + group)], at[i0 : min(count, i0 + group)]
+        texels = _points_by_tiles(face_axes[face], along, down, tile)
+        target = result[face, j0 : j0 + down.shape[0], i0 : i0 + along.shape[0]]
+        kinks[g] = _sum_group(tree, texels, step, tile, alpha, part, base, floor, target)
+    return result, kinks
 
 
 @formula
-def _sum_group(tree, texels, tile, alpha, part, floor, target):
-    """All texels of a group: one walk for what its tiles share, then one per tile for the rest."""
+def _sum_group(tree, texels, step, tile, alpha, part, base, floor, target):
+    """All points of a group: one walk for what its tiles share, then one per tile for the rest. Returns
+    the strongest kink."""
     b, a2 = 1.0 - alpha * alpha, 2.0 * alpha * alpha
-    tiles, area = target.shape[0] // tile, tile * tile
-    count = tiles * tiles
-    sums = np.zeros((count * area, 3), np.float32)
+    across, area = target.shape[1] // tile, tile * tile
+    count = texels.shape[0] // area
+    sums = np.zeros((texels.shape[0], 3), np.float32)
     centre = np.empty(3)
     radius = _bounds(texels, centre)
     per_part = np.empty((count + 1, 3))
     _tile_limits(tree, texels, tile, centre, radius, b, a2, per_part)
     for c in range(3):
         for t in range(count):
-            per_part[t, c] = 1.0 / (part * max(per_part[t, c], floor))
+            per_part[t, c] = 1.0 / (part * max(per_part[t, c] + base[c], floor))
         per_part[count, c] = per_part[:count, c].max()
     levels, deferred = np.empty(_DEFERRED, np.int32), np.empty(_DEFERRED, np.int64)
     none_level, none = np.empty(0, np.int32), np.empty(0, np.int64)
     roots_level, roots = np.empty(2, np.int32), np.empty(2, np.int64)
     push_roots(tree, roots_level, roots)
     space = _workspace()
+    shared_flux, own_flux = np.zeros(3), np.zeros(3)
     left = _sum_nodes(
         tree, texels, centre, radius, b, a2, per_part[count],
-        roots_level, roots, levels, deferred, space, sums,
+        roots_level, roots, levels, deferred, space, sums, step, shared_flux,
     )  # fmt: skip
+    kink = 0.0
     for t in range(count):
         own, own_sums = texels[t * area : t * area + area], sums[t * area : t * area + area]
         radius = _bounds(own, centre)
+        own_flux[:] = shared_flux
         _sum_nodes(
             tree, own, centre, radius, b, a2, per_part[t],
-            levels[:left], deferred[:left], none_level, none, space, own_sums,
+            levels[:left], deferred[:left], none_level, none, space, own_sums, step, own_flux,
         )  # fmt: skip
+        for c in range(3):
+            kink = max(kink, own_flux[c] * per_part[t, c] / ((b + a2) * (b + a2)))  # K'(0) = 1/A^2
         for k in range(area):
-            target[t // tiles * tile + k // tile, t % tiles * tile + k % tile] = own_sums[k]
+            target[t // across * tile + k // tile, t % across * tile + k % tile] = own_sums[k]
+    return kink
 
 
 @formula
-def _texels_by_tiles(axes, size, tile, group, j0, i0):
-    """Directions of a group's texel centres, tile after tile. (texels, 3) float32."""
-    tiles, area = group // tile, tile * tile
-    texels = np.empty((tiles * tiles * area, 3), np.float32)
-    for k in range(texels.shape[0]):
+def _points_by_tiles(axes, along, down, tile):
+    """Directions of a group's points, tile after tile. (points, 3) float32."""
+    across, area = along.shape[0] // tile, tile * tile
+    points = np.empty((along.shape[0] * down.shape[0], 3), np.float32)
+    for k in range(points.shape[0]):
         t, inside = k // area, k % area
-        j = j0 + t // tiles * tile + inside // tile
-        i = i0 + t % tiles * tile + inside % tile
-        a, b = (2.0 * i + 1.0) / size - 1.0, (2.0 * j + 1.0) / size - 1.0
+        a, b = along[t % across * tile + inside % tile], down[t // across * tile + inside // tile]
         h = math.sqrt(1.0 + a * a + b * b)
         for x in range(3):
-            texels[k, x] = (axes[0, x] + a * axes[1, x] + b * axes[2, x]) / h
-    return texels
+            points[k, x] = (axes[0, x] + a * axes[1, x] + b * axes[2, x]) / h
+    return points
 
 
 @formula
@@ -202,11 +223,12 @@ def _workspace():
 
 @formula
 def _sum_nodes(tree, texels, centre, radius, b, a2, per_part,
-               seed_levels, seeds, deferred_levels, deferred, space, sums):  # fmt: skip
+               seed_levels, seeds, deferred_levels, deferred, space, sums, step, kinked_flux):  # fmt: skip
     """Walks down from the seeds and sums what is taken into sums (texels, 3).
 
     A node to be opened that is smaller than the texels' group is left to its tiles while `deferred` has
-    room. Returns how many were.
+    room. Returns how many were. The flux of what may stand across a horizon is added to `kinked_flux`, of
+    nodes wider than a step in part: over an even stretch the errors of interpolating kinks cancel.
     """
     stack_level, stack_node, batch, rows, verdicts, scratch, above, coloured, kinked = space
     n_above, n_coloured, n_kinked = 0, 0, 0
@@ -230,6 +252,9 @@ def _sum_nodes(tree, texels, centre, radius, b, a2, per_part,
                 continue
             elif verdicts[e] & ACROSS:
                 n_kinked = append(kinked, n_kinked, node, True)
+                narrow = min(1.0, step / (2.0 * math.sqrt(max(node[SPREAD], np.float32(1e-20)))))
+                for c in range(3):
+                    kinked_flux[c] += narrow * node[FLUX + c]
                 if n_kinked == _BLOCK:
                     sum_across(kinked, n_kinked, texels, b, a2, sums)
                     n_kinked = 0
