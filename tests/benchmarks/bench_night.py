@@ -1,20 +1,23 @@
 """What the engine costs: nights of small probes whose numerics are made once and only handed out after.
 
-    python tests/benchmarks/bench_night.py [--probes 200 2000 10000] [--plain 50 100 200]
+    python tests/benchmarks/bench_night.py [--probes 200 2000 10000] [--plain 50 100 200 400] [--folder DIR]
 
 Every probe is a 256 x 128 source baked to 64^2 faces and 7 levels. Decoding, numerics and encoding return
 what one real probe gave, so that what is left is the engine: pins, graph, lots, Luigi, digests, files,
-stamps, seals, night.json. Waits for the disk (fsync, syncfs) are counted apart. Prints for each size a
-first night, an unchanged night, one that reads all bytes again (--verify), and the largest memory of the
-process, which both schedules and bakes; then the same stages as one plain Luigi task each, with
-LocalTarget, for some sizes, and what follows from them by least squares for the size of the night.
+stamps, seals, night.json. All times are CPU time of one process, so that other work on the machine counts
+little; waits for the disk (fsync, syncfs) are told apart, in seconds of the clock. Prints for each size a
+first night, an unchanged night, `plan`, a night that reads all bytes again (--verify), and the largest
+memory of the process, which both schedules and bakes; then the same stages as one plain Luigi task each,
+with LocalTarget, for some sizes, and what follows from them by least squares for the size of the night.
+
+A folder of 1.5 MB a probe is filled. File systems are slow to give out again what was deleted a moment ago,
+so everything is deleted at the end.
 """
 
 import argparse
 import json
 import os
 import resource
-import shutil
 import subprocess
 import sys
 import tempfile
@@ -27,7 +30,7 @@ sys.path.insert(0, str(Path(__file__).parents[1]))
 
 from skykiln.config import load_pipeline
 from skykiln.engine import atomic, lots
-from skykiln.engine.chains import chain_of
+from skykiln.engine.chains import chain_of, glance_at
 from skykiln.engine.content import chunks_of
 from skykiln.stages.decode_source import DecodeSource
 from skykiln.stages.extract_faces import ExtractFaces
@@ -89,32 +92,40 @@ def _key(stage):
 
 
 class DiskWaits:
-    """Seconds spent waiting for the disk since it was made."""
+    """Waits for the disk since it was made: seconds of the clock, and of the CPU in them."""
 
     def __init__(self):
-        self.seconds = 0.0
+        self.seconds = self.cpu_seconds = 0.0
         os.fsync = self._timed(os.fsync)
         lots.sync_file_systems = self._timed(atomic.sync_file_systems)
 
     def _timed(self, call):
         def timed(*arguments):
-            began = time.perf_counter()
+            began, cpu_began = time.perf_counter(), time.process_time()
             try:
                 return call(*arguments)
             finally:
                 self.seconds += time.perf_counter() - began
+                self.cpu_seconds += time.process_time() - cpu_began
 
         return timed
 
 
 def one_night(folder, waits, verified=False):
-    """(seconds without waits, seconds of waits)"""
-    began, waited = time.perf_counter(), waits.seconds
+    """CPU seconds of a night without waits."""
+    began = time.process_time() - waits.cpu_seconds
     snapshot = Snapshot(load_pipeline(folder / "pipeline.yaml"), verified=verified)
     night, record = bake(snapshot, 1, False, False, nothing_shown)
     assert record["exit_status"] == 0, night.failures[:3]
-    waited = waits.seconds - waited
-    return time.perf_counter() - began - waited, waited
+    return time.process_time() - waits.cpu_seconds - began
+
+
+def one_plan(folder):
+    """CPU seconds of `plan`."""
+    began = time.process_time()
+    chains = [glance_at(target) for target in Snapshot(load_pipeline(folder / "pipeline.yaml")).targets]
+    assert not [chain for chain in chains if chain.stale]
+    return time.process_time() - began
 
 
 def nights(probes, scratch):
@@ -124,19 +135,20 @@ def nights(probes, scratch):
         kind.make = lambda stage, inputs: contents[_key(stage)]
     folder = scratch / "nights"
     fill(folder, probes)
-    first, waited = one_night(folder, waits)
+    waited, first = waits.seconds, one_night(folder, waits)
     figures = {
         "first": first,
-        "waited": waited,
-        "unchanged": sum(one_night(folder, waits)),
-        "verified": sum(one_night(folder, waits, verified=True)),
+        "waited": waits.seconds - waited,
+        "unchanged": one_night(folder, waits),
+        "plan": one_plan(folder),
+        "verified": one_night(folder, waits, verified=True),
         "memory": resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024,
     }
     print(json.dumps(figures))
 
 
 def plain_luigi(probes, scratch):
-    """Seconds of the same stages, files and contents as plain Luigi tasks; prints them."""
+    """CPU seconds of the same stages, files and contents as plain Luigi tasks; prints them."""
     import logging
 
     import luigi
@@ -172,9 +184,9 @@ def plain_luigi(probes, scratch):
 
     logging.getLogger("luigi-interface").setLevel(logging.CRITICAL)
     roots = [Plain(probe=number, stage=target.stamp_path) for number in range(probes)]
-    began = time.perf_counter()
+    began = time.process_time()
     luigi.build(roots, local_scheduler=True, no_lock=True, log_level="CRITICAL")
-    print(json.dumps({"seconds": time.perf_counter() - began, "stages": len(stages)}))
+    print(json.dumps({"seconds": time.process_time() - began, "stages": len(stages)}))
 
 
 def _bytes_of(stage, contents):
@@ -188,34 +200,33 @@ def _bytes_of(stage, contents):
     }
 
 
-def apart(what, probes):
+def apart(what, probes, folder):
     """The figures of a measurement in a process and a folder of its own."""
-    scratch = tempfile.mkdtemp()
+    scratch = tempfile.mkdtemp(dir=folder)
     command = [sys.executable, __file__, "--apart", what, str(probes), scratch]
-    try:
-        run = subprocess.run(command, check=True, capture_output=True, text=True)
-        return json.loads(run.stdout.splitlines()[-1])
-    finally:
-        shutil.rmtree(scratch)
+    run = subprocess.run(command, check=True, stdout=subprocess.PIPE, text=True)
+    return json.loads(run.stdout.splitlines()[-1])
 
 
-def compare(probes, plain):
+def compare(probes, plain, folder):
     """Print all figures."""
     per_probe = {}
     for count in probes:
-        f = apart("nights", count)
+        f = apart("nights", count, folder)
         per_probe[count] = f["first"] / count
         print(
             f"{count:6} probes: engine {1e3 * per_probe[count]:.2f} ms a probe "
             f"({per_probe[count] / per_probe[probes[0]]:.2f} of the first line), "
             f"disk waits {1e3 * f['waited'] / count:.2f} ms a probe; unchanged night {f['unchanged']:.2f} s "
-            f"({1e3 * f['unchanged'] / count:.2f} ms a probe), verified {f['verified']:.2f} s; "
-            f"{f['memory']:.0f} MB"
+            f"({1e3 * f['unchanged'] / count:.2f} ms a probe), plan {f['plan']:.2f} s, "
+            f"verified {f['verified']:.2f} s; {f['memory']:.0f} MB",
+            flush=True,
         )
-    measured = {count: apart("plain", count) for count in plain}
-    for count, f in measured.items():
+    measured = {}
+    for count in plain:
+        measured[count] = f = apart("plain", count, folder)
         each = 1e3 * f["seconds"] / count
-        print(f"{count:6} probes as {f['stages']} plain Luigi tasks each: {each:.1f} ms a probe")
+        print(f"{count:6} probes as {f['stages']} plain Luigi tasks each: {each:.1f} ms a probe", flush=True)
     if len(plain) > 2:
         fitted = np.polyfit(plain, [f["seconds"] for f in measured.values()], 2)
         for count in probes:
@@ -228,14 +239,16 @@ def compare(probes, plain):
 def main():
     parser = argparse.ArgumentParser()
     parser.add_argument("--probes", type=int, nargs="+", default=[200, 2000, 10000])
-    parser.add_argument("--plain", type=int, nargs="*", default=[50, 100, 200])
-    parser.add_argument("--apart", nargs=3)
+    parser.add_argument("--plain", type=int, nargs="*", default=[50, 100, 200, 400])
+    parser.add_argument("--folder", help="on which file system; by default that of temporary files")
+    parser.add_argument("--apart", nargs=3, help=argparse.SUPPRESS)
     options = parser.parse_args()
     if options.apart:
         what, probes, scratch = options.apart
         {"nights": nights, "plain": plain_luigi}[what](int(probes), Path(scratch))
     else:
-        compare(options.probes, options.plain)
+        with tempfile.TemporaryDirectory(dir=options.folder) as folder:
+            compare(options.probes, options.plain, folder)
 
 
 if __name__ == "__main__":
