@@ -75,9 +75,9 @@ class Sum(Small):
         return {"sum": {"value": total}, "remark": inputs["remark"].json()}
 
 
-def sketch_of_sum(folder, pin="1", factor=2, stage=Sum):
+def sketch_of_sum(folder, pin="1", factor=2, stage=Sum, night=""):
     """The target of a folder whose source.txt is pinned as `pin`."""
-    return stage.sketch(plan=json.dumps({"folder": str(folder), "pin": pin, "factor": factor}))
+    return stage.sketch(night, plan=json.dumps({"folder": str(folder), "pin": pin, "factor": factor}))
 
 
 def write_source(folder, text):

@@ -3,6 +3,7 @@
 import os
 import subprocess
 import sys
+from pathlib import Path
 
 import pytest
 
@@ -21,7 +22,7 @@ def test_file_appears_only_when_it_is_renamed(tmp_path):
 
 
 def test_full_disk_is_told_with_the_space_that_is_needed_and_leaves_the_old_file(tmp_path, monkeypatch):
-    def no_room(file, chunks, synced):
+    def no_room(file, views, synced):
         file.write(b"half")
         raise OSError(28, "No space left on device")
 
@@ -42,7 +43,7 @@ def test_folder_in_the_way_is_an_error_with_its_name(tmp_path):
 def test_sweep_removes_leftovers_of_dead_processes_and_nothing_else(tmp_path):
     dead = subprocess.Popen([sys.executable, "-c", ""])
     dead.wait()
-    name = temporary_name(tmp_path / "faces.npy").name
+    name = Path(temporary_name(tmp_path / "faces.npy")).name
     dead_name = name.replace(f".{os.getpid()}.", f".{dead.pid}.")
     elsewhere = f".faces.npy.another-host.{dead.pid}.tmp"
     alive = name.replace(f".{os.getpid()}.", f".{os.getppid()}.")

@@ -21,19 +21,19 @@ def steps(monkeypatch):
         path = Path(f"/proc/self/fd/{handle}").readlink()
         done.append("sync folder" if path.is_dir() else f"sync {_final_name(path.name)}")
 
-    def unlink(path, missing_ok=False):
-        if path.exists():
-            done.append(f"remove {path.name}")
-        original_unlink(path, missing_ok)
+    def unlink(path):
+        if Path(path).exists():
+            done.append(f"remove {Path(path).name}")
+        original_unlink(path)
 
     def replace(beside, path):
-        done.append(f"rename {path.name}")
+        done.append(f"rename {Path(path).name}")
         original_replace(beside, path)
 
-    original_unlink, original_replace = Path.unlink, Path.replace
+    original_unlink, original_replace = os.unlink, os.replace
     monkeypatch.setattr(os, "fsync", fsync)
-    monkeypatch.setattr(Path, "unlink", unlink)
-    monkeypatch.setattr(Path, "replace", replace)
+    monkeypatch.setattr(os, "unlink", unlink)
+    monkeypatch.setattr(os, "replace", replace)
     monkeypatch.setattr(lots, "sync_file_systems", lambda folders: done.append("sync all"))
     return done
 

@@ -1,6 +1,7 @@
 """Running a stage: what is written in which order, what is left after a failure."""
 
 import json
+import os
 from pathlib import Path
 
 import pytest
@@ -77,8 +78,8 @@ def test_stamp_goes_before_outputs_appear_and_comes_after(tmp_path, monkeypatch)
         seen.append((Path(path).name, (tmp_path / "number.json.stamp").exists()))
         return original(beside, path)
 
-    original = Path.replace
-    monkeypatch.setattr(Path, "replace", replace)
+    original = os.replace
+    monkeypatch.setattr(os, "replace", replace)
     bake_depth_first(sketch_of_sum(tmp_path, pin="2", stage=ReadNumber), {})
     assert seen == [("number.json", False), ("remark.json", False), ("number.json.stamp", False)]
 

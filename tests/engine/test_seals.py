@@ -1,6 +1,7 @@
 """Seals: when they vouch for a chain, and when its stamps are asked."""
 
 import os
+from pathlib import Path
 
 import pytest
 from small_stages import Multiply, ReadNumber, Sum, sketch_of_sum, write_source
@@ -58,10 +59,19 @@ def test_run_of_any_stage_breaks_the_seal(folder, monkeypatch):
     assert not (folder / "sum.json.seal").exists()
 
 
+def test_seal_tells_what_ran_in_its_night_and_no_more(folder):
+    target = sketch_of_sum(folder)
+    assert [ran.title for ran in seals.ran_in("", chain_of(target).verdicts)] == ["number", "multiple", "sum"]
+    bake_lot([sketch_of_sum(folder, factor=3, night="the next")])
+    seal = seals.read_seal(target)
+    assert [title for _, title, _, _ in seal.ran] == ["multiple", "sum"]
+    assert seal.ran[0][2] == "factor was 2, is 3"
+
+
 def _read_files(monkeypatch, judge):
     read = []
     digest_file = stamps.digest_file
-    monkeypatch.setattr(stamps, "digest_file", lambda path: read.append(path.name) or digest_file(path))
+    monkeypatch.setattr(stamps, "digest_file", lambda path: read.append(Path(path).name) or digest_file(path))
     assert all(verdict.state == UP_TO_DATE for verdict in judge().verdicts)
     return sorted(read)
 

@@ -60,6 +60,22 @@ def test_missing_stamp_is_none(tmp_path):
     assert read_stamp(tmp_path / "none.stamp") is None
 
 
+def test_stamp_is_parsed_once_and_anew_when_another_stands_in_its_place(tmp_path):
+    path = tmp_path / "x.stamp"
+    stamp = Stamp("f", 1, {"a": [1]}, {}, {}, "r", 0.5, "now", "tonight", True)
+    write_stamp(path, stamp)
+    assert read_stamp(path) is read_stamp(path)
+    write_stamp(path, dataclasses.replace(stamp, night="later"))
+    assert read_stamp(path).night == "later"
+    path.unlink()
+    assert read_stamp(path) is None
+
+
+def test_stamp_just_written_is_told_as_its_file_gives_it_back(tmp_path):
+    write_stamp(tmp_path / "x.stamp", Stamp("f", 1, {"a": (1, 2)}, {}, {}, "r", 0.5, "now", "n", True))
+    assert read_stamp(tmp_path / "x.stamp").settings == {"a": [1, 2]}
+
+
 def test_voiding_keeps_what_is_on_record(tmp_path):
     path = tmp_path / "x.stamp"
     stamp = Stamp("f", 1, {"a": 1}, {}, {}, "r", 0.5, "now", "tonight", True)

@@ -75,11 +75,11 @@ class FillingDisk:
         self._write = atomic._write
         monkeypatch.setattr(atomic, "_write", self.write)
 
-    def write(self, file, chunks, synced):
-        self.room -= sum(memoryview(chunk).nbytes for chunk in chunks)
+    def write(self, file, views, synced):
+        self.room -= sum(view.nbytes for view in views)
         if self.room < 0:
             raise OSError(28, "No space left on device")
-        self._write(file, chunks, synced)
+        self._write(file, views, synced)
 
 
 @pytest.mark.parametrize("room", [100, 3000, 8000, 15_000, 25_000])
@@ -120,7 +120,7 @@ def test_output_that_may_not_be_written_is_told_by_name(tmp_path, monkeypatch):
     created = atomic._created
 
     def forbidden(path):
-        if ".faces.npy." in path.name:
+        if ".faces.npy." in path:
             raise PermissionError(13, "Permission denied")
         return created(path)
 

@@ -53,7 +53,7 @@ class Probe:
 
     def to_json(self) -> str:
         """Canonical JSON of the probe."""
-        return canonical_json(dataclasses.asdict(self))
+        return canonical_json({**vars(self), "packs": [vars(pack) for pack in self.packs]})
 
     @classmethod
     def from_json(cls, text: str) -> "Probe":

@@ -37,7 +37,8 @@ def chain_of(target: Stage, believing: bool = True) -> Chain:
     Parameters: believing : whether size and time may stand for bytes; else all bytes are read
     """
     seal, memo = read_seal(target), {}
-    staleness(target, memo, trust_by(seal, target) if believing else Trust(stamps=False))
+    trust = trust_by(seal, target) if believing else Trust(stamps=False)
+    staleness(target.anew(), memo, trust)
     return Chain(target, tuple(memo.values()), night=seal.night if seal else "")
 
 
@@ -49,10 +50,10 @@ def glance_at(target: Stage) -> Chain:
 
 def stages_below(target: Stage) -> list:
     """A target and all stages that it rests on, unjudged."""
-    found, waiting = {}, [target]
+    found, waiting = {}, [target.anew()]
     while waiting:
         stage = waiting.pop()
         if stage.stamp_path not in found:
             found[stage.stamp_path] = stage
-            waiting += stage.requires().values()
+            waiting += stage.below.values()
     return list(found.values())

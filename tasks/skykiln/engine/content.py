@@ -6,11 +6,11 @@ at hand too, so that the stages of a small probe don't open each other's files.
 
 import io
 import json
+import os
 from collections import OrderedDict
-from pathlib import Path
 from typing import NamedTuple
 
-from .digests import json_bytes
+from .digests import bytes_of, json_bytes
 
 AT_HAND_BYTES = 64 * 2**20
 
@@ -30,7 +30,7 @@ def chunks_of(content) -> list:
 class Input(NamedTuple):
     """A file that a stage reads, and the digest that its bytes have."""
 
-    path: Path
+    path: str
     digest: str
 
     def array(self):
@@ -46,13 +46,18 @@ class Input(NamedTuple):
         keep_at_hand(self, array)
         return array
 
+    @property
+    def size(self) -> int:
+        """Bytes of the file."""
+        return os.stat(self.path).st_size
+
     def json(self) -> dict:
         """The values of a JSON file."""
-        return json.loads(self.path.read_bytes())
+        return json.loads(self.bytes())
 
     def bytes(self) -> bytes:
         """All bytes of the file."""
-        return self.path.read_bytes()
+        return bytes_of(self.path)
 
 
 def keep_at_hand(file: Input, array):

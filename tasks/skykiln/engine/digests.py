@@ -2,7 +2,6 @@
 
 import hashlib
 import json
-from pathlib import Path
 
 
 def digest_chunks(chunks) -> str:
@@ -13,10 +12,16 @@ def digest_chunks(chunks) -> str:
     return digest.hexdigest()
 
 
-def digest_file(path: Path) -> str:
+def digest_file(path) -> str:
     """Digest of a file's bytes. Raises OSError."""
-    with path.open("rb") as file:
+    with open(path, "rb", buffering=0) as file:
         return hashlib.file_digest(file, "sha256").hexdigest()
+
+
+def bytes_of(path) -> bytes:
+    """All bytes of a file. Raises OSError."""
+    with open(path, "rb", buffering=0) as file:
+        return file.read()
 
 
 def json_bytes(value) -> bytes:

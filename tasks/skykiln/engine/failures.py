@@ -7,12 +7,11 @@ import json
 import sys
 import traceback
 from contextlib import contextmanager
-from pathlib import Path
 from typing import NamedTuple
 
 from ..errors import SkykilnError
 from .atomic import remove, write_atomically
-from .digests import json_bytes
+from .digests import bytes_of, json_bytes
 
 _unwritten: dict = {}  # path -> Failure, of this process
 
@@ -36,17 +35,18 @@ def recorded(stage):
     except Exception as error:
         _record(stage, _failure(stage, error))
         raise
-    _unwritten.pop(str(failure_path(stage)), None)
-    remove(failure_path(stage))
+    path = failure_path(stage)
+    _unwritten.pop(path, None)
+    remove(path)
 
 
 def read_failure(stage) -> Failure | None:
     """The failure that a stage left, if it did."""
     path = failure_path(stage)
-    return _unwritten.get(str(path)) or _read(path)
+    return _unwritten.get(path) or _read(path)
 
 
-def is_failure(path: Path) -> bool:
+def is_failure(path) -> bool:
     """Whether a file is such a cause."""
     return _read(path) is not None
 
@@ -56,9 +56,9 @@ def forget_failure(stage):
     remove(failure_path(stage))
 
 
-def failure_path(stage) -> Path:
+def failure_path(stage) -> str:
     """Where a stage leaves the cause."""
-    return Path(stage.stamp_path).with_suffix(".failure")
+    return f"{stage.stamp_path.removesuffix('.stamp')}.failure"
 
 
 def _record(stage, failure):
@@ -66,13 +66,13 @@ def _record(stage, failure):
     try:
         write_atomically(path, [json_bytes(failure._asdict())], synced=False)
     except SkykilnError:  # where nothing can be written, the cause is as a rule just that
-        _unwritten[str(path)] = failure
+        _unwritten[path] = failure
         print(failure.cause, file=sys.stderr, flush=True)
 
 
 def _read(path):
     try:
-        return Failure(**json.loads(path.read_bytes()))
+        return Failure(**json.loads(bytes_of(path)))
     except (OSError, ValueError, TypeError):
         return None
 

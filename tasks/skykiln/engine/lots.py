@@ -8,8 +8,8 @@ targets is made up to what is published; then, for all of them at once: everythi
 disk; the published files appear; their names are brought to the disk; stamps and seals appear.
 """
 
+import os
 import time
-from pathlib import Path
 
 from .atomic import sync_file_systems
 from .failures import recorded
@@ -29,7 +29,7 @@ def bake_lot(targets) -> list:
     failed, batch, began = [], [], time.monotonic()
     for target in targets:
         try:
-            batch.append(_prepared(target))
+            batch.append(_prepared(target.anew()))
         except Exception:  # even a bug is one probe's; its traceback lies beside the stamp
             failed.append(target.owner)
         if len(batch) == LARGEST_BATCH or time.monotonic() - began > BATCH_SECONDS:
@@ -46,7 +46,7 @@ def bake_depth_first(stage, memo: dict, trust: Trust = BY_STAMPS):
     path = stage.stamp_path
     if path in memo:
         return
-    for dependency in stage.requires().values():
+    for dependency in stage.below.values():
         bake_depth_first(dependency, memo, trust)
     verdict = staleness(stage, memo, trust)
     if not verdict.settled:
@@ -71,7 +71,7 @@ def form_lots(items, seconds, longest) -> list:
 def _prepared(target):
     """(target, verdicts below and of it, its outputs as written beside or None if it is settled)"""
     memo, trust = {}, trust_by(read_seal(target), target)
-    for dependency in target.requires().values():
+    for dependency in target.below.values():
         bake_depth_first(dependency, memo, trust)
     verdict = staleness(target, memo, trust)
     if verdict.settled:
@@ -94,8 +94,8 @@ def _publish(batch) -> list:
 
 def _sync(batch):
     targets = [target for target, _, _ in batch]
-    files = [path for target in targets[:1] for path in (target.seal_path, *target.files().values())]
-    sync_file_systems({Path(path).parent for path in files})
+    files = [path for target in targets[:1] for path in (target.seal_path, *target.paths.values())]
+    sync_file_systems({os.path.dirname(path) for path in files})
 
 
 def _done(each, failed, step):

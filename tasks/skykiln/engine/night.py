@@ -11,7 +11,7 @@ from .atomic import remove, sweep, sync_file_systems, write_atomically, write_be
 from .chains import Chain, chain_of, glance_at, stages_below
 from .digests import json_bytes
 from .failures import Failure, forget_failure, read_failure
-from .seals import write_seal
+from .seals import Ran, ran_in, read_seal, vouches, write_seal
 from .staleness import HELD, WILL_RUN
 from .stamps import void_stamp
 
@@ -42,15 +42,6 @@ class Standing(NamedTuple):
         return cls(chain.target, len(chain.stale), bool(chain.sealed), chain.night, chain.held_by)
 
 
-class Ran(NamedTuple):
-    """A stage that ran in this night."""
-
-    label: str
-    title: str
-    reason: str
-    seconds: float
-
-
 class Outcome:
     """What became of one target.
 
@@ -63,14 +54,13 @@ class Outcome:
         self.target = before.target
         self.ran, self.failure, self.held_by = [], None, before.held_by
         if before.waiting or before.night == night:
-            after = chain_of(before.target)
-            stamps = [(verdict.stage, verdict.stamp) for verdict in after.verdicts if verdict.stamp]
-            self.ran = [
-                Ran(stage.label, stage.title, stamp.reason, stamp.seconds)
-                for stage, stamp in stamps
-                if stamp.night == night
-            ]
-            self.failure, self.held_by = failure_of(after), after.held_by
+            seal = read_seal(before.target)
+            if vouches(seal, before.target) and seal.night == night:
+                self.ran = [Ran(*told) for told in seal.ran]
+            else:
+                after = chain_of(before.target)
+                self.ran = ran_in(night, after.verdicts)
+                self.failure, self.held_by = failure_of(after), after.held_by
 
     @property
     def state(self) -> str:
@@ -108,12 +98,14 @@ class Night:
     def sweep(self):
         """Remove what earlier nights left half done: it lies where no seal stands."""
         for standing in [standing for standing in self.standings if not standing.sealed]:
-            folders = set()
-            for stage in stages_below(standing.target):
-                folders |= {Path(path).parent for path in (stage.stamp_path, *stage.files().values())}
-                forget_failure(stage)
+            stages = stages_below(standing.target)
+            paths = (path for stage in stages for path in (stage.stamp_path, *stage.paths.values()))
+            folders = list(filter(os.path.isdir, {os.path.dirname(path) for path in paths}))
             for folder in folders:
                 sweep(folder)
+            if folders:
+                for stage in stages:
+                    forget_failure(stage)
 
     @cached_property
     def outcomes(self) -> list[Outcome]:
@@ -125,7 +117,7 @@ class Night:
         unsealed = [standing.target for standing in self.standings if not standing.sealed]
         settled = [target for target in unsealed if _stands_without_seal(target)]
         if settled:
-            sync_file_systems({Path(target.seal_path).parent for target in settled})
+            sync_file_systems({os.path.dirname(target.seal_path) for target in settled})
         for target in settled:
             write_seal(target, chain_of(target).verdicts)
 

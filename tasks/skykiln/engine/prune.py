@@ -10,6 +10,7 @@ from typing import NamedTuple
 from .atomic import remove, sweep
 from .chains import stages_below
 from .failures import failure_path, is_failure
+from .relative import joined
 from .stamps import read_stamp
 
 
@@ -61,19 +62,12 @@ def _leftover(path, wanted):
         return None
     outputs, kept = [], []
     for record in reversed(stamp.outputs.values()):
-        # Textually, as it was written: a folder on the way may be a link.
-        file = _joined(path.parent, record.file)
+        file = Path(joined(str(path.parent), record.file))
         if str(file) not in wanted and file.is_file() and not file.is_symlink():
             (outputs if record.fits(file, believed=False) else kept).append(file)
     beside = [path.with_suffix(suffix) for suffix in (".seal", ".failure")]
     beside = [each for each in beside if each.exists() and str(each) not in wanted]
     return Leftover(outputs, [*beside, path], kept)
-
-
-def _joined(folder, relative):
-    for part in relative.split("/"):
-        folder = folder.parent if part == ".." else folder / part
-    return folder
 
 
 def _remove_empty(folder, build_dir):

@@ -13,7 +13,6 @@ digest of its outputs, so one that came back beside other bytes is not believed.
 import os
 import time
 from datetime import UTC, datetime
-from pathlib import Path
 from typing import NamedTuple
 
 from ..errors import SkykilnError
@@ -21,6 +20,7 @@ from .atomic import remove, rename_into_place, sync_folder, write_beside
 from .content import Input, chunks_of, keep_at_hand
 from .digests import digest_chunks, digest_file
 from .failures import recorded
+from .relative import relative_to
 from .seals import break_seal
 from .staleness import UP_TO_DATE, Verdict
 from .stamps import OutputRecord, Stamp, read_stamp, write_stamp
@@ -52,7 +52,7 @@ def run_stage(stage, verdict, on_disk: bool = True) -> Verdict:
         written = write_outputs(stage, verdict, on_disk)
         put_in_place(written)
         if stage.published:
-            for folder in {Path(stage.files()[role]).parent for role in written.fresh}:
+            for folder in {os.path.dirname(stage.paths[role]) for role in written.fresh}:
                 sync_folder(folder)
         return certify(written)
 
@@ -62,27 +62,27 @@ def write_outputs(stage, verdict, on_disk: bool) -> Written:
     began = time.perf_counter()
     contents = stage.make(_inputs(stage, verdict))
     _check_inputs_stand(stage, verdict)
-    records, fresh, folder = {}, {}, Path(stage.stamp_path).parent
+    records, fresh, folder = {}, {}, os.path.dirname(stage.stamp_path)
     try:
-        for role, path in _paths(stage).items():
+        for role, path in stage.paths.items():
             digest = _write_beside(path, role, contents[role], fresh, on_disk)
             # The time is that of the file written, not of whatever may stand in its place by now.
-            status = fresh.get(role, path).stat()
-            records[role] = OutputRecord.of(os.path.relpath(path, folder), digest, status)
+            status = os.stat(fresh.get(role, path))
+            records[role] = OutputRecord.of(relative_to(folder, path), digest, status)
     except BaseException:
         for beside in fresh.values():
-            beside.unlink(missing_ok=True)
+            remove(beside)
         raise
     return Written(stage, verdict, fresh, records, time.perf_counter() - began, on_disk)
 
 
 def put_in_place(written: Written):
     """Let the outputs appear."""
-    stage, fresh, files = written.stage, written.fresh, _paths(written.stage)
+    stage, fresh, files = written.stage, written.fresh, written.stage.paths
     superseded, last = stage.superseded(), next(reversed(files))
     break_seal(stage)
     if fresh or superseded:
-        remove(Path(stage.stamp_path))
+        remove(stage.stamp_path)
     if stage.published and last in fresh:
         remove(files[last])
     for role in [role for role in fresh if role != last]:
@@ -115,25 +115,21 @@ def certify(written: Written, on_disk: bool = False) -> Verdict:
     return Verdict(stage, UP_TO_DATE, (), verdict.inputs, stamp)
 
 
-def _paths(stage):
-    return {role: Path(path) for role, path in stage.files().items()}
-
-
 def _inputs(stage, verdict):
     unready = [role for role, digest in verdict.inputs.items() if digest is None]
     if unready:
         raise SkykilnError(f"{stage.label}: {', '.join(unready)} is not up to date; bake again")
     inputs = {}
-    for role, dependency in stage.requires().items():
-        path = dependency.files()[dependency.output_role(role)]
-        inputs[role] = Input(Path(path), verdict.inputs[role])
+    for role, dependency in stage.below.items():
+        path = dependency.paths[dependency.output_role(role)]
+        inputs[role] = Input(path, verdict.inputs[role])
     return inputs
 
 
 def _check_inputs_stand(stage, verdict):
     """What was read must still be what its maker's stamp says."""
     stamps = {}
-    for role, dependency in stage.requires().items():
+    for role, dependency in stage.below.items():
         path = dependency.stamp_path
         stamp = stamps[path] = stamps[path] if path in stamps else read_stamp(path)
         if stamp is None or stamp.outputs[dependency.output_role(role)].digest != verdict.inputs[role]:
@@ -154,6 +150,6 @@ def _write_beside(path, role, content, fresh, on_disk):
 def _holds(path, chunks, digest):
     try:
         size = sum(memoryview(chunk).nbytes for chunk in chunks)
-        return path.stat().st_size == size and digest_file(path) == digest
+        return os.stat(path).st_size == size and digest_file(path) == digest
     except OSError:
         return False

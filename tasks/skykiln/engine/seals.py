@@ -8,14 +8,23 @@ needs to be looked at: an unchanged night reads one file per probe. The first st
 import json
 import os
 from contextlib import suppress
-from pathlib import Path
 from typing import NamedTuple
 
 from ..errors import FileError
 from .atomic import remove, write_atomically
-from .digests import digest_chunks
+from .digests import bytes_of, digest_chunks
+from .relative import joined, relative_to
 from .release import code_digest
 from .staleness import UP_TO_DATE, Trust
+
+
+class Ran(NamedTuple):
+    """A stage that ran in a night."""
+
+    label: str
+    title: str
+    reason: str
+    seconds: float
 
 
 class Seal(NamedTuple):
@@ -24,6 +33,7 @@ class Seal(NamedTuple):
     asked, code : digests of what the target was asked for, and of the code that answered
     night : the night in which it was written; stages : their number, 0 if the target is held
     files : path relative to the seal's folder, size, time in ns, of every output
+    ran : the values of a Ran for each stage that ran in that night
     """
 
     asked: str
@@ -31,12 +41,23 @@ class Seal(NamedTuple):
     night: str
     stages: int
     files: list
+    ran: list
+
+
+def ran_in(night: str, verdicts) -> list[Ran]:
+    """The stages that ran in a night, by their stamps."""
+    stamped = [(verdict.stage, verdict.stamp) for verdict in verdicts if verdict.stamp]
+    return [
+        Ran(stage.label, stage.title, stamp.reason, stamp.seconds)
+        for stage, stamp in stamped
+        if stamp.night == night
+    ]
 
 
 def read_seal(target) -> Seal | None:
     """The seal of a target, or None when there is none that can be understood."""
     try:
-        return Seal(**json.loads(Path(target.seal_path).read_bytes()))
+        return Seal(**json.loads(bytes_of(target.seal_path)))
     except (OSError, ValueError, TypeError):
         return None
 
@@ -58,23 +79,24 @@ def write_seal(target, verdicts):
 
     Parameters: verdicts : those of its whole chain, all settled
     """
-    folder = Path(target.seal_path).parent
+    folder = os.path.dirname(target.seal_path)
     files = [
-        [os.path.relpath(path, folder), *verdict.stamp.outputs[role].seen]
+        [relative_to(folder, path), *verdict.stamp.outputs[role].seen]
         for verdict in verdicts
         if verdict.state == UP_TO_DATE
-        for role, path in verdict.stage.files().items()
+        for role, path in verdict.stage.paths.items()
     ]
+    ran = ran_in(target.night, verdicts)
     whole = all(verdict.state == UP_TO_DATE for verdict in verdicts)
-    seal = Seal(*_sign(target), target.night, len(verdicts) if whole else 0, files)
+    seal = Seal(*_sign(target), target.night, len(verdicts) if whole else 0, files, ran)
     data = json.dumps(seal._asdict(), ensure_ascii=False).encode()
     with suppress(FileError):  # all is made and stamped; without a seal it is only looked at more closely
-        write_atomically(Path(target.seal_path), [data], synced=False)
+        write_atomically(target.seal_path, [data], synced=False)
 
 
 def break_seal(stage):
     """Take away the seal of the target that a stage works for."""
-    remove(Path(stage.seal_path))
+    remove(stage.seal_path)
 
 
 def _sign(target):
@@ -82,14 +104,14 @@ def _sign(target):
 
 
 def _files(seal, target):
-    folder = Path(target.seal_path).parent
+    folder = os.path.dirname(target.seal_path)
     for file, size, mtime_ns in seal.files:
-        yield os.path.normpath(f"{folder}/{file}"), size, mtime_ns
+        yield joined(folder, file), size, mtime_ns
 
 
 def _stands(path, size, mtime_ns):
     try:
-        status = os.stat(path)  # noqa: PTH116, it is asked some 20 times a probe
+        status = os.stat(path)
     except OSError:
         return False
     return (status.st_size, status.st_mtime_ns) == (size, mtime_ns)

@@ -15,6 +15,7 @@ through the digests of the inputs.
 """
 
 import json
+from functools import cached_property
 
 import luigi
 
@@ -47,6 +48,13 @@ class Stage(luigi.Task):
         vars(stage).update(parameters, night=night, sketched=True)
         return stage
 
+    def anew(self) -> "Stage":
+        """A copy that has not been asked for anything yet: what is found below it goes with it."""
+        copy = object.__new__(type(self))
+        forgotten = ("below", "paths")
+        vars(copy).update((name, value) for name, value in vars(self).items() if name not in forgotten)
+        return copy
+
     def full(self) -> "Stage":
         """The Luigi task of a sketch."""
         names = self.get_param_names(include_significant=True)
@@ -64,6 +72,16 @@ class Stage(luigi.Task):
 
     def requires(self) -> dict:
         return {}
+
+    @cached_property
+    def below(self) -> dict:
+        """What `requires` says, asked once. Stages whose chain is looked at are made anew for it."""
+        return self.requires()
+
+    @cached_property
+    def paths(self) -> dict:
+        """What `files` says, asked once."""
+        return self.files()
 
     def settings(self) -> dict:
         return {}
@@ -83,7 +101,7 @@ class Stage(luigi.Task):
     @property
     def stamp_path(self) -> str:
         """Where the stamp lies: beside the first output."""
-        return f"{next(iter(self.files().values()))}.stamp"
+        return f"{next(iter(self.paths.values()))}.stamp"
 
     @property
     def seal_path(self) -> str:
@@ -102,11 +120,10 @@ class Stage(luigi.Task):
 
     def output_role(self, role: str) -> str:
         """Which output is meant by whoever reads this stage under `role`."""
-        files = self.files()
-        return role if role in files else next(iter(files))
+        return role if role in self.paths else next(iter(self.paths))
 
     def output(self):
-        return {role: luigi.LocalTarget(path) for role, path in self.files().items()}
+        return {role: luigi.LocalTarget(path) for role, path in self.paths.items()}
 
     def complete(self) -> bool:
         return staleness(self, {}).settled

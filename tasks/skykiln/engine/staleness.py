@@ -1,6 +1,6 @@
 """The one place that decides whether a stage is up to date, with a sentence for every reason."""
 
-from pathlib import Path
+import os
 from typing import NamedTuple
 
 from .differences import setting_reasons
@@ -67,14 +67,14 @@ def staleness(stage, memo: dict, trust: Trust = BY_STAMPS) -> Verdict:
 
 
 def _verdict(stage, memo, trust):
-    required = stage.requires()
-    inputs = dict(stage.pins())
+    required, pins = stage.below, stage.pins()
+    inputs = dict(pins)
     for role, dependency in required.items():
         below = staleness(dependency, memo, trust)
         known = below.stamp.outputs[dependency.output_role(role)] if below.up_to_date else None
         inputs[role] = known and known.digest
     stamp = read_stamp(stage.stamp_path)
-    words = _input_words(stage.pins(), required)
+    words = _input_words(pins, required)
     reasons = tuple(_reasons(stage, stamp, inputs, words, trust))
     if reasons:
         held = stage.held_by() if None not in inputs.values() else ()
@@ -87,7 +87,7 @@ def _verdict(stage, memo, trust):
 
 def _reasons(stage, stamp, inputs, words, trust):
     if stamp is None:
-        begun = any(Path(path).exists() for path in stage.files().values())
+        begun = any(map(os.path.exists, stage.paths.values()))
         yield "its last run did not end" if begun else "was never baked"
     elif stamp.void:
         yield stamp.void
@@ -97,7 +97,7 @@ def _reasons(stage, stamp, inputs, words, trust):
         yield from _version_reasons(stage, stamp)
         yield from setting_reasons(stamp.settings, stage.settings())
         yield from dict.fromkeys(_input_reasons(stamp.inputs, inputs, words))
-        yield from _output_reasons(stamp, stage.files(), trust)
+        yield from _output_reasons(stamp, stage.paths, trust)
 
 
 def _version_reasons(stage, stamp):
@@ -130,12 +130,12 @@ def _output_reasons(stamp, files, trust):
     for role, record in stamp.outputs.items():
         seen = (files[role], *record.seen)
         try:
-            fits = record.fits(Path(files[role]), trust.stamps and (stamp.on_disk or seen in trust.files))
+            fits = record.fits(files[role], trust.stamps and (stamp.on_disk or seen in trust.files))
         except OSError:
-            yield f"{Path(record.file).name} is missing"
+            yield f"{os.path.basename(record.file)} is missing"
         else:
             if not fits:
-                yield f"{Path(record.file).name} was changed by something else"
+                yield f"{os.path.basename(record.file)} was changed by something else"
 
 
 def _words(role):

@@ -6,11 +6,14 @@ A stamp is removed before its outputs are replaced and written after, so a stamp
 import dataclasses
 import json
 import os
-from pathlib import Path
+from collections import OrderedDict
 from typing import NamedTuple
 
 from .atomic import write_atomically
-from .digests import digest_file
+from .digests import bytes_of, digest_file
+
+AT_HAND = 64  # stamps: those of the few probes at work
+_at_hand: OrderedDict = OrderedDict()  # path -> (signature of the file, Stamp)
 
 
 class OutputRecord(NamedTuple):
@@ -30,13 +33,13 @@ class OutputRecord(NamedTuple):
         """Size and time."""
         return self.size, self.mtime_ns
 
-    def fits(self, path: Path, believed: bool = True) -> bool:
+    def fits(self, path, believed: bool = True) -> bool:
         """Whether the file still holds the recorded bytes.
 
         Parameters: believed : whether size and time may prove it; else the bytes are read
         Raises:     FileNotFoundError
         """
-        status = path.stat()
+        status = os.stat(path)
         if believed and (status.st_size, status.st_mtime_ns) == self.seen:
             return True
         return status.st_size == self.size and digest_file(path) == self.digest
@@ -81,15 +84,18 @@ class Stamp:
 
 def read_stamp(path) -> Stamp | None:
     """The stamp, or None when there is none that can be understood."""
+    path = os.fspath(path)
     try:
-        return Stamp.from_bytes(Path(path).read_bytes())
+        signature = _signature(path)
+        known, stamp = _at_hand.get(path, (None, None))
+        return stamp if known == signature else _read(path, signature)
     except (OSError, ValueError, TypeError, AttributeError, KeyError):
         return None
 
 
 def write_stamp(path, stamp: Stamp):
     """Put a stamp in its place."""
-    write_atomically(Path(path), [stamp.to_bytes()], synced=False)
+    write_atomically(path, [stamp.to_bytes()], synced=False)
 
 
 def void_stamp(path, why: str):
@@ -97,3 +103,18 @@ def void_stamp(path, why: str):
     stamp = read_stamp(path)
     if stamp is not None:
         write_stamp(path, dataclasses.replace(stamp, void=why))
+
+
+def _signature(path):
+    """Tells one content of a stamp from another: each is a file of its own, renamed into the place."""
+    status = os.stat(path)
+    return status.st_ino, status.st_mtime_ns, status.st_size
+
+
+def _read(path, signature):
+    stamp = Stamp.from_bytes(bytes_of(path))
+    _at_hand[path] = signature, stamp
+    _at_hand.move_to_end(path)
+    if len(_at_hand) > AT_HAND:
+        _at_hand.popitem(last=False)
+    return stamp

@@ -74,7 +74,7 @@ def _files(settings, packed_names, inputs, facts, kind):
                         "container": pack["container"],
                         "pixels": pixels,
                         "cube_axes": pack["cube_axes"],
-                        "bytes": inputs[name].path.stat().st_size,
+                        "bytes": inputs[name].size,
                         "gpu_bytes": facts[name]["gpu_bytes"],
                         "digest": inputs[name].digest,
                         "coding_error": facts[name]["coding_error"],
