@@ -257,6 +257,12 @@ def test_large_display_window_counts_against_the_limit(tmp_path):
     assert "100000 x 100000 is more than the limit" in message(path)
 
 
+def test_display_window_of_nearly_nothing_is_refused(tmp_path):
+    display = (np.array([0, 0], "i4"), np.array([48 * 64, 23], "i4"))
+    path = write(tmp_path / "sky.exr", {"RGB": PIXELS}, displayWindow=display)
+    assert "display window, 3073 x 24, there are 48 x 24 pixels" in message(path)
+
+
 def test_values_of_all_channels_count_against_the_limit(tmp_path):
     path = write(tmp_path / "sky.exr", {f"c{i}": plane() for i in range(40)} | colours())
     assert "hold 49536 values, more than 16" in message(path, max_pixels=24 * 48)

@@ -49,7 +49,8 @@ def read_cube_texture(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
     if about.get("content") == "irradiance":
         raise FileError(f"{name}: holds irradiance, not radiance; name the probe's specular file")
     stops, axes = _stops(name, about), about.get("cube_axes")
-    pixels = np.ascontiguousarray(faces[..., :3] * np.float32(2.0**stops), np.float32)
+    with np.errstate(over="ignore", invalid="ignore"):
+        pixels = np.ascontiguousarray(faces[..., :3] * np.float32(2.0**stops), np.float32)
     space = _PRIMARIES.get(texture.primaries)
     return Image(pixels, _facts(texture, stops, axes, about, space), chromaticities=space)
 

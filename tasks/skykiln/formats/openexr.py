@@ -18,6 +18,8 @@ _PIXEL_TYPES = {np.dtype("float16"): "half", np.dtype("float32"): "float", np.dt
 _TILE_PIXELS = 1 << 20
 # The package reads every channel of every part: the limit is of that many channels of the largest picture.
 _CHANNELS = 16
+# Of the display window against the data window.
+_LARGEST_SHARE = 64
 
 
 def read_openexr(path, options: ReadOptions = AS_IT_IS) -> Image:
@@ -36,6 +38,7 @@ def read_openexr(path, options: ReadOptions = AS_IT_IS) -> Image:
     picture = choose_picture(name, parts, options)
     for window in (picture.part.display, picture.part.window):
         check_size(name, *_size(window), options.max_pixels)
+    _check_share(name, picture.part)
     channels = _read_channels(name, picture.part, len(parts))
     pixels, uncovered = rgb_pixels(name, picture, channels)
     return Image(
@@ -58,6 +61,16 @@ def _check_part(name: str, part: Part) -> None:
         raise FileError(f"{name}: part {part.number} is a deep image; flatten it and export it again")
     if part.tile_pixels > max(_TILE_PIXELS, width * height):
         raise FileError(f"{name}: its tiles are far larger than the picture; export it again")
+
+
+def _check_share(name: str, part: Part) -> None:
+    """A damaged window would make a sky of nothing."""
+    (width, height), (columns, rows) = _size(part.display), _size(part.window)
+    if width * height > _LARGEST_SHARE * columns * rows:
+        raise FileError(
+            f"{name}: of its display window, {width} x {height}, there are {columns} x {rows} pixels; "
+            "mend its header"
+        )
 
 
 def _check_samples(name: str, parts: list[Part], max_pixels: int) -> None:

@@ -19,7 +19,7 @@ import OpenEXR
 from skykiln.errors import FileError
 
 _WARNING = "Warning: Exception raised"
-_LIBRARY_ERROR = b"(EXR_ERR_"
+_LIBRARY_ERRORS = (b"(EXR_ERR_", b"ojph ")  # of OpenEXR's core and of its JPEG 2000
 _stderr_lock = threading.Lock()
 
 
@@ -66,6 +66,6 @@ def _quiet_library():
 
 def _pass_on(lines):
     """Write to stderr what the library has not written."""
-    others = b"".join(line for line in lines if _LIBRARY_ERROR not in line)
+    others = b"".join(line for line in lines if not any(error in line for error in _LIBRARY_ERRORS))
     while others:
         others = others[os.write(2, others) :]

@@ -1,4 +1,8 @@
-"""PNG and JPEG, made for screens: read on request only (`low_range`)."""
+"""PNG and JPEG, made for screens: read on request only (`low_range`).
+
+A damaged JPEG can go unnoticed: its decoder fills what it can't read with grey, and the form has no check
+sums. A cut one is noticed, and one that is far too short for its size.
+"""
 
 import io
 import struct
@@ -44,6 +48,9 @@ def read_jpeg(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
     try:
         picture = JpegImageFile(io.BytesIO(data))
         check_size(name, *picture.size, options.max_pixels)
+        # Blocks of 8 x 8 pixels take a bit each at least (ITU-T T.81, F.1.2).
+        if picture.width * picture.height > 8 * 64 * len(data):
+            raise FileError(f"{name}: far too short for a picture of its size; export it again")
         if picture.mode not in _MODES:
             raise FileError(f"{name}: a JPEG picture of {picture.mode}; export it as RGB")
         stored = np.asarray(picture)

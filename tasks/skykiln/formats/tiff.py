@@ -1,7 +1,8 @@
 """TIFF pictures, through `tifffile` and the codecs of `imagecodecs`.
 
 The library fills missing strips and tiles with zeros, so their places in the file are checked against its
-length before any is read; and it tells oddities through `logging`, which is kept from the screen meanwhile.
+length before any is read. What it can't make sense of it tells through `logging` and goes on, with what a
+missing tag would mean; so it is listened to, and kept from the screen.
 """
 
 import contextlib
@@ -47,8 +48,10 @@ def read_tiff(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
     """
     name = str(path)
     try:
-        with _quiet(), tifffile.TiffFile(name) as file:
+        with _remarks() as remarks, tifffile.TiffFile(name) as file:
             number, page = _page(name, file, options.part)
+            if remarks:
+                raise FileError(f"{name}: damaged or cut ({remarks[0]}); export it again")
             _check_page(name, page, options)
             _check_places(name, page, path.stat().st_size)
             stored = page.asarray(maxworkers=1)
@@ -57,15 +60,26 @@ def read_tiff(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
         raise FileError(f"{name}: a damaged or cut TIFF file ({error}); export it again") from error
 
 
+class _Listener(logging.Handler):
+    def __init__(self, errors: list[str]):
+        super().__init__()
+        self._errors = errors
+
+    def emit(self, record):
+        if record.levelno >= logging.ERROR:
+            self._errors.append(record.getMessage()[:200])
+
+
 @contextlib.contextmanager
-def _quiet():
-    """Keep the library's remarks from the screen, where the program itself listens to none."""
-    logger, handler = logging.getLogger("tifffile"), logging.NullHandler()
-    logger.addHandler(handler)
+def _remarks():
+    """A list that the library's errors are put into, of whatever file is being read in this process."""
+    logger, errors = logging.getLogger("tifffile"), []
+    listener = _Listener(errors)
+    logger.addHandler(listener)
     try:
-        yield
+        yield errors
     finally:
-        logger.removeHandler(handler)
+        logger.removeHandler(listener)
 
 
 def _page(name: str, file: tifffile.TiffFile, wanted: str | int | None) -> tuple[int, tifffile.TiffPage]:
@@ -75,6 +89,8 @@ def _page(name: str, file: tifffile.TiffFile, wanted: str | int | None) -> tuple
             pages.append(file.pages[number])
         except IndexError:
             break
+    if not pages:
+        raise FileError(f"{name}: no picture in it, so it is damaged or cut; export it again")
     full = [number for number, page in enumerate(pages) if not page.subfiletype & _REDUCED]
     chosen = [number for number in full if wanted in (None, number, str(number))]
     if len(chosen) != 1:
