@@ -1,0 +1,36 @@
+"""A night over the whole corpus of malformed sources: each is told, none leaves anything behind."""
+
+import sys
+from pathlib import Path
+
+from tiny_pipeline import TinyPipeline, published
+
+sys.path.append(str(Path(__file__).parents[1] / "formats"))
+from hostile_corpus import write_corpus
+
+# A source's bytes are digested before they are read: those of a sparse file of a TB would take the night.
+TOO_LONG = "sparse.hdr"
+
+
+def test_malformed_sources_are_told_and_leave_nothing_while_the_sound_one_is_baked(tmp_path):
+    pipeline = TinyPipeline(tmp_path, probes=["ferry_noon"])
+    paths = [path for path in write_corpus(tmp_path / "corpus") if path.name != TOO_LONG]
+    files = {f"hostile_{number:03}": f"corpus/{path.name}" for number, path in enumerate(paths)}
+    pipeline.settings["sources"] |= {name: {"file": file, "recipe": "tiny"} for name, file in files.items()}
+    pipeline.bake()
+
+    record, total = pipeline.night_record(), len(files) + 1
+    assert record["exit_status"] == 1
+    assert record["totals"] == {
+        "probes": total, "rebuilt": 1, "unchanged": 0, "held": 0, "failed": len(files),
+    }  # fmt: skip
+    failures = {entry["name"]: entry["failure"] for entry in record["probes"] if entry["name"] in files}
+    for name, file in files.items():
+        assert failures[name]["file"] == file
+        assert failures[name]["cause"].startswith(f"{file}: ")
+    assert all(failure.traceback == "" for _, failure in pipeline.night.failures)
+
+    left = [path for path in pipeline.build.rglob("*") if path.is_file() and "hostile" in str(path)]
+    assert [path for path in left if path.suffix != ".failure"] == []
+    probes = {name.split("/")[1] for name in published(pipeline.build) if name.startswith("probes/")}
+    assert probes == {"ferry_noon"}
