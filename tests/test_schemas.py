@@ -22,6 +22,35 @@ PACKED = {
     "digest": DIGEST,
     "coding_error": {"flux": 0.0001, "log2_rms": 0.01},
 }
+TEXEL = {
+    "map": "level 1",
+    "direction": [0.0, 1.0, 0.0],
+    "channel": "green",
+    "baked": 1.01,
+    "estimate": 1.0,
+    "deviation": 0.01,
+    "z": 0.9,
+    "used": 0.2,
+}
+AUDIT = {
+    "passed": True,
+    "why": "",
+    "texels": 200,
+    "samples": 200000,
+    "share_passed": 1.0,
+    "limit": 6.0,
+    "worst": TEXEL,
+    "maps": [{"map": "all", "texels": 200, "deviation": 0.001, "z": 0.5, "used": 0.1, "worst": TEXEL}],
+    "files": [
+        {
+            "file": "specular.rgba16f.ktx2",
+            "against": "the source",
+            "passed": True,
+            "share_passed": 1.0,
+            "used": 0.2,
+        }
+    ],
+}
 PROBE = {
     "schema": 1,
     "name": "concourse/stair_02",
@@ -62,7 +91,7 @@ PROBE = {
         "lost_to_clamping": 0.0,
     },
     "bytes": {"disk": 1000, "gpu": 2000},
-    "audit": None,
+    "audit": AUDIT,
 }
 BRDF = {
     "schema": 1,
@@ -82,6 +111,10 @@ NIGHT_ENTRY = {
     "stages": [],
     "failure": None,
     "gates": [],
+    "audit": {
+        **{key: AUDIT[key] for key in ("passed", "why", "texels", "share_passed")},
+        "worst": {key: TEXEL[key] for key in ("map", "deviation", "z")},
+    },
     "accepted": False,
     "bytes": {"disk": 500, "gpu": 1000},
 }
@@ -126,7 +159,7 @@ MISTAKES = [
     ("pipeline", ("recipes", "plain", "specular", "level"), 3),
     ("pipeline", ("recipes", "plain", "specular", "roughness"), "steep"),
     ("pipeline", ("sources", "sky", "files"), "*.exr"),
-    ("pipeline", ("gates", "audit"), 1),
+    ("pipeline", ("gates", "audit"), "1 %"),
     ("probe", ("schema",), 2),
     ("probe", ("name",), "/etc"),
     ("probe", ("source", "digest"), "0123"),
@@ -152,6 +185,10 @@ MISTAKES = [
     ("night", ("probes", 3, "accepted"), True),
     ("night", ("gates", 0, "why"), ""),
     ("night", ("bytes", "disk"), -1),
+    ("night", ("probes", 0, "audit", "share_passed"), 1.5),
+    ("probe", ("audit",), None),
+    ("probe", ("audit", "worst", "map"), "specular"),
+    ("probe", ("audit", "files"), []),
     ("probe", ("specular", "levels", 0, "seam"), -1),
     ("probe", ("specular", "files", 0, "pixels"), "rg16f"),
     ("probe", ("irradiance", "files", 0, "pixels"), "bc6h"),

@@ -41,7 +41,12 @@ def correct_charts(sky):
 
 
 def in_half_floats(charts):
-    return [c._replace(faces=c.faces.astype(np.float16).astype(np.float32)) for c in charts]
+    """As rgba16f packs them, with what its rounding may have moved."""
+    coded = [c.faces.astype(np.float16).astype(np.float32) for c in charts]
+    return [
+        c._replace(faces=faces, rounding=np.maximum(faces * HALF_FLOAT, 2.0**-25))
+        for c, faces in zip(charts, coded, strict=True)
+    ]
 
 
 def faulty_charts(sky, fault):

@@ -8,7 +8,6 @@ import pytest
 from panorama_reference import SKIES, coloured_linear, filtered_exactly, pixel_points, small_sun
 from planted_faults import (
     FAULTS,
-    HALF_FLOAT,
     HEIGHT,
     SEEN,
     correct_charts,
@@ -17,7 +16,7 @@ from planted_faults import (
 )
 
 from skykiln.light import audit
-from skykiln.light.audit import Chart, audit_charts, scores
+from skykiln.light.audit import Chart, audit_charts, judge, look, scores, together
 from skykiln.light.directions import cube_directions
 from skykiln.light.faces import extract_faces
 from skykiln.light.pyramid import build_pyramid
@@ -32,7 +31,7 @@ def wrong(sky, fault):
 
 def caught(sky, fault, trials):
     panorama, charts = SKIES[sky](HEIGHT), wrong(sky, fault)
-    verdicts = [audit_charts(panorama, charts, seed, quantum=HALF_FLOAT)[0] for seed in range(trials)]
+    verdicts = [audit_charts(panorama, charts, seed)[0] for seed in range(trials)]
     return sum(not verdict.passed for verdict in verdicts)
 
 
@@ -161,8 +160,10 @@ def test_rounding_of_a_coarse_coding_is_allowed_for():
     faces = np.full((6, 4, 4, 3), 1.03, dtype=np.float32)
     charts = [Chart("level 0", faces, 0.0, 0.005)]
     assert not audit_charts(panorama, charts, 1)[0].passed
-    assert audit_charts(panorama, charts, 1, quantum=0.03)[0].passed
-    assert audit_charts(panorama, charts, 1, step=0.03)[0].passed
+    rounding = np.full(faces.shape, 0.03, dtype=np.float32)
+    assert audit_charts(panorama, [charts[0]._replace(rounding=rounding)], 1)[0].passed
+    rounding[2] = 0  # the allowance is each texel's own
+    assert not audit_charts(panorama, [charts[0]._replace(rounding=rounding)], 1)[0].passed
 
 
 def test_verdict_names_the_texel_and_tells_its_score():
@@ -176,6 +177,7 @@ def test_verdict_names_the_texel_and_tells_its_score():
     assert verdict.worst["z"] > verdict.limit > 5
     assert verdict.worst["used"] > 1
     assert [row["chart"] for row in verdict.charts] == ["level 0", "all"]
+    assert verdict.charts[0]["worst"] == verdict.worst
     assert verdict.samples > 0 and verdict.texels >= 12
 
 
@@ -185,6 +187,18 @@ def test_less_precision_costs_fewer_samples():
     rough = audit_charts(panorama, charts, 1, per_face=1, precision=2.0)[0]
     assert rough.passed
     assert rough.samples < 0.4 * usual.samples
+
+
+def test_several_looks_are_judged_as_one():
+    panorama, charts = SKIES["linear"](HEIGHT), correct_charts("linear")
+    looks = [look(panorama, charts, seed) for seed in (1, 2)]
+    verdict = judge(charts, together(looks))
+    assert verdict.passed
+    assert verdict.texels == sum(len(findings.baked) for findings in looks)
+    assert verdict.limit > judge(charts, looks[0]).limit
+    assert [row["texels"] for row in verdict.charts[:-1]] == [
+        sum((findings.texels.chart == k).sum() for findings in looks) for k in range(len(charts))
+    ]
 
 
 def test_a_night_of_a_thousand_probes_raises_a_false_alarm_once_in_a_hundred():

@@ -91,9 +91,12 @@ def _probe_stages(asked, name, entry, source):
         packed += [f"{work}/packed/{file}" for file in names]
         settings = (pack.get("cube_axes"), tuple(levels))
         yield f"pack {names[0]} of {name}", "PackProbe", settings, [*chain, cube], packed[-3:]
+    audit, axes = [f"{work}/audit.json"], [pack.get("cube_axes") for pack in recipe["pack"]]
+    held = (tuple(levels), tolerance, yaw, tuple(axes))
+    yield f"audit of {name}", "AuditProbe", held, [pixels, *packed], audit
     said = (entry["recipe"], repr(entry["extra"]), tuple(levels), yaw, repr(recipe["pack"]))
     judged = [f"{work}/record.json", f"{work}/judgement.json"]
-    yield f"judgement of {name}", "JudgeProbe", said, [facts, *sun, totals, *packed], judged
+    yield f"judgement of {name}", "JudgeProbe", said, [facts, *sun, totals, *packed, *audit], judged
     textures = [file for file in packed if file.endswith(".ktx2")]
     files = [file.replace(f"{work}/packed", f"probes/{name}") for file in textures]
     outputs = [*files, f"probes/{name}/probe.json"]

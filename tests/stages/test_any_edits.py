@@ -25,6 +25,7 @@ from skykiln.engine import lots, running
 from skykiln.engine.prune import leftovers, remove_leftovers
 from skykiln.engine.running import write_outputs
 from skykiln.stages import shares
+from skykiln.stages.audit_probe import AuditProbe
 from skykiln.stages.decode_source import DecodeSource
 from skykiln.stages.extract_faces import ExtractFaces
 from skykiln.stages.filter_level import FilterLevel
@@ -37,6 +38,7 @@ from skykiln.stages.tabulate_brdf import TabulateBrdf
 from tiny_pipeline import TinyPipeline, published, write_sky
 
 KINDS = [
+    AuditProbe,
     DecodeSource,
     ExtractFaces,
     FilterLevel,

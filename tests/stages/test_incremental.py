@@ -17,6 +17,7 @@ CHAIN = [
     "specular level 1 of ferry_noon",
     "specular level 2 of ferry_noon",
     "pack specular.rgba16f.ktx2 of ferry_noon",
+    "audit of ferry_noon",
     "judgement of ferry_noon",
     "published files of ferry_noon",
 ]
@@ -57,7 +58,7 @@ def test_one_level_s_roughness_reruns_that_level_its_packing_and_publishing(pipe
     pipeline.recipe["specular"]["roughness"] = [0, 0.4, 1]
     assert pipeline.plan()["specular level 1 of ferry_noon"] == (WILL_RUN, "roughness was 0.5, is 0.4")
     assert pipeline.plan()["published files of ferry_noon"][0] == MAY_RUN
-    assert pipeline.bake() == [CHAIN[3], CHAIN[5], CHAIN[6], CHAIN[7]]
+    assert pipeline.bake() == [CHAIN[3], *CHAIN[5:]]
 
 
 def test_touched_source_reruns_nothing(pipeline):
@@ -85,7 +86,7 @@ def test_reordered_and_commented_pipeline_reruns_nothing(pipeline):
 def test_equal_pixels_under_another_header_rerun_decoding_and_rewrite_probe_json(pipeline):
     write_sky(pipeline.folder / "ferry_noon.exr", seed=0, comments="exported again")
     before = everything(pipeline.build)
-    assert pipeline.bake() == [CHAIN[0], CHAIN[6], CHAIN[7]]
+    assert pipeline.bake() == [CHAIN[0], *CHAIN[7:]]
     after = everything(pipeline.build)
     changed = {name for name in after if after[name] != before.get(name)}
     assert {name for name in changed if not name.endswith((".stamp", ".seal", ".pins.json"))} == {
@@ -102,7 +103,7 @@ def test_another_pack_runs_its_packing_and_the_publishing(pipeline):
         {"container": "ktx2", "pixels": "rgba16f"},
         {"container": "ktx2", "pixels": "rgba16f", "name": "mirrored", "cube_axes": "direct"},
     ]
-    assert pipeline.bake() == ["pack specular.mirrored.ktx2 of ferry_noon", CHAIN[6], CHAIN[7]]
+    assert pipeline.bake() == ["pack specular.mirrored.ktx2 of ferry_noon", *CHAIN[6:]]
 
 
 def test_dropped_pack_takes_its_published_files_along(pipeline):

@@ -80,7 +80,7 @@ def test_packs_share_all_upstream_work(pipeline):
     pipeline.bake()
     pipeline.recipe["pack"] = entries(*PACKS)
     titles = [label.removesuffix(" of ferry_noon") for label in pipeline.bake()]
-    assert titles == [*(f"pack {name}" for name in sorted(PACKS)), "judgement", "published files"]
+    assert titles == [*(f"pack {name}" for name in sorted(PACKS)), "audit", "judgement", "published files"]
 
 
 def test_second_bake_of_all_packs_runs_nothing(pipeline):

@@ -74,13 +74,15 @@ def _accept(names, snapshot):
 
 
 def _tell(night, record, root):
-    from ..engine.wording import night_sentence
+    from ..engine.wording import night_sentence, unheld_audits
 
     for owner, failure in night.failures:
         cause = failure.traceback or failure.cause.replace(f"{root}/", "")
         print(f"{owner}: {cause}", file=sys.stderr)
     for owner, sentences in night.held:
         print(f"{owner}: held: {'; '.join(sentences)}", file=sys.stderr)
+    for sentence in unheld_audits(record):
+        print(sentence, file=sys.stderr)
     for gate in record["gates"]:
         print(f"the night: {gate['gate']}: {gate['why']}", file=sys.stderr)
     try:

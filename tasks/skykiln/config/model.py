@@ -269,11 +269,17 @@ class Gates(Section):
     bytes: ByteGates = Field(
         ByteGates(), description="Limits of size: a number of bytes, or a size such as 8 MiB or 1.5 GB."
     )
+    audit: bool = Field(
+        False,
+        description="true: a probe that fails its audit is held. false: it is published, and night.json "
+        "and the last lines of the bake tell of it.",
+    )
 
     def limits(self) -> dict:
         """The limits that are given, by their dotted keys below `gates`."""
         sections = self.model_dump(exclude_none=True)
-        return {f"{name}.{key}": limit for name, keys in sections.items() for key, limit in keys.items()}
+        limits = {"audit": True} if sections.pop("audit") else {}
+        return limits | {f"{name}.{key}": it for name, keys in sections.items() for key, it in keys.items()}
 
 
 class PipelineHead(Section):

@@ -154,4 +154,5 @@ ALLOWED = {
     "string": _allowed_text,
     "object": lambda schema: "a mapping",
     "null": lambda schema: "null",
+    "boolean": lambda schema: "true or false",
 }

@@ -60,6 +60,14 @@ def night_sentence(record: dict) -> str:
     return f"{told}; {record['stages_run']} stages ran in {record['seconds']:.1f} s"
 
 
+def unheld_audits(record: dict):
+    """A line for every probe that failed its audit and that no gate holds: from the values of night.json."""
+    for probe in record["probes"]:
+        audit = probe["audit"]
+        if audit and not audit["passed"] and probe["state"] != HELD and not probe["accepted"]:
+            yield f"{probe['name']}: audit: {audit['why']}"
+
+
 def _last_run(stamp):
     if stamp is None:
         return "no finished run on record"

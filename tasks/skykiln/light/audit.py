@@ -46,6 +46,7 @@ class Chart(NamedTuple):
     alpha: float  # 0: footprint means, 1: also irradiance
     tolerance: float  # relative
     lobe: str = "ggx"  # one of `stratum_kernels.LOBES`
+    rounding: np.ndarray | float = 0.0  # what the pixel coding may have moved each value by, as faces
 
 
 class Findings(NamedTuple):
@@ -69,12 +70,10 @@ class Verdict(NamedTuple):
     share_passed: float  # of texels, all channels within tolerance and noise
     limit: float  # the z-score that each test was held to
     worst: dict  # the texel that used most of its allowance
-    charts: list  # a dict per chart: mean deviation with its z-score, and the shares used
+    charts: list  # a dict per chart and one for all: its mean deviation, and its worst texel
 
 
-def audit_charts(
-    panorama, charts, seed, *, yaw=0.0, quantum=0.0, step=0.0, per_face=PER_FACE, precision=1.0
-):
+def audit_charts(panorama, charts, seed, *, yaw=0.0, per_face=PER_FACE, precision=1.0):
     """Audits cube maps against the panorama that they were made from.
 
     Parameters
@@ -83,7 +82,6 @@ def audit_charts(
     charts : list of Chart.
     seed : int of up to 128 bits; every random number follows from it.
     yaw : rad, from the panorama to the charts.
-    quantum, step : largest relative and absolute rounding of the charts' pixel coding.
     per_face : texels drawn evenly on each face; as many go where the light is.
     precision : 1: errors as usual; more: larger, for less time.
 
@@ -92,18 +90,18 @@ def audit_charts(
     verdict : Verdict.
     findings : Findings.
     """
-    findings = look(panorama, charts, seed, yaw, quantum, step, per_face, precision)
+    findings = look(panorama, charts, seed, yaw, per_face, precision)
     return judge(charts, findings), findings
 
 
-def look(panorama, charts, seed, yaw, quantum, step, per_face, precision):
+def look(panorama, charts, seed, yaw=0.0, per_face=PER_FACE, precision=1.0):
     """Draws texels and estimates what they should hold. Returns Findings."""
     random = np.random.Generator(np.random.Philox(key=seed))
     tree = source_tree(panorama)
     sizes = [chart.faces.shape[1] for chart in charts]
     alphas = np.array([chart.alpha for chart in charts])
     texels = draw_texels(tree, sizes, alphas, per_face, yaw, random)
-    mean = tree.flux[-1, :3].max() / (4.0 * math.pi)
+    mean = float(tree.flux[-1, :3].max()) / (4.0 * math.pi)
     floor = max(DARK * mean, BLACK)
     tolerance = np.array([chart.tolerance for chart in charts])[texels.chart]
     kinds = [LOBES[chart.lobe] if chart.alpha > 0 else FOOTPRINT for chart in charts]
@@ -116,10 +114,8 @@ def look(panorama, charts, seed, yaw, quantum, step, per_face, precision):
         precision * tolerance * np.where(alphas[texels.chart] == 0, FLAT_PRECISION, PRECISION),
     )
     estimates, errors, strata = _estimate(panorama, tree, sizes, inputs, floor, random)
-    baked = np.array(
-        [charts[k].faces[face, row, column] for k, face, row, column in zip(*texels, strict=True)],
-        dtype=np.float64,
-    )
+    baked = _values_at([chart.faces for chart in charts], texels)
+    rounding = _values_at([np.broadcast_to(c.rounding, c.faces.shape) for c in charts], texels)
     baked = np.nan_to_num(baked, nan=NOT_FINITE, posinf=NOT_FINITE, neginf=NOT_FINITE)
     scale = np.maximum(estimates, floor)
     return Findings(
@@ -128,9 +124,21 @@ def look(panorama, charts, seed, yaw, quantum, step, per_face, precision):
         estimates,
         errors,
         scale,
-        (tolerance[:, None] + ROUNDING) * scale + quantum * np.abs(baked) + step,
+        (tolerance[:, None] + ROUNDING) * scale + rounding,
         strata,
     )
+
+
+def together(several):
+    """The findings of several looks at the same charts, as one."""
+    texels = Texels(*map(np.concatenate, zip(*(f.texels for f in several), strict=True)))
+    return Findings(texels, *map(np.concatenate, zip(*(f[1:] for f in several), strict=True)))
+
+
+def _values_at(cubes, texels):
+    """(T, 3) float64."""
+    places = zip(*texels, strict=True)
+    return np.array([cubes[k][face, row, column] for k, face, row, column in places], dtype=np.float64)
 
 
 def _estimate(panorama, tree, sizes, inputs, floor, random):
@@ -143,12 +151,18 @@ def _estimate(panorama, tree, sizes, inputs, floor, random):
         chosen = (kinds == FOOTPRINT) == flat
         seed = random.integers(0, 2**64, dtype=np.uint64)
         if chosen.any():
-            source = source_tree(interpolated_panorama(panorama, parts)) if flat and parts > 1 else tree
+            finer = flat and parts > 1
+            source = source_tree(_interpolated(panorama, parts)) if finer else tree
             *shapes, precision = (values[chosen] for values in inputs)
             means[chosen], errors[chosen], strata[chosen] = stratified_estimate(
                 source, *shapes, floor, precision, MOST_STRATA, seed
             )
     return means, errors, strata
+
+
+def _interpolated(panorama, parts):
+    """What level 0 is made from; contiguous, for kernels that are compiled for such arrays alone."""
+    return np.ascontiguousarray(interpolated_panorama(panorama, parts))
 
 
 def judge(charts, findings):
@@ -161,14 +175,17 @@ def judge(charts, findings):
     everywhere = np.ones(len(used), dtype=bool)
     rows = [(chart.name, f.texels.chart == k) for k, chart in enumerate(charts)]
     rows.append(("all", everywhere))
-    judged = [_judge_chart(name, f, chosen, limit, tests) for name, chosen in rows]
+    judged = [
+        {**_judge_chart(name, f, chosen, limit, tests), "worst": _describe(charts, f, used, chosen)}
+        for name, chosen in rows
+    ]
     return Verdict(
         passed=bool((used <= 1).all() and all(row["used"] <= 1 for row in judged)),
         texels=len(used),
         samples=int(f.strata.sum()),
         share_passed=float((used <= 1).all(axis=1).mean()),
         limit=limit,
-        worst=_describe(charts, f, used),
+        worst=judged[-1]["worst"],
         charts=judged,
     )
 
@@ -200,9 +217,9 @@ def _judge_chart(name, f, chosen, limit, tests):
     }
 
 
-def _describe(charts, f, used):
-    """The texel that used most of its allowance."""
-    t, c = np.unravel_index(int(used.argmax()), used.shape)
+def _describe(charts, f, used, chosen):
+    """The texel among the chosen that used most of its allowance."""
+    t, c = np.unravel_index(int(np.where(chosen[:, None], used, -1.0).argmax()), used.shape)
     return {
         "chart": charts[f.texels.chart[t]].name,
         "face": int(f.texels.face[t]),

@@ -19,7 +19,13 @@ def heavy_on_disk(record, limit):
     return _over("on disk", record["bytes"]["disk"], limit)
 
 
-PROBE_GATES = {"bytes.probe_gpu": heavy_on_the_gpu}  # function(probe.json's values, limit)
+def failed_audit(record, limit):
+    """`gates.audit`: an audit that calls something wrong."""
+    return record["audit"]["why"] or None
+
+
+# function(probe.json's values, limit)
+PROBE_GATES = {"bytes.probe_gpu": heavy_on_the_gpu, "audit": failed_audit}
 NIGHT_GATES = {"bytes.night_disk": heavy_on_disk}  # function(night.json's values, limit)
 
 

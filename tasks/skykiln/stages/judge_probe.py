@@ -5,6 +5,7 @@ from pathlib import Path
 
 from ..engine.atomic import write_atomically
 from ..engine.digests import digest_chunks, json_bytes
+from .audit_probe import AuditProbe
 from .decode_source import DecodeSource
 from .gates import PROBE_GATES, broken_gates
 from .gather_irradiance import GatherIrradiance
@@ -16,13 +17,13 @@ from .sky_panorama import is_sun_apart
 
 
 class JudgeProbe(ProbeStage):
-    """`probe.json`: its values to be. `judgement`: the gates that they break, and whether the user has
-    accepted them for what is packed now.
+    """`probe.json`: its values to be. `judgement`: the gates that they break, whether the user has
+    accepted them for what is packed now, and the audit in short.
 
     The limits are in neither output, so that others publish nothing anew as long as all gates hold.
     """
 
-    version = 1
+    version = 2
     title = "judgement"
 
     def requires(self):
@@ -33,6 +34,7 @@ class JudgeProbe(ProbeStage):
             **sun,
             "totals": self.of_same(GatherIrradiance),
             **{role: pack for pack in packs for role in pack.files()},
+            "audit": self.of_same(AuditProbe),
         }
 
     def files(self):
@@ -62,6 +64,7 @@ class JudgeProbe(ProbeStage):
             "subject": subject,
             "broken": broken_gates(PROBE_GATES, record, settings["gates"]),
             "accepted": subject == settings["accepted"],
+            "audit": _in_short(record["audit"]),
         }
         return {"probe.json": record, "judgement": judgement}
 
@@ -74,7 +77,14 @@ def accept_judgement(pinned):
 
 def read_judgement(pinned) -> dict:
     """The values of a probe's judgement; of one that breaks nothing where there is none."""
-    return _read(Path(f"{pinned.work}/judgement.json")) or {"subject": "", "broken": [], "accepted": False}
+    none = {"subject": "", "broken": [], "accepted": False, "audit": None}
+    return none | _read(Path(f"{pinned.work}/judgement.json"))
+
+
+def _in_short(audit):
+    """What night.json tells of an audit."""
+    numbers = {key: audit["worst"][key] for key in ("map", "deviation", "z")}
+    return {**{key: audit[key] for key in ("passed", "why", "texels", "share_passed")}, "worst": numbers}
 
 
 def _accepted_subject(pinned):

@@ -39,7 +39,7 @@ def _run_every_kernel():
     import numpy as np
 
     from ..formats.radiance_hdr import read_radiance_hdr
-    from ..light import brdf, faces, harmonics, irradiance, photometry, pyramid, repair, specular
+    from ..light import brdf, faces, harmonics, irradiance, photometry, pyramid, repair, sheen, specular
     from ..light.charts import PANORAMA
     from ..light.colour import converted
     from ..light.directions import alpha_from_roughness
@@ -53,16 +53,30 @@ def _run_every_kernel():
     footprint_means(sky[None], PANORAMA, 8, 4)
     faces.extract_faces(sky, 8)
     nodes = pyramid.build_pyramid(sky)
-    specular.filter_level(nodes, 4, alpha_from_roughness(0.5), 0.1)
+    level = specular.filter_level(nodes, 4, alpha_from_roughness(0.5), 0.1)
+    _run_every_estimator(sky, level)
     irradiance.irradiance_cube(nodes, 4, 0.1)
     harmonics.irradiance_coefficients(sky)
     photometry.horizontal_illuminance(sky)
     sky[2, 5] = 60_000  # a sun
     separate_sun(sky)
     brdf.brdf_table(4)
+    sheen.sheen_albedo(4)
     faces_with_a_sun = np.ones((6, 8, 8, 3), np.float32)
     faces_with_a_sun[0, 1, 2] = 60_000  # a block that BC6H has to fit anew
     _run_every_coding(faces_with_a_sun)
+
+
+def _run_every_estimator(sky, level):
+    """Audit a level of roughness 0.5, and estimate it by sampling."""
+    from ..light import audit, noise
+    from ..light.source_tree import source_tree
+
+    audit.audit_charts(sky, [audit.Chart("level", level, 0.25, 0.1)], 1)
+    tree = source_tree(sky)
+    for technique in noise.TECHNIQUES:
+        noise.noisy_level(tree, 1, 0.25, 4, technique, 1)
+    noise.samples_needed(tree, 0.25, [0.5], 0.1, 1)
 
 
 def _run_every_coding(level):

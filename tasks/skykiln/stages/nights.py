@@ -168,6 +168,7 @@ def _probe_entry(outcome, root):
         "stages": outcome.stages(),
         "failure": failure,
         "gates": [] if failure else judgement["broken"],
+        "audit": None if failure else judgement["audit"],
         "accepted": not failure and judgement["accepted"] and bool(judgement["broken"]),
         "bytes": _published_bytes(Path(target.pinned.published) / "probe.json"),
     }

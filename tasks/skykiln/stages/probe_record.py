@@ -37,7 +37,7 @@ def probe_record(settings, packed_names, inputs) -> dict:
             "lost_to_clamping": max(pack["lost_to_clamping"] for pack in packs.values()),
         },
         "bytes": _bytes(settings["packs"], listed),
-        "audit": None,
+        "audit": inputs["audit"].json(),
     }
 
 
