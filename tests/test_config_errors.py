@@ -138,7 +138,7 @@ def test_wrong_setting_of_a_source_is_told_at_its_line(problems, setting, told):
         ("brdf: {size: 2}\nskykiln: 1", "brdf.size: found 2; allowed: a whole number from 4 to 1024"),
         ("cube_axes: up\nskykiln: 1", "cube_axes: found 'up'; allowed: negate_x, negate_z, direct"),
         ("gates: {audit: 1}\nskykiln: 1", "gates.audit: found 1; allowed: true or false"),
-        ("gates: {weight: 1}\nskykiln: 1", "gates.weight: unknown key; known here: audit, bytes"),
+        ("gates: {weight: 1}\nskykiln: 1", "gates.weight: unknown key; known here: bytes, audit"),
         (
             "gates: {bytes: {probe_gpu: 8 megs}}\nskykiln: 1",
             f"gates.bytes.probe_gpu: found '8 megs'; allowed: {SIZES}",
