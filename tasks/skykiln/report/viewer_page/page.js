@@ -118,6 +118,7 @@ class Page {
 
   tellControls() {
     const { view, facts } = this;
+    byId('level-of').textContent = view.scene ? 'Sky behind' : 'Level';
     byId('level-is').textContent = this.levelText(view.level);
     const stops = Number(byId('exposure').value);
     byId('exposure-is').textContent = `${signed(stops)} EV`;
@@ -218,10 +219,10 @@ function bytesOf(id) {
 }
 
 function tellTrouble(error, facts) {
-  const others = facts.others.length ? ` Other packs of this probe: ${facts.others.join(', ')}.` : '';
+  const others = facts.others.length && error.ofCoding ? ` Other packs of this probe: ${facts.others.join(', ')}.` : '';
   byId('trouble').textContent = `Nothing can be drawn: ${error.message}.${others}`;
   byId('trouble').hidden = false;
-  for (const id of ['stage', 'reading', 'controls', 'keys']) byId(id).hidden = true;
+  for (const id of ['stage', 'scale', 'reading', 'controls', 'keys']) byId(id).hidden = true;
 }
 
 let page = null;

@@ -39,7 +39,10 @@ function uploadTexture(gl, file, unit) {
 
 function blocksInto(gl) {
   const bptc = gl.getExtension('EXT_texture_compression_bptc');
-  if (!bptc) throw new Error('this browser cannot read BC6H: EXT_texture_compression_bptc is missing');
+  if (!bptc) {
+    const lack = new Error('this browser cannot read BC6H: EXT_texture_compression_bptc is missing');
+    throw Object.assign(lack, { ofCoding: true });
+  }
   const format = bptc.COMPRESSED_RGB_BPTC_UNSIGNED_FLOAT_EXT;
   return (target, k, edge, image) => gl.compressedTexImage2D(target, k, format, edge, edge, 0, image);
 }
