@@ -208,13 +208,29 @@ def _row_of(tangent, tangents, step):
 def _add_piece(panorama, from_pole, heights, a, b, cos0, sin0, cos1, sin1, row, i, sign, below, out):
     """Adds the part of an edge inside one source pixel. Around the lower pole G is measured from there,
     so that it vanishes at the pole that a texel touches."""
-    angle = math.atan2(sin0 * cos1 - cos0 * sin1, cos0 * cos1 + sin0 * sin1)
+    angle = _arc(sin0 * cos1 - cos0 * sin1, cos0 * cos1 + sin0 * sin1)
     t0, s0 = a * cos0 + b * sin0, a * sin0 - b * cos0
     t1, s1 = a * cos1 + b * sin1, a * sin1 - b * cos1
     r0, r1 = math.sqrt(1.0 + t0 * t0), math.sqrt(1.0 + t1 * t1)
-    height = math.atan2(s0 * r1 - s1 * r0, r0 * r1 + s0 * s1)  # integral of y over falling t
+    # Integral of y over falling t. The length is the same all along the edge: T^2 + S^2 = a^2 + b^2.
+    length = 1.0 + a * a + b * b
+    height = _arc((s0 * r1 - s1 * r0) / length, (r0 * r1 + s0 * s1) / length)
     for c in range(3):
         g = from_pole[row, i, c]
         if below:
             g -= from_pole[heights.shape[0] - 1, i, c]
         out[c] += sign * (g * angle + panorama[row, i, c] * (heights[row] * angle - height))
+
+
+@formula
+def _arc(sine, cosine):
+    """The angle of a sine and a cosine: atan2, by the arc sine's series where that is exact to rounding.
+
+    Inside one pixel angles are so small that it nearly always is, and it takes a tenth of the time.
+    """
+    square = sine * sine
+    if cosine < 0.0 or square > 1e-4:
+        return math.atan2(sine, cosine)
+    # Coefficients 1/6, 3/40, 15/336, 105/3456; the next term is below 3e-18 of the sum.
+    tail = 15.0 / 336.0 + square * (105.0 / 3456.0)
+    return sine * (1.0 + square * (1.0 / 6.0 + square * (3.0 / 40.0 + square * tail)))

@@ -9,7 +9,7 @@ from .sky_panorama import sky_of
 class ExtractFaces(ProbeStage):
     """(6, n, n, 3) float32, the mean radiance over each texel's footprint, turned by the probe's yaw."""
 
-    version = 1
+    version = 2
     title = "faces"
 
     def requires(self):
