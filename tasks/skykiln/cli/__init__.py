@@ -7,11 +7,11 @@ import argparse
 import sys
 
 from ..errors import ALL_WELL, SOURCE_FAILED, WRONG, PipelineError, SkykilnError
-from . import bake, inspect, join, plan, prune, report, schema, why
+from . import audit, bake, inspect, join, noise, plan, prune, report, schema, why
 from .arguments import with_vectors_joined
 from .telling import speak_to_nobody
 
-COMMANDS = (bake, plan, why, report, join, prune, inspect, schema)  # in the order of --help
+COMMANDS = (bake, plan, why, audit, noise, report, join, prune, inspect, schema)  # in the order of --help
 
 
 def main(arguments=None) -> int:

@@ -68,6 +68,20 @@ def count(text):
     return number
 
 
+def positive(text):
+    number = count(text)
+    if number == 0:
+        raise argparse.ArgumentTypeError("0 is too few")
+    return number
+
+
+def seconds(text):
+    number = float(text)
+    if not 0 < number < 1e9:
+        raise argparse.ArgumentTypeError(f"{text!r} is no number of seconds above 0")
+    return number
+
+
 def port(text):
     number = count(text)
     if number > 65535:

@@ -34,6 +34,21 @@ def shown(standings):
             watcher.join()
 
 
+@contextmanager
+def one_bar(text, total):
+    """A bar on a terminal, nothing elsewhere. Gives: a function of how much is done, of `total`."""
+    if not sys.stderr.isatty():
+        yield lambda done: None
+        return
+    from rich.console import Console
+    from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
+
+    columns = TextColumn("{task.description}"), BarColumn(), TimeElapsedColumn()
+    with Progress(*columns, console=Console(file=sys.stderr), transient=True) as progress:
+        bar = progress.add_task(text, total=total)
+        yield lambda done: progress.update(bar, completed=done)
+
+
 class _Watched:
     """A target with stale stages, and how many of them have a new stamp.
 

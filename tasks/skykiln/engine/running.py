@@ -60,7 +60,7 @@ def run_stage(stage, verdict, on_disk: bool = True) -> Verdict:
 def write_outputs(stage, verdict, on_disk: bool) -> Written:
     """Make the outputs, and write those beside their places whose bytes are not there yet."""
     began = time.perf_counter()
-    contents = stage.make(_inputs(stage, verdict))
+    contents = stage.make(inputs_of(stage, verdict))
     _check_inputs_stand(stage, verdict)
     records, fresh, folder = {}, {}, os.path.dirname(stage.stamp_path)
     try:
@@ -115,7 +115,11 @@ def certify(written: Written, on_disk: bool = False) -> Verdict:
     return Verdict(stage, UP_TO_DATE, (), verdict.inputs, stamp)
 
 
-def _inputs(stage, verdict):
+def inputs_of(stage, verdict) -> dict:
+    """Role -> Input of what a stage reads from other stages.
+
+    Raises: SkykilnError naming what is not up to date
+    """
     unready = [role for role, digest in verdict.inputs.items() if digest is None]
     if unready:
         raise SkykilnError(f"{stage.label}: {', '.join(unready)} is not up to date; bake again")
