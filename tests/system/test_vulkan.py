@@ -103,7 +103,9 @@ def test_listing_for_vulkan_shades_as_computed_here(harness, probe, pixels, axes
 
 # The page's HLSL in a compute shader: places for what it declares, and the level_of of the GLSL, HLSL too.
 HLSL = """
-[[vk::binding(3)]] cbuffer Probe {{ float3 signs; float true_scale; int level_count; float roughness_of[16]; }};
+[[vk::binding(3)]] cbuffer Probe {{
+    float3 signs; float true_scale; int level_count; float roughness_of[16];
+}};
 {level_of}
 {listing}
 [[vk::binding(4)]] StructuredBuffer<float4> a_of;
