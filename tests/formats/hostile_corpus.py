@@ -10,12 +10,14 @@ import os
 import socket
 import struct
 import sys
+import zlib
 from pathlib import Path
 
 import imagecodecs
 import numpy as np
 import OpenEXR
 import tifffile
+import zstandard
 from openexr_files import mip_tiles, scan_lines
 from PIL import Image as Pillow
 from radiance_files import hdr, old_line, packed_line, random_rgbe
@@ -151,6 +153,9 @@ def _absurd_others() -> dict[str, bytes]:
     files["endless_header.hdr"] = b"#?RADIANCE\n" + b"EXPOSURE=1\n" * 99999
     files["one_long_line.hdr"] = b"#?RADIANCE\n" + b"x" * (1 << 22)
     files["no_exposure.hdr"] = hdr(WIDTH, HEIGHT, b"", (b"#?RADIANCE", b"EXPOSURE=0"))
+    files |= {f"bomb_{packed}.tif": _bomb_tiff(packed) for packed in ("zlib", "zstd")}
+    files["bomb.png"] = _bomb_png()
+    files["many_scans.jpg"] = _jpeg(WIDTH, HEIGHT)[:-2] + b"\xff\xda\0\x0c" * 99 + b"\xff\xd9"
     files["pages_in_a_circle.tif"] = _circle_tiff()
     files["whole_numbers.tif"] = _tiff(_PIXELS.astype(np.uint32))
     return files
@@ -182,6 +187,36 @@ def _sized_tiff(width, height, compression):
         for tag, value in (("ImageWidth", width), ("ImageLength", height), ("RowsPerStrip", height)):
             tags[tag].overwrite(value, dtype="I")
     return file.getvalue()
+
+
+def _bomb_tiff(compression):
+    """A strip of 64 x 32 pixels whose stream unpacks to 400 MB and doesn't end."""
+    stream = _much_of_nothing(compression)
+    data = bytearray(_tiff(_PIXELS, compression=compression, rowsperstrip=HEIGHT))
+    file = io.BytesIO(data + stream)
+    with tifffile.TiffFile(file, mode="r+b") as tiff:
+        tags = tiff.pages[0].tags
+        tags["StripOffsets"].overwrite([len(data)])
+        tags["StripByteCounts"].overwrite([len(stream)])
+    return file.getvalue()
+
+
+def _much_of_nothing(compression):
+    """Zeros, 400 MB of them, packed."""
+    packer = zlib.compressobj() if compression == "zlib" else zstandard.ZstdCompressor().compressobj()
+    megabyte = bytes(1_000_000)
+    if compression == "zlib":  # what follows a full flush doesn't depend on what came before it
+        start = packer.compress(megabyte) + packer.flush(zlib.Z_FULL_FLUSH)
+        return start + 399 * (packer.compress(megabyte) + packer.flush(zlib.Z_FULL_FLUSH))
+    return b"".join(packer.compress(megabyte) for _ in range(400)) + packer.flush()
+
+
+def _bomb_png():
+    """A comment of 400 MB in 400 kB, and no pixels."""
+    data = imagecodecs.png_encode((_PIXELS * 6).astype(np.uint8))
+    body = b"zTXtComment\0\0" + _much_of_nothing("zlib")
+    chunk = struct.pack(">I", len(body) - 4) + body + struct.pack(">I", imagecodecs.zlib_crc32(body))
+    return data[:33] + chunk
 
 
 def _circle_tiff():

@@ -241,6 +241,8 @@ def test_data_window_in_every_position_is_cropped_to_the_display_window(tmp_path
     np.testing.assert_array_equal(~there if not there.all() else np.zeros_like(there),
                                   np.zeros_like(there) if image.uncovered is None else image.uncovered)
     assert (image.uncovered is None) == there.all()
+    theirs = OpenImageIO.ImageBuf(str(path))
+    np.testing.assert_array_equal(image.pixels, theirs.get_pixels(OpenImageIO.FLOAT, theirs.roi_full))
     assert (image.facts["width"], image.facts["height"]) == (48, 24)
     assert image.facts["display_window"] == [0, 0, 47, 23]
 

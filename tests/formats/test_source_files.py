@@ -57,6 +57,14 @@ def test_unreadable_content_is_named(tmp_path, data, words):
     assert_refused(path, words)
 
 
+def test_choice_that_a_format_does_not_have_is_refused(tmp_path):
+    path = tmp_path / "sky.hdr"
+    path.write_bytes(ONE_PIXEL)
+    for choice in ("part", "layer"):
+        with pytest.raises(FileError, match=f"has no {choice}s; remove {choice}:"):
+            read_source(path, ReadOptions(**{choice: "sky"}))
+
+
 def test_missing_file_is_named(tmp_path):
     assert_refused(tmp_path / "sky.exr", "No such file")
 

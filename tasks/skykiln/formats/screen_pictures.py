@@ -17,8 +17,11 @@ from skykiln.formats.image import AS_IT_IS, Image, ReadOptions, check_size
 from skykiln.formats.low_range import SRGB, check_allowed, linear, warning
 from skykiln.formats.orientation import upright
 
+# Chunks that pixels are made of. Comments and profiles, which may unpack to any size, are left out.
+_PIXELS = {b"IHDR", b"PLTE", b"tRNS", b"IDAT", b"IEND"}
 _EXIF_ORIENTATION = 274
 _MODES = ("L", "RGB")  # of JPEG; not CMYK, which is ink
+_MOST_SCANS = 64  # of a progressive JPEG, each of which takes the whole picture's time; a dozen is usual
 
 
 def read_png(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
@@ -32,12 +35,24 @@ def read_png(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
     what = "a 16-bit PNG picture" if bits == 16 else "an 8-bit PNG picture"
     check_allowed(name, what, options.allow_ldr)
     check_size(name, width, height, options.max_pixels)
+    chunks = _chunks(data)
+    needed = b"".join(chunk for kind, chunk in chunks if kind in _PIXELS)
     try:
-        stored = imagecodecs.png_decode(data)
+        stored = imagecodecs.png_decode(data[:8] + needed)
     except (imagecodecs.PngError, ValueError) as error:
         raise FileError(f"{name}: damaged or cut ({error}); export it again") from error
-    notes = ("its colour profile is not read",) if b"iCCP" in data[:4096] else ()
+    notes = ("its colour profile is not read",) if b"iCCP" in dict(chunks) else ()
     return _image(stored.reshape(height, width, -1), "png", what, bits, notes)
+
+
+def _chunks(data: bytes) -> list[tuple[bytes, bytes]]:
+    """Kind and bytes of each chunk (PNG 5.3): length, kind, data, check sum. The last one may be cut."""
+    chunks, at = [], 8
+    while at < len(data):
+        end = at + 12 + int.from_bytes(data[at : at + 4], "big")
+        chunks.append((data[at + 4 : at + 8], data[at:end]))
+        at = end
+    return chunks
 
 
 def read_jpeg(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
@@ -51,6 +66,8 @@ def read_jpeg(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
         # Blocks of 8 x 8 pixels take a bit each at least (ITU-T T.81, F.1.2).
         if picture.width * picture.height > 8 * 64 * len(data):
             raise FileError(f"{name}: far too short for a picture of its size; export it again")
+        if data.count(b"\xff\xda") > _MOST_SCANS:
+            raise FileError(f"{name}: a JPEG picture of more than {_MOST_SCANS} scans; export it again")
         if picture.mode not in _MODES:
             raise FileError(f"{name}: a JPEG picture of {picture.mode}; export it as RGB")
         stored = np.asarray(picture)

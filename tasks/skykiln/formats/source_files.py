@@ -36,6 +36,9 @@ READERS = {
     b"\xff\xd8\xff": read_jpeg,
 }
 
+# What options say which picture of a file is meant, for the readers that can have several.
+_CHOICES = {read_openexr: {"part", "layer"}, read_tiff: {"part"}}
+
 # Pictures that people do try, so that the message can say more than 'unknown'.
 _REFUSED = {
     b"\xabKTX": "a KTX texture of version 1",
@@ -56,11 +59,19 @@ def read_source(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
     try:
         with path.open("rb") as file:
             start = file.read(16)
-        return _reader(path, start)(path, options)
+        reader = _reader(path, start)
+        _check_choices(path, reader, options)
+        return reader(path, options)
     except OSError as error:
         raise FileError(f"{path}: can't be read ({error.strerror}); check the file and its rights") from error
     except MemoryError as error:
         raise FileError(f"{path}: not enough memory to read it; scale the picture down") from error
+
+
+def _check_choices(path: Path, reader, options: ReadOptions) -> None:
+    given = {choice for choice in ("part", "layer") if getattr(options, choice) is not None}
+    for choice in sorted(given - _CHOICES.get(reader, set())):
+        raise FileError(f"{path}: a file of its format has no {choice}s; remove {choice}:")
 
 
 def _check_kind(path: Path) -> None:
