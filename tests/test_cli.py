@@ -39,7 +39,7 @@ def test_bake_takes_the_pipeline_of_the_working_folder_and_prints_a_line_per_pro
     *lines, total = out.splitlines()
     told = {line.split(":")[0] for line in lines}
     assert told == {"BRDF table of all probes", "ferry_noon", "quay_night"}
-    assert re.fullmatch(r"2 rebuilt, 0 unchanged, 0 failed; 19 stages ran in [0-9.]+ s", total)
+    assert re.fullmatch(r"2 rebuilt, 0 unchanged, 0 failed; 21 stages ran in [0-9.]+ s", total)
 
 
 def test_bake_of_bad_source_ends_with_1_and_names_file_and_cause(pipeline, capsys):
@@ -95,11 +95,13 @@ def test_plan_says_in_words_what_would_run_and_why(pipeline, capsys):
     assert status == ALL_WELL
     assert out.splitlines() == [
         "will run: specular level 1 of ferry_noon: roughness was 0.5, is 0.4286",
+        "may run: pictures of ferry_noon: runs if specular level 1 changes",
         "will run: pack specular.rgba16f.ktx2 of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
         "will run: audit of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
         "will run: judgement of ferry_noon: roughness was [0, 0.5, 1], is [0, 0.4286, 1]",
-        "may run: published files of ferry_noon: runs if judgement or pack specular.rgba16f.ktx2 changes",
-        "4 will run, 1 may run, 5 up to date",
+        "may run: published files of ferry_noon: "
+        "runs if judgement, pictures or pack specular.rgba16f.ktx2 changes",
+        "4 will run, 2 may run, 5 up to date",
     ]
 
 
@@ -140,9 +142,9 @@ def test_plan_tells_a_whole_chain_in_one_line_and_changes_nothing_on_disk(pipeli
     _, out, _ = _run(capsys, "plan")
     assert out.splitlines() == [
         "will run: BRDF table of all probes: was never baked",
-        "will run: all 9 stages of ferry_noon: was never baked",
-        "will run: all 9 stages of quay_night: was never baked",
-        "19 will run, 0 may run, 0 up to date",
+        "will run: all 10 stages of ferry_noon: was never baked",
+        "will run: all 10 stages of quay_night: was never baked",
+        "21 will run, 0 may run, 0 up to date",
     ]
     assert not pipeline.build.exists()
 
@@ -175,7 +177,7 @@ def test_schema_prints_a_schema_that_takes_the_pipeline(pipeline, capsys):
 def test_again_reruns_one_probe_when_named(pipeline, capsys):
     _run(capsys, "bake")
     _, out, _ = _run(capsys, "bake", "--again", "quay_night")
-    assert out.splitlines()[-1].startswith("1 rebuilt, 0 unchanged, 0 failed; 10 stages ran")
+    assert out.splitlines()[-1].startswith("1 rebuilt, 0 unchanged, 0 failed; 11 stages ran")
 
 
 def _python(code, folder):
@@ -280,12 +282,12 @@ def test_held_probe_ends_with_3_and_is_published_by_accept(pipeline, capsys):
     status, out, err = _run(capsys, "bake")
     assert status == GATE_BROKEN
     assert "ferry_noon: held: bytes.probe_gpu: 4.125 KiB on the GPU, the limit is 4 KiB" in err
-    assert out.splitlines()[-1].startswith("0 rebuilt, 0 unchanged, 2 held, 0 failed; 17 stages ran")
+    assert out.splitlines()[-1].startswith("0 rebuilt, 0 unchanged, 2 held, 0 failed; 19 stages ran")
     _, out, _ = _run(capsys, "plan")
     assert out.splitlines() == [
         "held: published files of ferry_noon: bytes.probe_gpu: 4.125 KiB on the GPU, the limit is 4 KiB",
         "held: published files of quay_night: bytes.probe_gpu: 4.125 KiB on the GPU, the limit is 4 KiB",
-        "0 will run, 0 may run, 17 up to date, 2 held",
+        "0 will run, 0 may run, 19 up to date, 2 held",
     ]
     assert _run(capsys, "bake", "--accept", "ferry_noon")[0] == ALL_WELL
     assert (pipeline.build / "probes/ferry_noon/probe.json").exists()

@@ -88,6 +88,7 @@ PROBE = {
         "mean_radiance": RGB,
         "level_irradiance": RGB,
         "horizontal_illuminance": 2.0,
+        "brightest": {"direction": [0.0, 1.0, 0.0], "luminance": 3.0},
         "lost_to_clamping": 0.0,
     },
     "bytes": {"disk": 1000, "gpu": 2000},
@@ -106,8 +107,28 @@ BRDF = {
 }
 STAGE = {"stage": "specular level 3", "reason": "roughness was 0.4286, is 0.4", "seconds": 0.2}
 HEAVY = {"gate": "bytes.probe_gpu", "why": "5 MiB on the GPU, the limit is 4 MiB"}
+LIGHT = {
+    "units": "cd/m2",
+    "horizontal_illuminance": 98000.0,
+    "mean_radiance": RGB,
+    "brightest": {"direction": [0.0, 0.6, 0.8], "luminance": 8e8},
+    "sun": None,
+    "lost_to_clamping": 0.0,
+    "repaired": 0,
+    "sh_smallest": -0.1,
+    "seam": 1.1,
+}
+CHANGE = {
+    "levels": [{"largest": 0.5, "mean": 0.01}],
+    "largest": 0.5,
+    "mean": 0.01,
+    "illuminance": {"before": 0.0, "after": 1.0, "ratio": None},
+    "moved_deg": 3.0,
+    "source_changed": True,
+}
 NIGHT_ENTRY = {
     "state": "unchanged",
+    "recipe": "landmark",
     "stages": [],
     "failure": None,
     "gates": [],
@@ -117,6 +138,8 @@ NIGHT_ENTRY = {
     },
     "accepted": False,
     "bytes": {"disk": 500, "gpu": 1000},
+    "light": LIGHT,
+    "change": None,
 }
 NIGHT = {
     "schema": 1,
@@ -129,7 +152,7 @@ NIGHT = {
     "gates": [{"gate": "bytes.night_disk", "why": "2 GiB on disk, the limit is 1 GiB"}],
     "stages_run": 1,
     "probes": [
-        {**NIGHT_ENTRY, "name": "ferry_noon", "state": "rebuilt", "stages": [STAGE]},
+        {**NIGHT_ENTRY, "name": "ferry_noon", "state": "rebuilt", "stages": [STAGE], "change": CHANGE},
         {**NIGHT_ENTRY, "name": "night_quay", "gates": [HEAVY], "accepted": True},
         {
             **NIGHT_ENTRY,
@@ -189,6 +212,8 @@ MISTAKES = [
     ("probe", ("audit",), None),
     ("probe", ("audit", "worst", "map"), "specular"),
     ("probe", ("audit", "files"), []),
+    ("night", ("probes", 0, "change", "moved_deg"), 200),
+    ("night", ("probes", 0, "light", "units"), "nits"),
     ("probe", ("specular", "levels", 0, "seam"), -1),
     ("probe", ("specular", "files", 0, "pixels"), "rg16f"),
     ("probe", ("irradiance", "files", 0, "pixels"), "bc6h"),

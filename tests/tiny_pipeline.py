@@ -100,6 +100,12 @@ def everything(build):
     return {str(p.relative_to(build)): (p.stat().st_mtime_ns, p.read_bytes()) for p in files}
 
 
+def without_pages(files):
+    """What `everything` found, without what tells of a night: pages and records of nights."""
+    told = (".html", ".css", ".js", "work/report.json")
+    return {n: found for n, found in files.items() if not n.endswith(told) and "report/nights" not in n}
+
+
 def touch(path):
     """Give a file another time, not another content."""
     os.utime(path, ns=(time.time_ns(), time.time_ns() + 5_000_000))

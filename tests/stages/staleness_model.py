@@ -84,6 +84,9 @@ def _probe_stages(asked, name, entry, source):
         yield label, "FilterLevel", settings, [pixels], chain[-1:]
     gathered = (recipe["irradiance"]["face_size"], tolerance, yaw)
     yield f"irradiance of {name}", "GatherIrradiance", gathered, [pixels], [cube, totals]
+    thumbnails, looks = f"{work}/thumbnails.npy", f"{work}/looks.json"
+    pictures = f"report/probes/{name}"
+    yield f"pictures of {name}", "DrawProbe", None, chain, [thumbnails, looks, f"{pictures}/small.png"]
     packed = []
     for pack in recipe["pack"]:
         own = PACKED[pack.get("name")]
@@ -96,8 +99,10 @@ def _probe_stages(asked, name, entry, source):
     yield f"audit of {name}", "AuditProbe", held, [pixels, *packed], audit
     said = (entry["recipe"], repr(entry["extra"]), tuple(levels), yaw, repr(recipe["pack"]))
     judged = [f"{work}/record.json", f"{work}/judgement.json"]
-    yield f"judgement of {name}", "JudgeProbe", said, [facts, *sun, totals, *packed, *audit], judged
+    compared = [f"{work}/comparison.json", f"{pictures}/change.png"]
+    read = [facts, *sun, totals, looks, thumbnails, *packed, *audit]
+    yield f"judgement of {name}", "JudgeProbe", said, read, [*judged, *compared]
     textures = [file for file in packed if file.endswith(".ktx2")]
     files = [file.replace(f"{work}/packed", f"probes/{name}") for file in textures]
-    outputs = [*files, f"probes/{name}/probe.json"]
-    yield f"published files of {name}", "PublishProbe", None, [*judged, *textures], outputs
+    outputs = [f"{work}/published.npy", *files, f"probes/{name}/probe.json"]
+    yield f"published files of {name}", "PublishProbe", None, [*judged, thumbnails, *textures], outputs

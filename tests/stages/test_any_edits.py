@@ -27,6 +27,7 @@ from skykiln.engine.running import write_outputs
 from skykiln.stages import shares
 from skykiln.stages.audit_probe import AuditProbe
 from skykiln.stages.decode_source import DecodeSource
+from skykiln.stages.draw_probe import DrawProbe
 from skykiln.stages.extract_faces import ExtractFaces
 from skykiln.stages.filter_level import FilterLevel
 from skykiln.stages.gather_irradiance import GatherIrradiance
@@ -40,6 +41,7 @@ from tiny_pipeline import TinyPipeline, published, write_sky
 KINDS = [
     AuditProbe,
     DecodeSource,
+    DrawProbe,
     ExtractFaces,
     FilterLevel,
     GatherIrradiance,

@@ -4,11 +4,12 @@ import json
 
 from ..errors import ALL_WELL, FileError
 from .arguments import add_command, port
+from .telling import say_waiting
 from .view import add_options, write_view
 
 
 def add_to(commands):
-    text = "say where the page of the last night lies, print it, serve it"
+    text = "write the page of the last night anew and say where it lies, print it, or serve it"
     report = add_command(commands, "report", run, text)
     shown = report.add_mutually_exclusive_group()
     shown.add_argument(
@@ -38,8 +39,18 @@ def run(options):
         from ..report.serving import serve
 
         serve(folder, options.serve)
+    _write(pipeline, record)
     print(folder / "index.html")
     return ALL_WELL
+
+
+def _write(pipeline, record):
+    from ..engine.locks import at_work_in
+    from ..stages.snapshot import Snapshot
+    from ..stages.write_report import write_report
+
+    with at_work_in(pipeline.build_dir / "work", None, say_waiting):
+        write_report(record, pipeline, Snapshot(pipeline).all_probes, wanted=True)
 
 
 def _read(path):

@@ -263,6 +263,19 @@ class ByteGates(Section):
     )
 
 
+class ChangeGates(Section):
+    """Limits of change against what stands published: the mean relative change of a probe's worst level."""
+
+    same_source: Annotated[float, Field(ge=0, le=100)] | None = Field(
+        None,
+        description="How much the pixels of a probe may change although the bytes of its source did not: "
+        "by another setting, or another version of skykiln. 0.001 is a tenth of a percent, 0 not at all.",
+    )
+    mean: Annotated[float, Field(ge=0, le=100)] | None = Field(
+        None, description="How much they may change at all; 0.2 is 20 %."
+    )
+
+
 class Gates(Section):
     """Limits; a probe that crosses one is held."""
 
@@ -275,11 +288,21 @@ class Gates(Section):
         "and the last lines of the bake tell of it.",
     )
 
+    change: ChangeGates = Field(ChangeGates(), description="Limits of change, as shares.")
+
     def limits(self) -> dict:
         """The limits that are given, by their dotted keys below `gates`."""
         sections = self.model_dump(exclude_none=True)
         limits = {"audit": True} if sections.pop("audit") else {}
         return limits | {f"{name}.{key}": it for name, keys in sections.items() for key, it in keys.items()}
+
+
+class Report(Section):
+    """The pages that tell of a night."""
+
+    nights: Annotated[int, Field(ge=1, le=1000), BeforeValidator(_whole)] = Field(
+        14, description="How many nights' records are kept in report/nights."
+    )
 
 
 class PipelineHead(Section):
@@ -298,6 +321,7 @@ class PipelineHead(Section):
     )
     brdf: Brdf = Field(Brdf(), description="The BRDF table, shared by all probes.")
     gates: Gates = Field(Gates(), description="Limits; a probe that crosses one is held.")
+    report: Report = Field(Report(), description="The pages that tell of a night.")
 
 
 class PipelineFile(PipelineHead):

@@ -21,6 +21,7 @@ class Pipeline:
 
     path : as given; root : its folder, absolute; build_dir : absolute
     recipes : name -> Recipe; gates : the limits that are given, by their dotted keys below `gates`
+    report_nights : how many nights' records are kept
     """
 
     path: Path
@@ -29,6 +30,7 @@ class Pipeline:
     cube_axes: str
     brdf_size: int
     gates: dict
+    report_nights: int
     recipes: dict[str, Recipe]
     all_probes: tuple[Probe, ...]
 
@@ -102,7 +104,15 @@ def _pipeline(path, data, report):
     sources = valid_sources(raw_sources, raw_recipes, report)
     probes = expanded_probes(head, recipes, sources, root, build_dir, report)
     return Pipeline(
-        path, root, build_dir, head.cube_axes, head.brdf.size, head.gates.limits(), recipes, probes
+        path,
+        root,
+        build_dir,
+        head.cube_axes,
+        head.brdf.size,
+        head.gates.limits(),
+        head.report.nights,
+        recipes,
+        probes,
     )
 
 

@@ -27,3 +27,12 @@ def bytes_of(path) -> bytes:
 def json_bytes(value) -> bytes:
     """JSON to be read by people and programs: one text for equal values, keys in the order given."""
     return (json.dumps(value, indent=1, ensure_ascii=False, allow_nan=False) + "\n").encode()
+
+
+def read_json(path) -> dict:
+    """The values of a JSON file; none where there is no file, or none that can be understood."""
+    try:
+        values = json.loads(bytes_of(path))
+    except (OSError, ValueError):
+        return {}
+    return values if isinstance(values, dict) else {}

@@ -3,6 +3,7 @@
 import os
 from collections import Counter
 
+from ..quantities import bytes_in_words
 from .failures import read_failure
 from .night import STATES
 from .staleness import HELD, MAY_RUN, UP_TO_DATE, WILL_RUN
@@ -86,11 +87,3 @@ def prune_lines(found, root, dry_run: bool):
         yield f"kept: {os.path.relpath(path, root)}: was changed by something else"
     size = bytes_in_words(sum(path.stat().st_size for path in outputs))
     yield f"{len(outputs)} files, {size}, {'would be ' if dry_run else ''}removed"
-
-
-def bytes_in_words(count: int) -> str:
-    """A number of bytes: '812 bytes', '5.33 MiB'."""
-    if count < 1024:
-        return f"{count} bytes"
-    power = min((count.bit_length() - 1) // 10, 4)
-    return f"{count / 1024**power:.4g} {('KiB', 'MiB', 'GiB', 'TiB')[power - 1]}"

@@ -44,7 +44,7 @@ def findings(record) -> list:
             "Audit out of tolerance",
             "The packed files differ from an unbiased estimate of the source by more than chance.",
             True,
-            list(_cases(probes, _audit_failed)),
+            [(p["name"], p["audit"]["why"]) for p in probes if p["audit"] and not p["audit"]["passed"]],
         ),
         Finding(
             "Published although a gate is broken",
@@ -79,31 +79,25 @@ def _broken(probes):
 
 
 def _cause(failure):
-    return f"{failure['file']}, {failure['stage']}: {failure['cause']}"
+    told = failure["cause"]
+    return told if told.startswith(failure["file"]) else f"{failure['file']}, {failure['stage']}: {told}"
 
 
 def _cases(probes, sentence):
-    told = ((probe["name"], sentence(probe.get("light") or {})) for probe in probes)
+    told = ((probe["name"], sentence(probe["light"] or {})) for probe in probes)
     return ((name, text) for name, text in told if text)
 
 
-def _audit_failed(light):
-    audit = light.get("audit")
-    if not audit or audit.get("passed", True):
-        return None
-    return "see its page"
-
-
 def _lost(light):
-    share = light.get("lost_to_clamping") or 0
+    share = light.get("lost_to_clamping", 0)
     return f"{100 * share:.2g} % of the flux" if share > 0 else None
 
 
 def _repaired(light):
-    count = light.get("repaired") or 0
+    count = light.get("repaired", 0)
     return f"{count} pixel{'s' if count > 1 else ''}" if count else None
 
 
 def _negative(light):
-    smallest = light.get("sh_smallest") or 0
+    smallest = light.get("sh_smallest", 0)
     return f"down to {smallest:.4g}" if smallest < 0 else None

@@ -6,7 +6,7 @@ tells so, and `PublishProbe` waits. Gates of the night are judged when it ends, 
 asked for, and hold nothing.
 """
 
-from ..engine.wording import bytes_in_words
+from ..quantities import bytes_in_words, percent
 
 
 def heavy_on_the_gpu(record, limit):
@@ -24,8 +24,29 @@ def failed_audit(record, limit):
     return record["audit"]["why"] or None
 
 
-# function(probe.json's values, limit)
-PROBE_GATES = {"bytes.probe_gpu": heavy_on_the_gpu, "audit": failed_audit}
+def changed_by_itself(record, limit):
+    """`gates.change.same_source`: the pixels changed, and the source did not."""
+    change = record["change"]
+    if change is None or change["source_changed"] or change["mean"] <= limit:
+        return None
+    return f"the source did not change, the pixels did by {percent(change['mean'])}, {_limit(limit)}"
+
+
+def changed_much(record, limit):
+    """`gates.change.mean`: the pixels changed by more than is to be published unseen."""
+    change = record["change"]
+    if change is None or change["mean"] <= limit:
+        return None
+    return f"the pixels changed by {percent(change['mean'])}, {_limit(limit)}"
+
+
+# function(probe.json's values and, as `change`, how they differ from what is published, limit)
+PROBE_GATES = {
+    "bytes.probe_gpu": heavy_on_the_gpu,
+    "audit": failed_audit,
+    "change.same_source": changed_by_itself,
+    "change.mean": changed_much,
+}
 NIGHT_GATES = {"bytes.night_disk": heavy_on_disk}  # function(night.json's values, limit)
 
 
@@ -37,6 +58,10 @@ def broken_gates(gates, record, limits) -> list:
     asked = ((key, limit) for key, limit in limits.items() if key in gates)
     told = ((key, gates[key](record, limit)) for key, limit in asked)
     return [{"gate": key, "why": why} for key, why in told if why]
+
+
+def _limit(share):
+    return f"the limit is {percent(share)}"
 
 
 def _over(where, found, limit):

@@ -39,7 +39,18 @@ def _run_every_kernel():
     import numpy as np
 
     from ..formats.radiance_hdr import read_radiance_hdr
-    from ..light import brdf, faces, harmonics, irradiance, photometry, pyramid, repair, sheen, specular
+    from ..light import (
+        brdf,
+        brute_lighting,
+        faces,
+        harmonics,
+        irradiance,
+        photometry,
+        pyramid,
+        repair,
+        sheen,
+        specular,
+    )
     from ..light.charts import PANORAMA
     from ..light.colour import converted
     from ..light.directions import alpha_from_roughness
@@ -58,6 +69,8 @@ def _run_every_kernel():
     irradiance.irradiance_cube(nodes, 4, 0.1)
     harmonics.irradiance_coefficients(sky)
     photometry.horizontal_illuminance(sky)
+    axes = np.eye(3)
+    brute_lighting.lit_by_source(sky, 0.0, np.ones((4, 4, 2)), axes, axes, axes, axes, np.array([0, 0.3, 1]))
     sky[2, 5] = 60_000  # a sun
     separate_sun(sky)
     brdf.brdf_table(4)

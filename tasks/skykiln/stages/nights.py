@@ -1,6 +1,5 @@
-"""A night over a pipeline: what comes before the stages run, and night.json after."""
+"""A night over a pipeline: what comes before the stages run, and night.json and the report after."""
 
-import json
 from pathlib import Path
 
 from ..config import Pipeline
@@ -15,10 +14,12 @@ from ..errors import ALL_WELL, GATE_BROKEN, SOURCE_FAILED, FileError
 from .bake_lot import BakeLot
 from .farm import bake_on_farm
 from .gates import NIGHT_GATES, broken_gates
-from .judge_probe import accept_judgement, read_judgement
+from .judge_probe import accept_judgement
 from .kernels import available_cores, warm_kernels
+from .night_entries import night_entry
 from .shares import luigi_tasks, manifests_removed
 from .snapshot import Snapshot
+from .write_report import write_report
 
 
 def night_file(pipeline: Pipeline) -> Path:
@@ -96,9 +97,10 @@ def prepare(night: Night, snapshot: Snapshot, workers: int):
 
 
 def write_record(night: Night, snapshot: Snapshot) -> dict:
-    """Write night.json. Returns: its values."""
+    """Write night.json, and the pages that tell of it. Returns: its values."""
     record = night_record(night, snapshot.pipeline)
     write_night(night_file(snapshot.pipeline), record)
+    write_report(record, snapshot.pipeline, snapshot.all_probes)
     return record
 
 
@@ -106,7 +108,7 @@ def night_record(night: Night, pipeline: Pipeline) -> dict:
     """The values of night.json."""
     table, *outcomes = night.outcomes
     states = [outcome.state for outcome in outcomes]
-    entries = [_probe_entry(outcome, f"{pipeline.root}/") for outcome in outcomes]
+    entries = [night_entry(outcome, pipeline.root) for outcome in outcomes]
     sizes = [entry["bytes"] for entry in entries if entry["bytes"]]
     record = {
         "schema": 1,
@@ -152,31 +154,3 @@ def _exit_status(night, gates):
     if night.failures:
         return SOURCE_FAILED
     return GATE_BROKEN if night.held or gates else ALL_WELL
-
-
-def _probe_entry(outcome, root):
-    target = outcome.target
-    failure = outcome.failure and {
-        "file": target.probe.file,
-        "stage": outcome.failure.stage,
-        "cause": outcome.failure.cause.replace(root, ""),
-    }
-    judgement = read_judgement(target.pinned)
-    return {
-        "name": target.owner,
-        "state": outcome.state,
-        "stages": outcome.stages(),
-        "failure": failure,
-        "gates": [] if failure else judgement["broken"],
-        "audit": None if failure else judgement["audit"],
-        "accepted": not failure and judgement["accepted"] and bool(judgement["broken"]),
-        "bytes": _published_bytes(Path(target.pinned.published) / "probe.json"),
-    }
-
-
-def _published_bytes(path):
-    """What a probe's published files take; None if there are none."""
-    try:
-        return json.loads(path.read_bytes())["bytes"]
-    except (OSError, ValueError, KeyError):
-        return None

@@ -34,6 +34,7 @@ def probe_record(settings, packed_names, inputs) -> dict:
         "sun": inputs["sun"].json()["sun"] if "sun" in inputs else None,
         "energy": {
             **{key: totals[key] for key in ("mean_radiance", "level_irradiance", "horizontal_illuminance")},
+            "brightest": inputs["looks"].json()["brightest"],
             "lost_to_clamping": max(pack["lost_to_clamping"] for pack in packs.values()),
         },
         "bytes": _bytes(settings["packs"], listed),

@@ -20,12 +20,14 @@ from ..engine.stage import Stage
 class PinnedProbe:
     """A probe, the digest of its source, and the folders of its pipeline.
 
+    source_bytes : size of the source's file when it was pinned; 0 where it can't be read
     root, build_dir : absolute paths; cube_axes : the pipeline's, which packs may override
     gates : canonical JSON of the limits that a probe is judged by, by their dotted keys
     """
 
     probe: Probe
     pin: str
+    source_bytes: int
     root: str
     build_dir: str
     cube_axes: str
@@ -63,6 +65,11 @@ class PinnedProbe:
     def published(self) -> str:
         """The folder that renderers read."""
         return f"{self.build_dir}/probes/{self.probe.name}"
+
+    @property
+    def pictures(self) -> str:
+        """The folder of the probe's page and pictures, in the report."""
+        return f"{self.build_dir}/report/probes/{self.probe.name}"
 
 
 class PinnedProbeParameter(luigi.Parameter):

@@ -3,15 +3,20 @@
 import json
 from pathlib import Path
 
+from .change import published_thumbnails
+from .draw_probe import DrawProbe
 from .judge_probe import JudgeProbe, read_judgement
 from .pack_probe import PackProbe, packed_names
 from .probe_stage import ProbeStage
 
 
 class PublishProbe(ProbeStage):
-    """All published files of a probe. While a gate holds it, those of an earlier night stay."""
+    """All published files of a probe. While a gate holds it, those of an earlier night stay.
 
-    version = 2
+    `thumbnails` stays in the work folder: what the next change is told against.
+    """
+
+    version = 3
     title = "published files"
     published = True
 
@@ -22,11 +27,13 @@ class PublishProbe(ProbeStage):
             for pack, names in packed_names(self.probe).items()
             for name in names
         }
-        return {"judgement": judgement, **packed, "probe.json": judgement}
+        drawn = {"thumbnails": self.of_same(DrawProbe)}
+        return {"judgement": judgement, **drawn, **packed, "probe.json": judgement}
 
     def files(self):
         names = [name for names in packed_names(self.probe).values() for name in names]
-        return {name: f"{self.pinned.published}/{name}" for name in (*names, "probe.json")}
+        published = {name: f"{self.pinned.published}/{name}" for name in (*names, "probe.json")}
+        return {"thumbnails": published_thumbnails(self.pinned), **published}
 
     @property
     def stamp_path(self):

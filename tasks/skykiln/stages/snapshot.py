@@ -55,16 +55,33 @@ class Snapshot:
     def targets(self) -> list:
         return [self.brdf, *self.probes]
 
-    def _pinned(self, probe):
+    @property
+    def all_probes(self) -> list:
+        """The targets of all probes of the pipeline: those that were not asked for unpinned, to look at."""
+        asked = {target.owner: target for target in self.probes}
+        return [
+            asked.get(probe.name) or PublishProbe.sketch(pinned=self._pinned(probe, ""))
+            for probe in self.pipeline.probes()
+        ]
+
+    def _pinned(self, probe, pin=None):
         root = self.pipeline.root
         return PinnedProbe(
             probe=probe,
-            pin=self.pins.pin(root / probe.file),
+            pin=self.pins.pin(root / probe.file) if pin is None else pin,
+            source_bytes=_size(root / probe.file),
             root=str(root),
             build_dir=str(self.pipeline.build_dir),
             cube_axes=self.pipeline.cube_axes,
             gates=self._gates,
         )
+
+
+def _size(path):
+    try:
+        return path.stat().st_size
+    except OSError:
+        return 0
 
 
 def check_extras(pipeline: Pipeline, probes):

@@ -1,4 +1,4 @@
-"""Numbers in words, for pages and texts."""
+"""Numbers in words, for pages, texts and messages."""
 
 import math
 
@@ -27,7 +27,7 @@ def stops(ratio) -> str:
 
 def amount(value) -> str:
     """A quantity with four digits: '98,000', '0.01234'."""
-    if value is None:
+    if value in (None, ""):
         return "-"
     size = abs(value)
     if size >= 1000:
@@ -35,15 +35,9 @@ def amount(value) -> str:
     return f"{value:.4g}"
 
 
-def change_words(change) -> str:
-    """The change of a probe in a line."""
-    parts = [f"pixels {percent(change['mean'])} on average, {percent(change['largest'])} at most"]
-    light = change["illuminance"]
-    if light["ratio"] is not None and abs(light["ratio"] - 1) >= 5e-5:
-        parts.append(f"illuminance {percent(light['ratio'] - 1, signed=True)} ({stops(light['ratio'])})")
-    moved = change["moved_deg"]
-    if moved is not None and moved >= 0.05:
-        parts.append(f"brightest spot moved {moved:.1f} degrees")
-    if not change["source_changed"]:
-        parts.append("its source did not change")
-    return "; ".join(parts)
+def bytes_in_words(count: int) -> str:
+    """A number of bytes: '812 bytes', '5.33 MiB'."""
+    if count < 1024:
+        return f"{count} bytes"
+    power = min((count.bit_length() - 1) // 10, 4)
+    return f"{count / 1024**power:.4g} {('KiB', 'MiB', 'GiB', 'TiB')[power - 1]}"
