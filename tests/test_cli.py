@@ -343,3 +343,25 @@ def test_inspect_refuses_what_is_no_vector(vector, capsys):
     with pytest.raises(SystemExit) as end:
         main(["inspect", "x.ktx2", "--at", vector])
     assert end.value.code == WRONG
+
+
+def test_view_writes_one_page_and_prints_its_size(pipeline, capsys):
+    _run(capsys, "bake", "ferry_noon")
+    status, out, _ = _run(capsys, "report", "--view", "ferry_noon")
+    path = pipeline.build / "report/view/ferry_noon.html"
+    assert (status, out) == (ALL_WELL, f"{path}: specular.rgba16f.ktx2, {path.stat().st_size / 1e6:.1f} MB\n")
+    assert path.read_bytes().startswith(b"<!doctype html>")
+    status, _, err = _run(capsys, "report", "--view", "ferry_noon", "--pack", "x.ktx2")
+    assert status == SOURCE_FAILED
+    assert err.endswith("no pack x.ktx2 among its files; KTX2 files: specular.rgba16f.ktx2\n")
+
+
+def test_view_of_what_is_not_one_baked_probe_says_so(pipeline, capsys):
+    status, _, err = _run(capsys, "report", "--view", "*")
+    assert (status, err) == (WRONG, "--view: 2 probes match '*'; name one\n")
+    status, _, err = _run(capsys, "report", "--view", "quay_nigth")
+    assert status == WRONG
+    assert "did you mean 'quay_night'?" in err
+    status, _, err = _run(capsys, "report", "--view", "quay_night")
+    assert status == SOURCE_FAILED
+    assert err.endswith("probe.json: is not there; bake the probe first\n")

@@ -20,12 +20,13 @@ def published(tmp_path):
     return written_probe(tmp_path)
 
 
-def written_probe(folder, name="ferry_noon", size=512, container="ktx2"):
+def written_probe(folder, name="ferry_noon", size=512, container="ktx2", primaries="rec709"):
     folder.mkdir(exist_ok=True)
     about = {"name": name, "cube_axes": "direct", "units": "cd/m2", "storage_ev": 3}
     levels = tuple(np.full((6, size >> k, size >> k, 3), k + 1, np.float32) for k in range(4))
-    write(folder / "specular.rgb9e5.ktx2", levels, {**about, "roughness": ROUGHNESS}, 1)
-    write(folder / "irradiance.rgb9e5.ktx2", levels[-1:], about, 0)
+    chain_about = {**about, "roughness": ROUGHNESS}
+    write(folder / "specular.rgb9e5.ktx2", levels, chain_about, primaries, 1)
+    write(folder / "irradiance.rgb9e5.ktx2", levels[-1:], about, primaries)
     table = Ktx2Texture("rg16f", (np.zeros((1, 4, 4, 2), np.float32),), {})
     (folder / "brdf.ktx2").write_bytes(write_ktx2(table))
     entry = {"container": container, "cube_axes": "direct"}
@@ -38,8 +39,9 @@ def written_probe(folder, name="ferry_noon", size=512, container="ktx2"):
     return folder
 
 
-def write(path, levels, about, compress):
-    path.write_bytes(write_ktx2(Ktx2Texture("rgb9e5", levels, {"skykiln": json.dumps(about)}), compress))
+def write(path, levels, about, primaries, compress=0):
+    texture = Ktx2Texture("rgb9e5", levels, {"skykiln": json.dumps(about)}, primaries)
+    path.write_bytes(write_ktx2(texture, compress))
 
 
 def block(page, key):
@@ -67,6 +69,15 @@ def test_full_page_holds_every_level(published):
     viewer = probe_viewer(published, published / "brdf.ktx2", full=True)
     assert viewer.left_out == 0
     assert [level.shape[1] for level in copy_in(viewer.page, "specular").levels] == [512, 256, 128, 64]
+
+
+def test_colours_of_other_primaries_come_to_the_screen_as_what_they_are(tmp_path):
+    folder = written_probe(tmp_path / "z", size=8, primaries="rec2020")
+    facts = json.loads(block(probe_viewer(folder, folder / "brdf.ktx2").page, "facts"))
+    # From BT.2020 to BT.709 (ITU-R BT.2407-0) and luminance (BT.2020-2, table 4); figures from memory.
+    matrix = [[1.6605, -0.5876, -0.0728], [-0.1246, 1.1329, -0.0083], [-0.0182, -0.1006, 1.1187]]
+    np.testing.assert_allclose(facts["to_rec709"], matrix, atol=1e-4)
+    np.testing.assert_allclose(facts["luminance_weights"], [0.2627, 0.6780, 0.0593], atol=1e-4)
 
 
 def test_page_names_no_address_and_forbids_requests(published):

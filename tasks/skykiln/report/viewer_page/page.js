@@ -110,7 +110,7 @@ class Page {
       '-': () => step('exposure', -0.5),
       f: () => byId('false-colour').click(),
     };
-    const act = keys[event.key];
+    const act = keys[event.key.length > 1 ? event.key : event.key.toLowerCase()];
     if (!act || event.ctrlKey || event.altKey || event.metaKey) return;
     event.preventDefault();
     act();
