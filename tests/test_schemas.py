@@ -104,6 +104,13 @@ BRDF = {
     "digest": DIGEST,
     "directional_albedo": [[1.0, 1.0, 1.0, 1.0]] * 4,
     "average_albedo": [1.0, 0.9, 0.7, 0.5],
+    "sheen": {
+        "file": "sheen.r16f.ktx2",
+        "container": "ktx2",
+        "pixels": "r16f",
+        "bytes": 250,
+        "digest": DIGEST,
+    },
 }
 STAGE = {"stage": "specular level 3", "reason": "roughness was 0.4286, is 0.4", "seconds": 0.2}
 HEAVY = {"gate": "bytes.probe_gpu", "why": "5 MiB on the GPU, the limit is 4 MiB"}
@@ -198,6 +205,7 @@ MISTAKES = [
     ("probe", ("surprise",), 1),
     ("brdf", ("pixels",), "rgba16f"),
     ("brdf", ("directional_albedo", 0), [2.0] * 4),
+    ("brdf", ("sheen", "pixels"), "rg16f"),
     ("night", ("exit_status",), 2),
     ("night", ("started",), "yesterday"),
     ("night", ("probes", 0, "failure"), NIGHT["probes"][2]["failure"]),

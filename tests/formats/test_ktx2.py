@@ -40,10 +40,11 @@ def test_smallest_cube_map_has_these_bytes():
     assert write_ktx2(Ktx2Texture("rgba16f", levels)) == expected
 
 
-def test_brdf_table_is_one_face_of_two_channels():
-    table = chain("rg16f", 4, levels=1, faces=1)
+@pytest.mark.parametrize(("pixels", "vk_format"), [("rg16f", 83), ("r16f", 76)])
+def test_table_is_one_face_of_one_or_two_channels(pixels, vk_format):
+    table = chain(pixels, 4, levels=1, faces=1)
     data = write_ktx2(table)
-    assert struct.unpack_from("<9I", data, 12) == (83, 2, 4, 4, 0, 0, 1, 1, 0)
+    assert struct.unpack_from("<9I", data, 12) == (vk_format, 2, 4, 4, 0, 0, 1, 1, 0)
     np.testing.assert_array_equal(read_ktx2(data, "t").levels[0], np.float16(table.levels[0]))
 
 

@@ -70,9 +70,11 @@ def test_header_metadata_and_sizes_are_told_of_every_container(written, containe
     assert ("as stored; radiance is 2^2 times that" in told) == (container != "dds")
 
 
-def test_table_is_told_without_energy(written):
-    table = np.random.default_rng(0).random((1, 8, 8, 2)).astype(np.float32)
-    path = written(write_ktx2(Ktx2Texture("rg16f", (table,))))
+@pytest.mark.parametrize(("pixels", "channels"), [("rg16f", 2), ("r16f", 1)])
+def test_table_is_told_without_energy(written, tmp_path, pixels, channels):
+    table = np.random.default_rng(0).random((1, 8, 8, channels)).astype(np.float32)
+    path = written(write_ktx2(Ktx2Texture(pixels, (table,))))
+    Inspection(path).draw(tmp_path / "table.png")
     assert len(rows(path)[0]) == 6
     assert "table of 8 x 8, 1 level," in next(Inspection(path).lines())
     with pytest.raises(FileError, match="a table has no directions"):

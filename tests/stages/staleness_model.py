@@ -57,7 +57,7 @@ def _bytes(item, clean):
 
 def _stages(asked, sources):
     """(label, class, settings, inputs, outputs) of every stage, what is read before what reads it."""
-    table = ["brdf/brdf.rg16f.ktx2", "brdf/brdf.json"]
+    table = ["brdf/brdf.rg16f.ktx2", "brdf/sheen.r16f.ktx2", "brdf/brdf.json"]
     yield "BRDF table of all probes", "TabulateBrdf", asked["brdf"]["size"], [], table
     for name, entry in asked["sources"].items():
         yield from _probe_stages(asked, name, entry, sources.get(name))

@@ -12,6 +12,7 @@ from skykiln.formats.ktx2 import read_ktx2
 from skykiln.light.cube_axes import from_cube_space
 from skykiln.light.directions import cube_directions
 from skykiln.light.harmonics import irradiance_from_coefficients
+from skykiln.light.sheen import sheen_albedo
 from skykiln.stages.extract_faces import auto_face_size
 from tiny_pipeline import TinyPipeline, published, sky_pixels, write_sky
 
@@ -168,3 +169,12 @@ def test_level_directions_of_a_linear_sky_keep_their_sign(pipeline):
     pipeline.bake()
     world = from_cube_space(_texture(pipeline, "specular.rgba16f.ktx2").levels[0], "negate_x")
     np.testing.assert_allclose(world, 1 + 0.8 * cube_directions(8), atol=0.05)
+
+
+def test_sheen_table_is_the_albedo_at_texel_centres(pipeline):
+    pipeline.bake()
+    record = json.loads((pipeline.build / "brdf/brdf.json").read_bytes())["sheen"]
+    data = (pipeline.build / "brdf" / record["file"]).read_bytes()
+    assert (record["bytes"], record["digest"]) == (len(data), digest_chunks([data]))
+    (table,) = read_ktx2(data, record["file"]).levels
+    np.testing.assert_allclose(table[0, :, :, 0], sheen_albedo(4), rtol=2.0**-11, atol=2.0**-25)

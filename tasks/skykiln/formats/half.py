@@ -1,4 +1,4 @@
-"""Half floats (IEEE 754 binary16): four channels with an alpha of 1, or two."""
+"""Half floats (IEEE 754 binary16): four channels with an alpha of 1, two, or one."""
 
 import numpy as np
 
@@ -36,6 +36,11 @@ def encode_rg(values) -> np.ndarray:
 def decode_rg(blocks: bytes, shape) -> np.ndarray:
     """Bytes of texels -> (*shape, 2) float32."""
     return np.frombuffer(blocks, "<f2").reshape(*shape, 2).astype(np.float32)
+
+
+def decode_r(blocks: bytes, shape) -> np.ndarray:
+    """Bytes of texels -> (*shape, 1) float32."""
+    return np.frombuffer(blocks, "<f2").reshape(*shape, 1).astype(np.float32)
 
 
 @exact

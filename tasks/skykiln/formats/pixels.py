@@ -83,6 +83,10 @@ PIXELS = {
         channels=2, block_side=1, block_bytes=4, type_size=2, vk_format=83, dxgi_format=34,
         model=MODEL_RGBSDA, samples=_half_samples(_RED, _GREEN), encode=half.encode_rg, decode=half.decode_rg,
     ),
+    "r16f": Coding(
+        channels=1, block_side=1, block_bytes=2, type_size=2, vk_format=76, dxgi_format=54,
+        model=MODEL_RGBSDA, samples=_half_samples(_RED), encode=half.nearest_half, decode=half.decode_r,
+    ),
     "rgb9e5": Coding(
         channels=3, block_side=1, block_bytes=4, type_size=4, vk_format=123, dxgi_format=67,
         model=MODEL_RGBSDA, samples=_SHARED_EXPONENT_SAMPLES, encode=encode_rgb9e5, decode=decode_rgb9e5,
