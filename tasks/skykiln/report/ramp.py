@@ -24,12 +24,17 @@ _RGB_FROM_LMS = np.array(
 )
 
 
+def linear_ramp(steps):
+    """(steps, 3) linear sRGB, dark to light."""
+    share = np.linspace(0, 1, steps)[:, None]
+    lab = (1 - share) * np.array(DARK) + share * np.array(LIGHT)
+    return np.clip((lab @ _LMS_FROM_LAB.T) ** 3 @ _RGB_FROM_LMS.T, 0, 1)
+
+
 @functools.cache
 def ramp():
     """(256, 3) uint8 sRGB, dark to light."""
-    share = np.linspace(0, 1, STEPS)[:, None]
-    lab = (1 - share) * np.array(DARK) + share * np.array(LIGHT)
-    linear = np.clip((lab @ _LMS_FROM_LAB.T) ** 3 @ _RGB_FROM_LMS.T, 0, 1)
+    linear = linear_ramp(STEPS)
     srgb = np.where(linear <= 0.0031308, 12.92 * linear, 1.055 * linear ** (1 / 2.4) - 0.055)
     return np.rint(srgb * 255).astype(np.uint8)
 

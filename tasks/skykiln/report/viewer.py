@@ -17,9 +17,10 @@ from skykiln.formats.ktx2_copy import plain_copy
 from skykiln.formats.texture_files import file_bytes
 from skykiln.light.colour import WORKING_SPACES, rgb_to_rgb, weights_of
 from skykiln.light.quay_scene import DISTANCE, FIELD_OF_VIEW, QUAY_SCENE, TARGET
-from skykiln.report.false_colour import MIDDLE_GREY, STOPS, false_colour_ramp
+from skykiln.report.false_colour import COLOURS, MIDDLE_GREY, STOPS
 from skykiln.report.inspection import ABOUT_KEY
 from skykiln.report.pictures import exposure_for
+from skykiln.report.ramp import linear_ramp
 
 LARGEST_FACE = 256  # texels of a face in a page that was not asked for whole
 _SCRIPTS = ("ktx2.js", "textures.js", "picture.js", "page.js")
@@ -111,7 +112,7 @@ def _facts(record, specular, texture, left_out):
         "exposure": exposure_for(faces.astype("f8") * 2.0 ** record["storage_ev"]),
         "luminance_weights": weights_of(space).tolist(),
         "to_rec709": rgb_to_rgb(space, WORKING_SPACES["rec709"]).tolist(),
-        "ramp": false_colour_ramp().tolist(),
+        "ramp": linear_ramp(COLOURS).tolist(),
         "stops": STOPS,
         "middle_grey": MIDDLE_GREY,
         "scene": _scene_record(),
