@@ -6,7 +6,7 @@ import time
 
 import pytest
 
-from skykiln.config import Pack, Probe, load_pipeline
+from skykiln.config import Pack, Patch, Probe, load_pipeline
 
 HEAD = """
 skykiln: 1
@@ -38,7 +38,7 @@ brdf: {size: 128}
 recipes:
   landmark:
     face_size: 512
-    colour: {working: rec709}
+    colour: {working: rec709, assume: acescg}
     sun: {action: keep}
     specular:
       levels: 8
@@ -61,6 +61,19 @@ sources:
     yaw_deg: 30
     exposure_ev: 0
     horizontal_lux: 1e5
+    sun_lux: 1.1e5
+    patch: {direction: [0, 0, -1], size_deg: 6, reflectance: 0.18, lux: 5e4, balance: true}
+    white_luminance: 4000
+    max_luminance: 1e6
+    face_axes: openexr
+    ground: {reflectance: 0.2}
+    flip: true
+    up: z
+    pitch_deg: 2
+    roll_deg: -1
+    part: 1
+    layer: sky
+    allow_ldr: true
     extra: {position: [0, 1.5, 0]}
   concourse:
     files: "concourse/**/*.exr"
@@ -80,13 +93,28 @@ def test_every_key_of_the_pipeline_file_reaches_the_probe(load):
     assert probe == Probe(
         name="ferry_noon",
         file="skies/ferry_noon.exr",
+        faces=(),
         layout="auto",
+        face_axes="openexr",
+        ground=("reflectance", (0.2, 0.2, 0.2)),
+        flip=True,
+        up="z",
         yaw_deg=30.0,
+        pitch_deg=2.0,
+        roll_deg=-1.0,
+        part=1,
+        layer="sky",
+        allow_ldr=True,
         exposure_ev=0.0,
         horizontal_lux=1e5,
+        sun_lux=1.1e5,
+        patch=Patch((0.0, 0.0, -1.0), 6.0, None, 0.18, 5e4, True),
+        white_luminance=4000.0,
+        max_luminance=1e6,
         extra='{"position":[0,1.5,0]}',
         recipe="landmark",
         working="rec709",
+        assumed="acescg",
         sun_action="keep",
         face_size=512,
         roughness=tuple(level / 7 for level in range(8)),
@@ -268,3 +296,35 @@ def test_probe_and_pack_are_plain_frozen_values(load):
     probe = load(HEAD + "sources: {sky: {file: a.exr, recipe: plain}}").probes()[0]
     with pytest.raises(dataclasses.FrozenInstanceError):
         probe.name = "other"
+
+
+SIX = """
+sources:
+  room:
+    recipe: plain
+    faces: {+x: a/px.exr, -x: a/nx.exr, +y: a/py.exr, -y: a/ny.exr, +z: a/pz.exr, -z: ./a/nz.exr}
+"""
+
+
+def test_six_files_of_faces_are_one_probe(load):
+    (probe,) = load(HEAD + SIX).probes()
+    assert (probe.name, probe.file) == ("room", "a/px.exr")
+    assert probe.faces == tuple(f"a/{face}.exr" for face in ("px", "nx", "py", "ny", "pz", "nz"))
+    assert probe.files == probe.faces
+    assert Probe.from_json(probe.to_json()) == probe
+
+
+def test_ground_and_patch_survive_json_in_every_form(load):
+    for ground in ("mirror", "0.5", "[1, 2, 3]", "{reflectance: [0.1, 0.2, 0.3]}", "null"):
+        source = f"file: a.exr, recipe: plain, ground: {ground}"
+        patch = "patch: {direction: [0, 1, 0], size_deg: 3, cd_m2: 100}"
+        (probe,) = load(HEAD + f"sources: {{sky: {{{source}, {patch}}}}}").probes()
+        assert Probe.from_json(probe.to_json()) == probe
+
+
+def test_limits_and_gates_of_light_reach_the_pipeline(load):
+    text = HEAD + "sources: {sky: {file: a.exr, recipe: plain}}\n"
+    text += "limits: {max_pixels: 5000}\ngates: {brightness: {stops: 1}, horizontal_lux: [100, 120000]}"
+    pipeline = load(text)
+    assert pipeline.max_pixels == 5000
+    assert pipeline.gates == {"brightness.stops": 1, "horizontal_lux": [100, 120000]}

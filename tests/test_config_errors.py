@@ -5,7 +5,6 @@ import os
 import pytest
 
 from skykiln.config import load_pipeline
-from skykiln.config.problems import nearest
 from skykiln.errors import PipelineError
 
 VALID = {
@@ -42,7 +41,13 @@ def lines(**changed):
 NUMBERS = "auto, 1, 2, 4, 8, 16, 32, 64, 128, 256, 512, 1024, 2048, 4096"
 
 CODINGS = "rgba16f, rgb9e5, r11g11b10f, bc6h, half, float"
-SETTINGS = "layout, yaw_deg, exposure_ev, horizontal_lux, extra, file, recipe"
+LAYOUTS = (
+    "auto, equirect, equirect_upper, cube, cross_horizontal, cross_vertical, strip_horizontal, "
+    "strip_vertical, angular, mirror_ball, fisheye"
+)
+GROUNDS = (
+    "mirror, a radiance from 0 (a number, or three), {reflectance: a number from 0 to 1, or three}, or null"
+)
 RISING = "allowed: numbers that start with 0 and rise to at most 1"
 SIZES = "a number of bytes such as 8388608, or a size such as 8 MiB or 1.5 GB"
 OUTSIDE = "allowed: a folder that doesn't hold the pipeline file"
@@ -52,9 +57,9 @@ VALUES = [
     ("face_size", "300", f"found 300; allowed: {NUMBERS}"),
     ("face_size", "true", f"found true; allowed: {NUMBERS}"),
     ("face_size", "512.0", f"found 512.0; allowed: {NUMBERS}"),
-    ("colour.working", "acescg", "found 'acescg'; allowed: rec709"),
-    ("colour.working", "rec2020", "found 'rec2020'; allowed: rec709"),
-    ("sun.action", "separate", "found 'separate'; allowed: keep"),
+    ("colour.working", "srgb", "found 'srgb'; allowed: rec709, rec2020, acescg"),
+    ("colour.assume", "p3", "found 'p3'; allowed: rec709, rec2020, acescg, aces2065_1, display_p3"),
+    ("sun.action", "remove", "found 'remove'; allowed: keep, separate"),
     ("specular.levels", "0", "found 0; allowed: a whole number from 1 to 13 or full"),
     ("specular.levels", "14", "found 14; allowed: a whole number from 1 to 13 or full"),
     ("specular.levels", "many", "found 'many'; allowed: a whole number from 1 to 13 or full"),
@@ -106,7 +111,43 @@ def test_wrong_value_in_a_recipe_is_told_with_what_is_allowed(problems, key, val
     [
         ("file: 3", "file: found 3; allowed: text"),
         ("file: ''", "file: found ''; allowed: text"),
-        ("layout: cross", "layout: found 'cross'; allowed: auto, equirect"),
+        ("layout: cross", f"layout: found 'cross'; allowed: {LAYOUTS}"),
+        ("layout: fisheye", f"layout: found 'fisheye', the sky alone; give ground: {GROUNDS}"),
+        ("ground: water", f"ground: found 'water'; allowed: {GROUNDS}"),
+        ("ground: -1", f"ground: found -1; allowed: {GROUNDS}"),
+        ("ground: {reflectance: 1.5}", f"ground: found a mapping; allowed: {GROUNDS}"),
+        ("ground: [1, 2]", f"ground: found a list; allowed: {GROUNDS}"),
+        ("patch: 3", "patch: found 3; allowed: a mapping or null"),
+        (
+            "patch: {size: 3, size_deg: 3, direction: [0, 1, 0], lux: 1, reflectance: 0.2}",
+            "patch.size: unknown key; did you mean 'size_deg'?",
+        ),
+        ("up: x", "up: found 'x'; allowed: y, z"),
+        ("flip: 1", "flip: found 1; allowed: true or false"),
+        (
+            "face_axes: direct\n    layout: angular",
+            "face_axes: found beside layout angular, whose images lie in one way alone; remove it",
+        ),
+        (
+            "patch: {direction: [0, 0, 1], size_deg: 5}",
+            "patch: allowed: cd_m2, or reflectance and lux, besides direction and size_deg",
+        ),
+        (
+            "patch: {direction: [0, 0, 1], size_deg: 5, cd_m2: 1, lux: 1}",
+            "patch: allowed: cd_m2, or reflectance and lux, besides direction and size_deg",
+        ),
+        (
+            "patch: {direction: [0, 0, 0], size_deg: 5, cd_m2: 1}",
+            "patch: found the direction 0, 0, 0; allowed: one that points somewhere",
+        ),
+        (
+            "patch: {direction: [0, 1], size_deg: 5, cd_m2: 1}",
+            "patch.direction: found a list; allowed: a list with 3 items, each a number",
+        ),
+        (
+            "exposure_ev: 1\n    sun_lux: 9000",
+            "exposure_ev: found beside sun_lux, which decides the scale; remove one of the two",
+        ),
         ("yaw_deg: west", "yaw_deg: found 'west'; allowed: a number from -360 to 360"),
         ("yaw_deg: 361", "yaw_deg: found 361; allowed: a number from -360 to 360"),
         ("exposure_ev: 40", "exposure_ev: found 40; allowed: a number from -32 to 32"),
@@ -116,7 +157,7 @@ def test_wrong_value_in_a_recipe_is_told_with_what_is_allowed(problems, key, val
         ),
         ("extra: [1]", "extra: found a list; allowed: a mapping"),
         ("extra: {a: .inf}", "extra: holds a number that is not finite; JSON has no such value"),
-        ("each: {}", f"each: unknown key; known here: {SETTINGS}"),
+        ("each: {}", "each: found beside 'file'; it goes with files"),
         ("exposure: 1", "exposure: unknown key; did you mean 'exposure_ev'?"),
         ("recipe: plane", "recipe: no recipe is called 'plane'; did you mean 'plain'?"),
         ("recipe: landmark", "recipe: no recipe is called 'landmark'; known here: plain"),
@@ -138,7 +179,15 @@ def test_wrong_setting_of_a_source_is_told_at_its_line(problems, setting, told):
         ("brdf: {size: 2}\nskykiln: 1", "brdf.size: found 2; allowed: a whole number from 4 to 1024"),
         ("cube_axes: up\nskykiln: 1", "cube_axes: found 'up'; allowed: negate_x, negate_z, direct"),
         ("gates: {audit: 1}\nskykiln: 1", "gates.audit: found 1; allowed: true or false"),
-        ("gates: {weight: 1}\nskykiln: 1", "gates.weight: unknown key; known here: bytes, audit"),
+        (
+            "gates: {weight: 1}\nskykiln: 1",
+            "gates.weight: unknown key; known here: bytes, audit, brightness, horizontal_lux, change",
+        ),
+        (
+            "gates: {horizontal_lux: [5, 1]}\nskykiln: 1",
+            "gates.horizontal_lux: found 5, 1; allowed: [least, most]",
+        ),
+        ("limits: {max_pixel: 1}\nskykiln: 1", "limits.max_pixel: unknown key; did you mean 'max_pixels'?"),
         (
             "gates: {bytes: {probe_gpu: 8 megs}}\nskykiln: 1",
             f"gates.bytes.probe_gpu: found '8 megs'; allowed: {SIZES}",
@@ -255,7 +304,7 @@ def test_pack_without_its_pixels_is_told_what_is_missing(problems):
 
 def test_missing_keys_are_told_at_the_entry(problems):
     assert problems(lines(source="sources:\n  sky: {}")) == [
-        "pipeline.yaml:4: sources.sky: file or files: missing",
+        "pipeline.yaml:4: sources.sky: file, files or faces: missing",
         "pipeline.yaml:4: sources.sky.recipe: missing. Name of the recipe that bakes it.",
     ]
 
@@ -313,13 +362,13 @@ def test_what_a_merge_key_would_bring_is_not_told_as_missing(problems):
     source = "sources:\n  sky: &sky {file: a.exr, recipe: plain}\n  other: {<<: *sky, yaw: 3}"
     assert problems(lines(source=source)) == [
         "pipeline.yaml:5: sources.other.<<: merge keys are not read; write the keys out",
-        f"pipeline.yaml:5: sources.other.yaw: unknown key; {nearest('yaw', SETTINGS.split(', '))}",
+        "pipeline.yaml:5: sources.other.yaw: unknown key; did you mean 'yaw_deg'?",
     ]
 
 
 def test_entry_with_neither_file_nor_files_has_its_other_mistakes_told(problems):
     assert problems(lines(source="sources:\n  d: {recipe: x, each: {a: {yaw_deg: far}}}")) == [
-        "pipeline.yaml:4: sources.d: file or files: missing",
+        "pipeline.yaml:4: sources.d: file, files or faces: missing",
         "pipeline.yaml:4: sources.d.each.a.yaw_deg: found 'far'; allowed: a number from -360 to 360",
         "pipeline.yaml:4: sources.d.recipe: no recipe is called 'x'; known here: plain",
     ]
@@ -425,7 +474,7 @@ recipes:
       - {container: png, pixels: rgba16f}
   interior:
     face_size: 32
-    sun: {action: separate}
+    sun: {action: remove}
 sources:
   sky: {file: 3, recipe: landmerk}
   ../up: {file: x.exr, recipe: interior}

@@ -59,3 +59,9 @@ def test_what_is_at_hand_stays_within_its_limit(tmp_path):
     assert sum(kept.nbytes for kept in content._at_hand.values()) <= content.AT_HAND_BYTES
     assert (str(tmp_path / "a.npy"), "11") in content._at_hand
     assert (str(tmp_path / "a.npy"), "huge") not in content._at_hand
+
+
+def test_an_empty_array_is_an_npy_file_too(tmp_path):
+    path = tmp_path / "empty.npy"
+    path.write_bytes(b"".join(chunks_of(np.empty((0, 3), np.int32))))
+    assert np.load(path).shape == (0, 3)

@@ -10,7 +10,7 @@ from skykiln.formats.cube_textures import ABOUT_KEY, read_cube_texture
 from skykiln.formats.dfd import PRIMARIES
 from skykiln.formats.image import ReadOptions
 from skykiln.formats.ktx2 import Ktx2Texture, write_ktx2
-from skykiln.light.colour import WORKING_SPACES
+from skykiln.light.colour import SPACES
 from skykiln.stages import packing
 
 RNG = np.random.default_rng(1)
@@ -58,8 +58,8 @@ def test_smaller_codings_are_read(tmp_path, pixels):
 def test_primaries_of_the_descriptor_are_handed_on(tmp_path, primaries):
     image = read_cube_texture(ktx2(tmp_path / "cube.ktx2", primaries=primaries))
     assert (image.chromaticities is None) == (primaries == "unspecified")
-    if primaries in WORKING_SPACES:
-        assert image.chromaticities == tuple(WORKING_SPACES[primaries])
+    if primaries in SPACES:
+        assert image.chromaticities == tuple(SPACES[primaries])
 
 
 def test_key_is_the_one_that_is_written():

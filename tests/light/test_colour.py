@@ -8,7 +8,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from skykiln.light.colour import (
-    WORKING_SPACES,
+    SPACES,
     Chromaticities,
     bradford_adaptation,
     converted,
@@ -22,8 +22,14 @@ with warnings.catch_warnings():
     warnings.simplefilter("ignore")  # it reports which of its optional parts are not there
     import colour as colour_science
 
-REC709, REC2020, ACESCG = (WORKING_SPACES[name] for name in ("rec709", "rec2020", "acescg"))
-THEIR_NAMES = {"rec709": "ITU-R BT.709", "rec2020": "ITU-R BT.2020", "acescg": "ACEScg"}
+REC709, REC2020, ACESCG = (SPACES[name] for name in ("rec709", "rec2020", "acescg"))
+THEIR_NAMES = {
+    "rec709": "ITU-R BT.709",
+    "rec2020": "ITU-R BT.2020",
+    "acescg": "ACEScg",
+    "aces2065_1": "ACES2065-1",
+    "display_p3": "Display P3",
+}
 EQUAL_ENERGY = Chromaticities((0.64, 0.33), (0.29, 0.60), (0.15, 0.06), (1 / 3, 1 / 3))
 
 
@@ -51,14 +57,14 @@ def test_rec709_to_acescg_is_the_matrix_of_bradford():
     np.testing.assert_allclose(rgb_to_rgb(REC709, ACESCG), expected, atol=1e-6)
 
 
-@pytest.mark.parametrize("target", WORKING_SPACES)
-@pytest.mark.parametrize("source", WORKING_SPACES)
+@pytest.mark.parametrize("target", SPACES)
+@pytest.mark.parametrize("source", SPACES)
 def test_matrices_are_those_of_colour_science(source, target):
     theirs = colour_science.matrix_RGB_to_RGB(
         *(colour_science.RGB_COLOURSPACES[THEIR_NAMES[name]] for name in (source, target)),
         chromatic_adaptation_transform="Bradford",
     )
-    ours = rgb_to_rgb(WORKING_SPACES[source], WORKING_SPACES[target])
+    ours = rgb_to_rgb(SPACES[source], SPACES[target])
     # Their BT.709 uses the standard's own matrix of four digits.
     np.testing.assert_allclose(ours, theirs, atol=2e-4)
 
@@ -76,13 +82,13 @@ def test_luminance_weights_are_the_published_ones():
     np.testing.assert_allclose(weights_of(REC709), LUMINANCE_WEIGHTS, atol=1e-15)
     # ITU-R BT.2020-2, table 4: 0.2627, 0.6780, 0.0593.
     np.testing.assert_allclose(weights_of(REC2020), [0.2627, 0.6780, 0.0593], atol=5e-5)
-    for space in (*WORKING_SPACES.values(), EQUAL_ENERGY):
+    for space in (*SPACES.values(), EQUAL_ENERGY):
         np.testing.assert_allclose(weights_of(space), rgb_to_xyz(space)[1], atol=1e-14)
 
 
-@pytest.mark.parametrize("target", WORKING_SPACES)
+@pytest.mark.parametrize("target", SPACES)
 def test_white_stays_white_whatever_its_colour_was(target):
-    matrix = rgb_to_rgb(EQUAL_ENERGY, WORKING_SPACES[target])
+    matrix = rgb_to_rgb(EQUAL_ENERGY, SPACES[target])
     np.testing.assert_allclose(matrix @ np.ones(3), 1.0, atol=1e-13)
 
 

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from skykiln.light.ground import with_ground
+from skykiln.light.ground import filled, with_ground
 from skykiln.light.photometry import level_irradiance
 
 
@@ -45,3 +45,20 @@ def test_what_was_captured_below_the_horizon_stays_and_lights_no_plain(kind):
 def test_less_than_the_upper_half_is_refused():
     with pytest.raises(ValueError, match="7 rows"):
         with_ground(np.ones((7, 32, 3), np.float32), 16, "mirror")
+
+
+def test_uncovered_pixels_take_the_ground_and_the_others_stay():
+    sky = np.random.default_rng(1).random((8, 16, 3)).astype(np.float32)
+    uncovered = np.zeros((8, 16), bool)
+    uncovered[6:, 3:5] = True
+    mirrored = filled(sky, uncovered, "mirror")
+    np.testing.assert_array_equal(mirrored[6:, 3:5], sky[1::-1, 3:5])
+    np.testing.assert_array_equal(mirrored[~uncovered], sky[~uncovered])
+    np.testing.assert_array_equal(filled(sky, uncovered, "colour", (1, 2, 3))[7, 4], [1, 2, 3])
+    lit = filled(np.ones((8, 16, 3), np.float32), uncovered, "reflectance", 0.25)
+    np.testing.assert_allclose(lit[uncovered], 0.25, rtol=1e-6)
+
+
+def test_a_mirror_without_anything_to_mirror_is_refused():
+    with pytest.raises(ValueError, match="isn't covered either"):
+        filled(np.ones((8, 16, 3), np.float32), np.ones((8, 16), bool), "mirror")

@@ -31,6 +31,7 @@ from skykiln.light.layouts import (
     panorama_of_faces,
     world_faces,
 )
+from skykiln.light.orientation import source_to_world
 from skykiln.light.photometry import mean_radiance
 
 EDGE = 128
@@ -140,6 +141,13 @@ def test_the_images_themselves_tell_right_handed_sets_from_left_handed_ones():
     assert likely_convention(images) == "openexr"
     images = photographed(marked_sky, tiled([[face] for face in TABLE]), 32, 192).reshape(6, 32, 32, 3)
     assert likely_convention(images) == "negate_x"
+
+
+@pytest.mark.parametrize("layout", ["cross_vertical", "angular", "equirect"])
+def test_a_turn_is_taken_with_the_layout(layout, expected):
+    turn = source_to_world(pitch=0.5, roll=0.2, flip=True)
+    panorama = panorama_from(picture_of(layout, lambda d: marked_sky(d @ turn.T)), layout, turn=turn)
+    assert differences(extract_faces(panorama, 32), expected[marked_sky][1]).max() < 0.07
 
 
 def test_faces_cut_from_a_cross_and_given_singly_agree():

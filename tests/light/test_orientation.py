@@ -4,10 +4,10 @@ import numpy as np
 import pytest
 from panorama_reference import coloured_linear, spread_directions
 
-from skykiln.light.directions import cube_directions, panorama_directions
+from skykiln.light.directions import panorama_directions
 from skykiln.light.faces import extract_faces
 from skykiln.light.facing import irradiance_facing
-from skykiln.light.orientation import UP_Z, mirrored, turn_of, turned, turned_faces
+from skykiln.light.orientation import UP_Z, mirrored, reoriented, source_to_world, turn_of, turned
 from skykiln.light.photometry import mean_radiance
 
 X, Y, Z = np.eye(3)
@@ -82,13 +82,25 @@ def test_there_and_back_keeps_irradiance():
         )
 
 
-@pytest.mark.parametrize("turn", [UP_Z, UP_Z.T, turn_of(yaw=QUARTER), turn_of(0, QUARTER, np.pi)])
-def test_quarter_turns_of_a_cube_only_move_texels(turn):
-    world = cube_directions(5)
-    np.testing.assert_allclose(turned_faces(world, turn) @ turn.T, world, atol=1e-12)
-
-
 def test_mirroring_exchanges_left_and_right():
     sky = coloured_linear(16)
     np.testing.assert_allclose(mirrored(sky)[..., 0], 2 - sky[..., 0], atol=1e-6)
     np.testing.assert_allclose(mirrored(sky)[..., 1:], sky[..., 1:], atol=1e-6)
+
+
+def test_a_source_is_mirrored_first_then_stood_up_then_levelled():
+    turn = source_to_world(pitch=0.2, roll=0.1, flip=True, up="z")
+    np.testing.assert_allclose(turn, turn_of(0, 0.2, 0.1) @ UP_Z @ np.diag([-1, 1, 1]))
+    assert source_to_world() is None
+
+
+def test_mirroring_alone_moves_pixels_and_nothing_keeps_them():
+    sky = np.random.default_rng(0).random((8, 16, 3)).astype(np.float32)
+    np.testing.assert_array_equal(reoriented(sky, source_to_world(flip=True)), mirrored(sky))
+    assert reoriented(sky, None) is sky
+
+
+def test_a_mirrored_and_turned_sky_is_that_of_mirrored_and_turned_directions():
+    turn = source_to_world(pitch=0.4, roll=-0.3, flip=True)
+    d = panorama_directions(128, 64) @ turn
+    np.testing.assert_allclose(reoriented(coloured_linear(64), turn), 1 + 0.8 * d, atol=0.03)

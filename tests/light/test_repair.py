@@ -6,7 +6,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 
-from skykiln.light.repair import Repairs, repair_pixels
+from skykiln.light.repair import INF, NAN, NEGATIVE, Repairs, repair_pixels
 
 
 def sky(height=8, width=16, value=1.0):
@@ -15,14 +15,14 @@ def sky(height=8, width=16, value=1.0):
 
 def test_good_pictures_pass_through_without_a_copy():
     pixels = sky()
-    same, repairs = repair_pixels(pixels)
+    same, repairs, _ = repair_pixels(pixels)
     assert same is pixels
     assert repairs == Repairs(0, 0, 0)
 
 
 def test_negative_zero_is_a_valid_zero():
     pixels = sky(value=-0.0)
-    same, repairs = repair_pixels(pixels)
+    same, repairs, _ = repair_pixels(pixels)
     assert same is pixels
     assert sum(repairs) == 0
 
@@ -33,7 +33,7 @@ def test_each_pixel_counts_once_as_the_worst_it_holds():
     pixels[2, 5] = [-np.inf, -1, 2]
     pixels[3, 9] = [1, -1e-6, 2]
     pixels[6, 9, 2] = -np.nan
-    mended, repairs = repair_pixels(pixels)
+    mended, repairs, _ = repair_pixels(pixels)
     assert repairs == Repairs(nan=2, inf=1, negative=1)
     np.testing.assert_array_equal(mended[6, 9], [1, 1, 1])
 
@@ -41,7 +41,7 @@ def test_each_pixel_counts_once_as_the_worst_it_holds():
 def test_only_the_channel_at_fault_changes_and_the_input_stays():
     pixels = sky()
     pixels[3, 3] = [7, -2, 9]
-    mended, _ = repair_pixels(pixels)
+    mended, _, _ = repair_pixels(pixels)
     np.testing.assert_array_equal(mended[3, 3], [7, 1, 9])
     assert pixels[3, 3, 1] == -2
 
@@ -74,7 +74,7 @@ def test_wide_holes_close_smoothly_between_their_rims():
     pixels = sky(32, 64)
     pixels[:, 32:] = 3.0
     pixels[8:24, 24:40] = np.inf
-    mended, repairs = repair_pixels(pixels)
+    mended, repairs, _ = repair_pixels(pixels)
     assert repairs.inf == 256
     assert mended.min() >= 1.0 and mended.max() <= 3.0
     assert (np.diff(mended[16, 22:42, 0]) >= -1e-6).all()
@@ -97,10 +97,19 @@ def test_mended_values_lie_between_the_valid_ones(pixels):
         with pytest.raises(ValueError, match="every value"):
             repair_pixels(pixels)
         return
-    mended, repairs = repair_pixels(pixels)
+    mended, repairs, _ = repair_pixels(pixels)
     assert sum(repairs) == (~valid.all(axis=-1)).sum()
     np.testing.assert_array_equal(mended[valid], pixels[valid])
     for channel in range(3):
         known = pixels[..., channel][valid[..., channel]]
         assert float(mended[..., channel].min()) >= float(known.min())
         assert float(mended[..., channel].max()) <= float(known.max()) * (1 + 1e-6)
+
+
+def test_places_say_where_and_what_the_worst_was():
+    pixels = np.ones((8, 16, 3), np.float32)
+    pixels[2, 3, 0], pixels[4, 4], pixels[5, 1, 2] = np.nan, np.inf, -1
+    pixels[2, 3, 1] = -2
+    _, _, places = repair_pixels(pixels)
+    np.testing.assert_array_equal(places, [[2, 3, NAN], [4, 4, INF], [5, 1, NEGATIVE]])
+    assert repair_pixels(np.ones((8, 16, 3), np.float32))[2].shape == (0, 3)

@@ -10,9 +10,10 @@ from sun_skies import LOW, NOON, toward, with_disc
 
 from skykiln.formats.source_files import read_source
 from skykiln.light.bright_regions import SUN_RADIUS, compact_regions, filled_from_rim, rim_of
+from skykiln.light.directions import panorama_directions
 from skykiln.light.facing import irradiance_facing
 from skykiln.light.photometry import LUMINANCE_WEIGHTS, horizontal_illuminance
-from skykiln.light.separate_sun import restored_sun, separate_sun
+from skykiln.light.separate_sun import restored_sun, separate_sun, with_restored_sun
 from skykiln.light.tangent_frames import around, tangent_frame
 
 SUNNY = {
@@ -143,11 +144,22 @@ def test_resolution_changes_neither_place_nor_power(height):
     assert sun.irradiance[0] == pytest.approx(np.pi * np.sin(SUN_RADIUS) ** 2 * 2e5, rel=0.05)
 
 
-def test_a_lost_suns_light_comes_back_in_its_own_colour(separated):
+def test_a_lost_suns_light_comes_back_in_its_own_colour_and_narrows_the_light(separated):
     sun = separated["clipped_noon"][2]
     more = restored_sun(sun, 1000.0)
     assert (more.irradiance - sun.irradiance) @ LUMINANCE_WEIGHTS == pytest.approx(1000)
     np.testing.assert_allclose(more.irradiance / sun.irradiance, more.irradiance[0] / sun.irradiance[0])
+    assert SUN_RADIUS < more.angular_radius < 1.01 * SUN_RADIUS < sun.angular_radius
+
+
+def test_a_lost_suns_light_comes_back_into_the_sky_from_the_suns_own_disc(separated):
+    source, _, sun = separated["clipped_noon"]
+    restored = with_restored_sun(source, sun, 1000.0)
+    more = irradiance_facing(restored, sun.direction) - irradiance_facing(source, sun.direction)
+    np.testing.assert_allclose(more, (restored_sun(sun, 1000.0).irradiance - sun.irradiance), rtol=1e-3)
+    rows, columns = np.nonzero((restored != source).any(-1))
+    d = panorama_directions(1024, 512)[rows, columns]
+    assert np.degrees(np.arccos(d @ sun.direction)).max() < np.degrees(SUN_RADIUS) + 0.3
 
 
 @pytest.mark.parametrize("place", [toward(0, 90), toward(180, 30), toward(37, 89.8)])

@@ -69,11 +69,13 @@ def _probe_stages(asked, name, entry, source):
     tolerance, yaw = recipe["specular"]["tolerance"], entry["yaw_deg"]
     pixels, facts = f"{work}/panorama.npy", f"{work}/source.json"
     cube, totals = f"{work}/irradiance.npy", f"{work}/irradiance.json"
-    yield f"panorama of {name}", "DecodeSource", entry["exposure_ev"], [source], [pixels, facts]
+    light, repairs = f"{work}/light.json", f"{work}/repairs.npy"
+    decoded = [pixels, facts, light, repairs]
+    yield f"panorama of {name}", "DecodeSource", entry["exposure_ev"], [source], decoded
     sun = []
     if recipe["sun"]["action"] == "separate":
         sky, sun = f"{work}/sky.npy", [f"{work}/sun.json"]
-        yield f"sky without its sun of {name}", "SeparateSun", yaw, [pixels], [sky, *sun]
+        yield f"sky without its sun of {name}", "SeparateSun", yaw, [pixels, light], [sky, *sun]
         pixels = sky
     yield f"faces of {name}", "ExtractFaces", (recipe["face_size"], yaw), [pixels], [f"{work}/faces.npy"]
     chain = [f"{work}/faces.npy"]
@@ -93,14 +95,14 @@ def _probe_stages(asked, name, entry, source):
         names = [f"specular.{own}.ktx2", f"irradiance.{own}.ktx2", f"specular.{own}.ktx2.json"]
         packed += [f"{work}/packed/{file}" for file in names]
         settings = (pack.get("cube_axes"), tuple(levels))
-        yield f"pack {names[0]} of {name}", "PackProbe", settings, [*chain, cube], packed[-3:]
+        yield f"pack {names[0]} of {name}", "PackProbe", settings, [light, *chain, cube], packed[-3:]
     audit, axes = [f"{work}/audit.json"], [pack.get("cube_axes") for pack in recipe["pack"]]
     held = (tuple(levels), tolerance, yaw, tuple(axes))
     yield f"audit of {name}", "AuditProbe", held, [pixels, *packed], audit
     said = (entry["recipe"], repr(entry["extra"]), tuple(levels), yaw, repr(recipe["pack"]))
     judged = [f"{work}/record.json", f"{work}/judgement.json"]
     compared = [f"{work}/comparison.json", f"{pictures}/change.png"]
-    read = [facts, *sun, totals, looks, thumbnails, *packed, *audit]
+    read = [facts, light, *sun, totals, looks, thumbnails, *packed, *audit]
     yield f"judgement of {name}", "JudgeProbe", said, read, [*judged, *compared]
     textures = [file for file in packed if file.endswith(".ktx2")]
     files = [file.replace(f"{work}/packed", f"probes/{name}") for file in textures]

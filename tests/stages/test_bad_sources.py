@@ -112,7 +112,8 @@ def test_absurd_panorama_is_told_with_the_file(tmp_path, shape, layout):
     write_sky(tmp_path / "ferry_noon.exr", pixels=np.ones((*shape, 3), np.float32))
     pipeline.bake()
     (_, failure), = pipeline.night.failures
-    start = f"{tmp_path}/ferry_noon.exr: {shape[1]} x {shape[0]} can't be a panorama"
+    what = "can't be a panorama" if layout == "equirect" else "is not twice as wide as high"
+    start = f"{tmp_path}/ferry_noon.exr: {shape[1]} x {shape[0]} {what}"
     assert (failure.cause[: len(start)], failure.traceback) == (start, "")
 
 
@@ -121,7 +122,7 @@ def test_black_sky_can_t_be_scaled_to_an_illuminance(tmp_path):
     write_sky(tmp_path / "ferry_noon.exr", pixels=0 * sky_pixels(0))
     pipeline.settings["sources"]["ferry_noon"]["horizontal_lux"] = 1000
     pipeline.bake()
-    assert "no light from above" in pipeline.night.failures[0][1].cause
+    assert "horizontal_lux: the picture has no light there to scale" in pipeline.night.failures[0][1].cause
 
 
 def test_brightness_beyond_single_precision_is_refused(tmp_path):

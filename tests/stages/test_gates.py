@@ -228,3 +228,56 @@ def test_limit_itself_is_allowed_and_one_byte_more_is_told(gpu, told):
     record = {"bytes": {"disk": 0, "gpu": gpu}}
     broken = broken_gates(PROBE_GATES, record, {"bytes.probe_gpu": 8 * 2**20})
     assert [gate["why"] for gate in broken] == told
+
+
+@pytest.mark.parametrize(
+    ("sun", "units", "told"),
+    [
+        (None, "cd/m2", ["400 lux on a level surface, the limits are 500 to 2000"]),
+        ({"illuminance": 200, "direction": [0, 0.6, 0.8]}, "cd/m2", []),
+        ({"illuminance": 9000, "direction": [0, -0.6, 0.8]}, "cd/m2", [
+            "400 lux on a level surface, the limits are 500 to 2000"
+        ]),
+        (None, "relative", []),
+    ],
+)  # fmt: skip
+def test_illuminance_counts_the_sun_above_the_horizon_and_only_where_it_is_lux(sun, units, told):
+    record = {"units": units, "sun": sun, "energy": {"horizontal_illuminance": 400}}
+    broken = broken_gates(PROBE_GATES, record, {"horizontal_lux": [500, 2000]})
+    assert [each["why"] for each in broken] == told
+
+
+def night_of(**luminances):
+    light = {"units": "relative", "sun": None}
+    probes = [
+        {"name": name, "recipe": "tiny", "light": {**light, "mean_luminance": value}}
+        for name, value in luminances.items()
+    ]
+    return {"probes": [*probes, {"name": "failed", "recipe": "tiny", "light": None}]}
+
+
+def test_a_probe_far_from_its_recipe_s_median_breaks_the_night_s_gate():
+    (broken,) = broken_gates(NIGHT_GATES, night_of(a=1, b=1.9, c=1, d=0.4, e=3), {"brightness.stops": 1})
+    assert broken["why"] == (
+        "d stands 1.32 stops below the median of recipe 'tiny', 1; the limit is 1; "
+        "e stands 1.58 stops above the median of recipe 'tiny', 1; the limit is 1"
+    )
+    assert broken_gates(NIGHT_GATES, night_of(a=1, b=1.9, c=1, d=0.6), {"brightness.stops": 1}) == []
+
+
+def test_of_two_probes_none_is_the_odd_one_and_a_black_one_is_far_below():
+    assert broken_gates(NIGHT_GATES, night_of(a=1, b=100), {"brightness.stops": 1}) == []
+    (broken,) = broken_gates(NIGHT_GATES, night_of(a=1, b=1, c=0), {"brightness.stops": 8})
+    assert broken["why"].startswith("c stands inf stops below")
+
+
+def test_a_night_tells_a_probe_that_is_twice_as_bright_as_its_neighbours(tmp_path):
+    pipeline = TinyPipeline(tmp_path, probes=["a", "b", "c"])
+    pipeline.settings["gates"] = {"brightness": {"stops": 0.9}}
+    pipeline.bake()
+    assert pipeline.night_record()["gates"] == []
+    pipeline.settings["sources"]["b"]["exposure_ev"] = 1
+    pipeline.bake()
+    (broken,) = pipeline.night_record()["gates"]
+    assert broken["why"].startswith("b stands 0.953 stops above")
+    assert pipeline.night_record()["exit_status"] == 3

@@ -138,6 +138,7 @@ def test_files_tell_a_loader_what_it_must_know(pipeline):
             "roughness": [0, 0.5, 1],
             "cube_axes": axes,
             "units": "relative",
+            "primaries": "rec709",
             "storage_ev": ev,
         }
         assert packed.levels[0].max() <= STORED_MAX

@@ -2,6 +2,6 @@
 
 from .model import pipeline_schema
 from .pipeline import Pipeline, load_pipeline
-from .probes import Pack, Probe, canonical_json
+from .probes import Pack, Patch, Probe, canonical_json
 
-__all__ = ["Pack", "Pipeline", "Probe", "canonical_json", "load_pipeline", "pipeline_schema"]
+__all__ = ["Pack", "Patch", "Pipeline", "Probe", "canonical_json", "load_pipeline", "pipeline_schema"]

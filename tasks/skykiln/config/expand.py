@@ -5,10 +5,11 @@ import glob
 from pathlib import Path, PurePosixPath
 from typing import NamedTuple
 
-from .model import GlobSource, Recipe, SourceSettings
+from .model import Recipe
 from .names import clashes, name_fault
-from .probes import Pack, Probe, canonical_json
+from .probes import Pack, Patch, Probe, canonical_json
 from .problems import nearest
+from .source_model import FacesSource, GlobSource, SourceSettings
 
 
 class Member(NamedTuple):
@@ -51,6 +52,8 @@ def _members(entry, source, root, build_dir, report):
     if fault:
         report(path, fault)
         return []
+    if isinstance(source, FacesSource):
+        return [Member(entry, PurePosixPath(source.faces.plus_x).as_posix(), path, None)]
     if not isinstance(source, GlobSource):
         return [Member(entry, PurePosixPath(source.file).as_posix(), path, None)]
     files = _matches(source.files, (*path, "files"), root, build_dir, report)
@@ -111,6 +114,7 @@ def _recipe_part(head, recipe: Recipe):
     levels = chain_length(recipe) or 1  # a chain of unknown length has been reported
     return {
         "working": recipe.colour.working,
+        "assumed": recipe.colour.assume,
         "sun_action": recipe.sun.action,
         "face_size": 0 if recipe.face_size == "auto" else recipe.face_size,
         "roughness": linear_roughness(levels) if linear else tuple(specular.roughness),
@@ -150,4 +154,11 @@ def _probe(source, member, recipe, recipe_part):
         settings |= {name: getattr(member.changes, name) for name in changed}
         settings["extra"] = {**source.extra, **member.changes.extra}
     settings["extra"] = canonical_json(settings["extra"])
-    return Probe(name=member.name, file=member.file, recipe=recipe, **settings, **recipe_part(recipe))
+    if settings["patch"]:
+        patch = settings["patch"].model_dump()
+        settings["patch"] = Patch(**{**patch, "direction": tuple(patch["direction"])})
+    faces = source.faces.files() if isinstance(source, FacesSource) else ()
+    faces = tuple(PurePosixPath(file).as_posix() for file in faces)
+    return Probe(
+        name=member.name, file=member.file, faces=faces, recipe=recipe, **settings, **recipe_part(recipe)
+    )

@@ -3,20 +3,14 @@
 A value that is not listed here is an error. Descriptions are written for the person who types the file.
 """
 
-import math
 import re
 from typing import Annotated, Any, Literal
 
-from pydantic import (
-    BaseModel,
-    BeforeValidator,
-    ConfigDict,
-    Field,
-    PlainValidator,
-    StringConstraints,
-    WithJsonSchema,
-)
+from pydantic import AfterValidator, BeforeValidator, Field, PlainValidator, StringConstraints, WithJsonSchema
 from pydantic_core import PydanticCustomError
+
+from .section import Path, Section, own_sentence
+from .source_model import FacesSource, FileSource, GlobSource
 
 CubeAxes = Literal["negate_x", "negate_z", "direct"]
 FaceSize = Literal["auto", 1, 2, 4, 8, 16, 32, 64, 128, 256, 512, 1024, 2048, 4096]
@@ -68,16 +62,6 @@ def _roughness(value):
     return [float(item) for item in value]
 
 
-def _finite(value):
-    """The value, unless a number anywhere in it has no JSON form."""
-    if isinstance(value, float) and not math.isfinite(value):
-        raise PydanticCustomError("no_json", "holds a number that is not finite; JSON has no such value")
-    children = value.values() if isinstance(value, dict) else value if isinstance(value, list) else ()
-    for child in children:
-        _finite(child)
-    return value
-
-
 def _size(value):
     """A number of bytes, or None; from a number or a text with a unit."""
     if value is None or (type(value) is int and value > 0):
@@ -88,22 +72,27 @@ def _size(value):
     return round(float(found[1]) * UNITS[found[2]])
 
 
+def _rising(limits):
+    """[least, most], in this order."""
+    if limits[0] > limits[1]:
+        raise own_sentence(f"found {limits[0]:g}, {limits[1]:g}; allowed: [least, most]")
+    return limits
+
+
+LuxRange = Annotated[list[float], Field(min_length=2, max_length=2), AfterValidator(_rising)]
 Roughness = Annotated[Any, PlainValidator(_roughness), WithJsonSchema(ROUGHNESS_SCHEMA)]
 Size = Annotated[Any, PlainValidator(_size), WithJsonSchema(SIZE_SCHEMA)]
-Extra = Annotated[dict[str, Any], BeforeValidator(_finite)]
-Path = Annotated[str, StringConstraints(min_length=1)]
-
-
-class Section(BaseModel):
-    model_config = ConfigDict(
-        extra="forbid", frozen=True, strict=True, allow_inf_nan=False, use_attribute_docstrings=False
-    )
 
 
 class Colour(Section):
     """Colour of the baked values."""
 
-    working: Literal["rec709"] = Field("rec709", description="Primaries that the light is baked in.")
+    working: Literal["rec709", "rec2020", "acescg"] = Field(
+        "rec709", description="Primaries that the light is baked in."
+    )
+    assume: Literal["rec709", "rec2020", "acescg", "aces2065_1", "display_p3"] = Field(
+        "rec709", description="Primaries of files that don't tell their own."
+    )
 
 
 class Sun(Section):
@@ -196,56 +185,6 @@ class Recipe(Section):
     )
 
 
-class SourceSettings(Section):
-    """What may be said about a source besides where it lies."""
-
-    layout: Literal["auto", "equirect"] = Field(
-        "auto", description="How the image covers the sphere; auto: as the file says, else equirect."
-    )
-    yaw_deg: float = Field(
-        0.0, ge=-360, le=360, description="Turn about the vertical; positive takes +z towards +x."
-    )
-    exposure_ev: float = Field(
-        0.0, ge=-32, le=32, description="Stops by which the source is brightened."
-    )
-    horizontal_lux: Annotated[float, Field(gt=0, le=1e7)] | None = Field(
-        None,
-        description="Measured illuminance on a level surface in lux: the source is scaled to it, "
-        "its values are then cd/m2. null: the source stays relative.",
-    )
-    extra: Extra = Field(
-        {}, description="Copied unread into probe.json: position, influence box, whatever you need."
-    )
-
-
-class FileSource(SourceSettings):
-    """One file: one probe, named as the entry."""
-
-    file: Path = Field(description="The image file; relative to the pipeline file.")
-    recipe: str = Field(description="Name of the recipe that bakes it.")
-
-
-class EachOverride(SourceSettings):
-    """Settings of one file of a glob that differ from those of its entry."""
-
-    recipe: str | None = Field(None, description="Another recipe for this file; null: the entry's.")
-
-
-class GlobSource(SourceSettings):
-    """Many files: one probe each, named <entry>/<path below the glob's fixed part, without suffix>."""
-
-    files: Path = Field(
-        description="Glob of image files, ** crosses folders; relative to the pipeline file. "
-        "Files below build_dir are never taken."
-    )
-    recipe: str = Field(description="Name of the recipe that bakes them.")
-    each: dict[str, EachOverride] = Field(
-        {},
-        description="Settings of single files by their path below the glob's fixed part, without suffix. "
-        "Keys of extra are laid over the entry's.",
-    )
-
-
 class Brdf(Section):
     """The BRDF table."""
 
@@ -276,6 +215,16 @@ class ChangeGates(Section):
     )
 
 
+class BrightnessGates(Section):
+    """Limits of brightness against others of the recipe."""
+
+    stops: Annotated[float, Field(gt=0, le=32)] | None = Field(
+        None,
+        description="How far a probe's mean luminance may stand from the median of its recipe. "
+        "Judged when the night ends; holds no single probe.",
+    )
+
+
 class Gates(Section):
     """Limits; a probe that crosses one is held."""
 
@@ -287,14 +236,34 @@ class Gates(Section):
         description="true: a probe that fails its audit is held. false: it is published, and night.json "
         "and the last lines of the bake tell of it.",
     )
+    brightness: BrightnessGates = Field(
+        BrightnessGates(), description="Limits of brightness against others of the recipe."
+    )
+    horizontal_lux: LuxRange | None = Field(
+        None,
+        description="[least, most] illuminance on a level surface, in lux, of probes in cd/m2, their "
+        "sun counted. null: not judged.",
+    )
 
     change: ChangeGates = Field(ChangeGates(), description="Limits of change, as shares.")
 
     def limits(self) -> dict:
         """The limits that are given, by their dotted keys below `gates`."""
-        sections = self.model_dump(exclude_none=True)
-        limits = {"audit": True} if sections.pop("audit") else {}
-        return limits | {f"{name}.{key}": it for name, keys in sections.items() for key, it in keys.items()}
+        found = {}
+        for name, limit in self.model_dump(exclude_none=True).items():
+            if isinstance(limit, dict):
+                found |= {f"{name}.{key}": each for key, each in limit.items()}
+            elif limit is not False:
+                found[name] = limit
+        return found
+
+
+class Limits(Section):
+    """What a source may be at most, so that a damaged header takes no machine down."""
+
+    max_pixels: Annotated[int, Field(ge=1, le=1 << 32)] | None = Field(
+        None, description="Pixels of a picture; null: 134217728, 16384 x 8192."
+    )
 
 
 class Report(Section):
@@ -322,6 +291,7 @@ class PipelineHead(Section):
     brdf: Brdf = Field(Brdf(), description="The BRDF table, shared by all probes.")
     gates: Gates = Field(Gates(), description="Limits; a probe that crosses one is held.")
     report: Report = Field(Report(), description="The pages that tell of a night.")
+    limits: Limits = Field(Limits(), description="Limits that every source file keeps.")
 
 
 class PipelineFile(PipelineHead):
@@ -330,7 +300,7 @@ class PipelineFile(PipelineHead):
     recipes: dict[str, Recipe] = Field(
         min_length=1, description="Named sets of parameters that sources are baked with."
     )
-    sources: dict[str, FileSource | GlobSource] = Field(
+    sources: dict[str, FileSource | FacesSource | GlobSource] = Field(
         min_length=1, description="What is baked: the name of a probe, or of a group of them, and its entry."
     )
 

@@ -7,11 +7,12 @@ from pathlib import Path
 import yaml
 
 from ..errors import PipelineError
-from .entries import valid_recipes, valid_sources
+from .entries import valid_recipes
 from .expand import expanded_probes
 from .model import PipelineHead, Recipe
 from .probes import Probe
 from .problems import dotted, nearest, printable, shown, validated
+from .source_entries import valid_sources
 from .yaml_lines import LARGEST_TEXT, LinedData, Problem, read_lined_yaml
 
 
@@ -22,6 +23,7 @@ class Pipeline:
     path : as given; root : its folder, absolute; build_dir : absolute
     recipes : name -> Recipe; gates : the limits that are given, by their dotted keys below `gates`
     report_nights : how many nights' records are kept
+    max_pixels : the largest source picture; None: the readers' own limit
     """
 
     path: Path
@@ -31,6 +33,7 @@ class Pipeline:
     brdf_size: int
     gates: dict
     report_nights: int
+    max_pixels: int | None
     recipes: dict[str, Recipe]
     all_probes: tuple[Probe, ...]
 
@@ -104,15 +107,16 @@ def _pipeline(path, data, report):
     sources = valid_sources(raw_sources, raw_recipes, report)
     probes = expanded_probes(head, recipes, sources, root, build_dir, report)
     return Pipeline(
-        path,
-        root,
-        build_dir,
-        head.cube_axes,
-        head.brdf.size,
-        head.gates.limits(),
-        head.report.nights,
-        recipes,
-        probes,
+        path=path,
+        root=root,
+        build_dir=build_dir,
+        cube_axes=head.cube_axes,
+        brdf_size=head.brdf.size,
+        gates=head.gates.limits(),
+        report_nights=head.report.nights,
+        max_pixels=head.limits.max_pixels,
+        recipes=recipes,
+        all_probes=probes,
     )
 
 

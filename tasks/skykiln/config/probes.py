@@ -31,18 +31,45 @@ class Pack:
 
 
 @dataclasses.dataclass(frozen=True)
+class Patch:
+    """A patch of the sky whose luminance was measured: `cd_m2`, or a card's reflectance and `lux`."""
+
+    direction: tuple[float, float, float]
+    size_deg: float
+    cd_m2: float | None
+    reflectance: float | None
+    lux: float | None
+    balance: bool
+
+
+@dataclasses.dataclass(frozen=True)
 class Probe:
     """One source and all that is asked of it."""
 
     name: str
     file: str  # with forward slashes, relative to the pipeline's folder (or absolute as the user wrote it)
+    faces: tuple[str, ...]  # of a source of six files all of them, `file` being the first; else empty
     layout: str
+    face_axes: str
+    ground: tuple | None  # kind, channels
+    flip: bool
+    up: str
     yaw_deg: float
+    pitch_deg: float
+    roll_deg: float
+    part: str | int | None
+    layer: str | None
+    allow_ldr: bool
     exposure_ev: float
     horizontal_lux: float | None
+    sun_lux: float | None
+    patch: Patch | None
+    white_luminance: float | None
+    max_luminance: float | None
     extra: str  # canonical JSON of a mapping
     recipe: str
     working: str
+    assumed: str  # primaries of a file that doesn't tell its own
     sun_action: str
     face_size: int  # 0: auto
     roughness: tuple[float, ...]  # one per level
@@ -51,14 +78,27 @@ class Probe:
     irradiance_sh_order: int
     packs: tuple[Pack, ...]
 
+    @property
+    def files(self) -> tuple[str, ...]:
+        """All files of the source."""
+        return self.faces or (self.file,)
+
     def to_json(self) -> str:
         """Canonical JSON of the probe."""
-        return canonical_json({**vars(self), "packs": [vars(pack) for pack in self.packs]})
+        packs, patch = [vars(pack) for pack in self.packs], self.patch and vars(self.patch)
+        return canonical_json({**vars(self), "packs": packs, "patch": patch})
 
     @classmethod
     def from_json(cls, text: str) -> "Probe":
         """The probe that `to_json` wrote."""
         fields = json.loads(text)
-        fields["roughness"] = tuple(fields["roughness"])
+        for name in ("faces", "roughness"):
+            fields[name] = tuple(fields[name])
+        if fields["ground"]:
+            kind, channels = fields["ground"]
+            fields["ground"] = kind, channels and tuple(channels)
+        if fields["patch"]:
+            patch = fields["patch"]
+            fields["patch"] = Patch(**{**patch, "direction": tuple(patch["direction"])})
         fields["packs"] = tuple(Pack(**pack) for pack in fields["packs"])
         return cls(**fields)

@@ -14,7 +14,7 @@ BOUNDS = {
 }
 
 # Errors whose own sentence says more than a list of what is allowed.
-OWN_SENTENCES = ("no_json",)
+OWN_SENTENCES = ("own",)
 
 
 def validated(model, data, path, report):
@@ -85,7 +85,8 @@ def _sentence(fault, model, inner):
     if kind in OWN_SENTENCES:
         return fault["msg"]
     if kind == "extra_forbidden":
-        return f"unknown key; {nearest(inner[-1], _schema_at(model, inner[:-1]).get('properties', ()))}"
+        section = _branch(_schema_at(model, inner[:-1]), _schema(model))
+        return f"unknown key; {nearest(inner[-1], section.get('properties', ()))}"
     schema = _schema_at(model, inner)
     if kind == "missing":
         return f"missing. {schema.get('description', 'The key is needed.')}"
@@ -102,7 +103,7 @@ def _schema_at(model, inner):
     whole = _schema(model)
     node = whole
     for step in inner:
-        node = _resolved(node, whole)
+        node = _branch(_resolved(node, whole), whole)
         if isinstance(step, int):
             node = node.get("items", {})
         else:
@@ -117,6 +118,12 @@ def _resolved(node, whole):
     return node
 
 
+def _branch(node, whole):
+    """Of alternatives the one that has parts of its own."""
+    branches = (_resolved(branch, whole) for branch in node.get("anyOf", ()))
+    return next((branch for branch in branches if "properties" in branch or "items" in branch), node)
+
+
 def _allowed(schema):
     """What a value may be, in words, from its JSON Schema."""
     if "examples" in schema:
@@ -126,7 +133,7 @@ def _allowed(schema):
         return " or ".join(_allowed(branch) for branch in schema["anyOf"])
     if "enum" in schema or "const" in schema:
         return ", ".join(str(word) for word in schema.get("enum", [schema.get("const")]))
-    return ALLOWED[schema["type"]](schema)
+    return "a mapping" if "$ref" in schema else ALLOWED[schema["type"]](schema)
 
 
 def _allowed_number(schema):
@@ -139,6 +146,8 @@ def _allowed_number(schema):
 
 def _allowed_list(schema):
     least = f" with at least {schema['minItems']} item" if "minItems" in schema else ""
+    if "minItems" in schema and schema["minItems"] == schema.get("maxItems"):
+        least = f" with {schema['minItems']} items"
     each = f", each {_allowed(schema['items'])}" if "type" in schema["items"] else ""
     return f"a list{least}{each}"
 
@@ -152,7 +161,7 @@ ALLOWED = {
     "integer": _allowed_number,
     "array": _allowed_list,
     "string": _allowed_text,
+    "boolean": lambda schema: "true or false",
     "object": lambda schema: "a mapping",
     "null": lambda schema: "null",
-    "boolean": lambda schema: "true or false",
 }

@@ -82,4 +82,5 @@ def _npy_chunks(array):
     array = np.ascontiguousarray(array)
     header = io.BytesIO()
     np.lib.format.write_array_header_1_0(header, np.lib.format.header_data_from_array_1_0(array))
-    return [header.getvalue(), memoryview(array).cast("B")]
+    # memoryview knows no bytes of an empty array.
+    return [header.getvalue(), *([memoryview(array).cast("B")] if array.size else [])]

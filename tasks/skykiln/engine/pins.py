@@ -10,7 +10,7 @@ import time
 from pathlib import Path
 
 from .atomic import write_atomically
-from .digests import digest_file, json_bytes
+from .digests import digest_chunks, digest_file, json_bytes
 from .staleness import UNREADABLE
 
 TOO_YOUNG_NS = 2_000_000_000
@@ -60,6 +60,13 @@ class Pins:
             self._entries[str(path)] = [*seen, digest]
             self._changed = True
         return digest
+
+
+def joint_pin(pins) -> str:
+    """The pin of a source from those of its files: of a single file its own."""
+    pins = list(pins)
+    unreadable = [pin for pin in pins if pin.startswith(UNREADABLE)]
+    return (unreadable or pins)[0] if unreadable or len(pins) == 1 else digest_chunks(map(str.encode, pins))
 
 
 def _read(store):

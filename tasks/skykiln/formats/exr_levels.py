@@ -36,11 +36,13 @@ class ExrLevels:
     pixels : 'half' or 'float'
     levels : one (6, n, n, 3) float32 per level, the largest first; level p is max(1, n >> p) wide
     metadata : names and texts
+    chromaticities : CIE x and y of red, green, blue and white, eight numbers; None: Rec. 709
     """
 
     pixels: str
     levels: tuple[np.ndarray, ...]
     metadata: Mapping[str, str] = field(default_factory=dict)
+    chromaticities: tuple[float, ...] | None = None
 
 
 def write_exr_levels(texture: ExrLevels) -> bytes:
@@ -58,6 +60,8 @@ def write_exr_levels(texture: ExrLevels) -> bytes:
             "dataWindow": _window(strip.shape[1], strip.shape[0]),
         }
         header |= texture.metadata if number == 0 else {}
+        if texture.chromaticities is not None:
+            header["chromaticities"] = texture.chromaticities
         parts.append(OpenEXR.Part(header, {"RGB": strip}, f"level {number}"))
     file = io.BytesIO()
     OpenEXR.File(parts).write(file)

@@ -22,6 +22,12 @@ from typing import NamedTuple
 
 AGREEMENT = 1.2
 
+# Goes with every figure in cd/m2 and lux that is shown to somebody.
+CAUTION = (
+    "Calibrated from a picture: for design and preview. Where sun, glare or light levels can hurt someone, "
+    "measured data, local codes and licensed practice come first. Never look at the sun to measure it."
+)
+
 
 class Contradiction(ValueError):
     """Measurements that can't be true of one sky; the message holds both numbers."""

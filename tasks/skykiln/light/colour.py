@@ -36,12 +36,14 @@ class Chromaticities(NamedTuple):
     white: tuple
 
 
-# ITU-R BT.709-6 item 1.3; ITU-R BT.2020-2 table 3; Academy S-2014-004 (ACEScg, primaries AP1); numbers
-# from memory.
-WORKING_SPACES = {
+# ITU-R BT.709-6 item 1.3; ITU-R BT.2020-2 table 3; Academy S-2014-004 (ACEScg, primaries AP1); SMPTE
+# ST 2065-1 (AP0); SMPTE EG 432-1 with D65; numbers from memory.
+SPACES = {
     "rec709": Chromaticities(*REC709_PRIMARIES, D65),
     "rec2020": Chromaticities((0.708, 0.292), (0.170, 0.797), (0.131, 0.046), D65),
     "acescg": Chromaticities((0.713, 0.293), (0.165, 0.830), (0.128, 0.044), ACES_WHITE),
+    "aces2065_1": Chromaticities((0.7347, 0.2653), (0.0, 1.0), (0.0001, -0.077), ACES_WHITE),
+    "display_p3": Chromaticities((0.680, 0.320), (0.265, 0.690), (0.150, 0.060), D65),
 }
 
 

@@ -42,20 +42,23 @@ def pixel_vectors(width, height):
 
 
 def patch_radiance(panorama, direction, angular_radius):
-    """Mean radiance (3,) float64 over the disc of an angular radius (rad) around a unit direction.
+    """Mean radiance (3,) float64 over the disc of an angular radius (rad) around a unit direction."""
+    rows, columns = disc_pixels(*panorama.shape[1::-1], direction, angular_radius)
+    return panorama[rows, columns].mean(0, dtype=np.float64)
 
-    A Fibonacci spiral of points (Vogel 1979, "A better way to construct the sunflower head"), evenly
-    dense over the solid angle.
+
+def disc_pixels(width, height, direction, angular_radius):
+    """Row and column of the pixel under each of many points, evenly dense over the disc's solid angle.
+
+    A Fibonacci spiral (Vogel 1979, "A better way to construct the sunflower head").
     """
-    height, width, _ = panorama.shape
     share = (np.arange(_PATCH_POINTS) + 0.5) / _PATCH_POINTS
     cosines = 1 - 2 * math.sin(angular_radius / 2) ** 2 * share
     normals = np.broadcast_to(np.asarray(direction, dtype=np.float64), (_PATCH_POINTS, 3))
     d = around(normals, cosines, _GOLDEN_TURN * np.arange(_PATCH_POINTS) % 1.0)
     u = 0.5 - np.arctan2(d[:, 0], d[:, 2]) / (2 * np.pi)
     v = np.arctan2(np.hypot(d[:, 0], d[:, 2]), d[:, 1]) / np.pi
-    rows = np.minimum((v * height).astype(int), height - 1)
-    return panorama[rows, (u * width).astype(int) % width].mean(0, dtype=np.float64)
+    return np.minimum((v * height).astype(int), height - 1), (u * width).astype(int) % width
 
 
 @parallel

@@ -30,19 +30,34 @@ def with_ground(upper, height, kind, value=None):
         raise ValueError(f"{rows} rows are no upper part of an even panorama of {height} rows")
     panorama = np.zeros((height, *upper.shape[1:]), dtype=np.float32)
     panorama[:rows] = upper
-    panorama[rows:] = GROUNDS[kind](panorama, rows, value)
+    panorama[rows:] = _ground_of(panorama, kind, value)[rows:]
     return panorama
 
 
-def _of_colour(panorama, rows, value):
-    return np.broadcast_to(np.asarray(value, dtype=np.float32), 3)
+def filled(panorama, uncovered, kind, value=None):
+    """A whole panorama whose pixels under `uncovered`, (H, W) bool, are the ground's.
+
+    Raises: ValueError for 'mirror' where what would be mirrored is uncovered too
+    """
+    if kind == "mirror" and (uncovered & uncovered[::-1]).any():
+        raise ValueError("what would be mirrored isn't covered either")
+    covered = np.where(uncovered[..., None], np.float32(0), panorama)
+    return np.where(uncovered[..., None], _ground_of(covered, kind, value), covered)
 
 
-def _of_mirror(panorama, rows, value):
-    return panorama[panorama.shape[0] - rows - 1 :: -1]
+def _ground_of(panorama, kind, value):
+    return np.broadcast_to(GROUNDS[kind](panorama, value), panorama.shape)
 
 
-def _of_reflectance(panorama, rows, value):
+def _of_colour(panorama, value):
+    return np.asarray(value, dtype=np.float32)
+
+
+def _of_mirror(panorama, value):
+    return panorama[::-1]
+
+
+def _of_reflectance(panorama, value):
     return (np.asarray(value) * level_irradiance(panorama) / np.pi).astype(np.float32)
 
 

@@ -25,9 +25,9 @@ def luminance_weights(primaries, white):
 LUMINANCE_WEIGHTS = luminance_weights(REC709_PRIMARIES, D65)
 
 
-def luminance(rgb):
-    """Luminance of linear Rec. 709 values. (..., 3) -> (...)."""
-    return rgb @ LUMINANCE_WEIGHTS
+def luminance(rgb, weights=LUMINANCE_WEIGHTS):
+    """Luminance of linear values, of Rec. 709 unless `weights` are another space's. (..., 3) -> (...)."""
+    return rgb @ weights
 
 
 def mean_radiance(panorama):
@@ -44,6 +44,6 @@ def level_irradiance(panorama):
     return -np.diff(np.maximum(sines, 0.0) ** 2 / 2) @ rows
 
 
-def horizontal_illuminance(panorama):
+def horizontal_illuminance(panorama, weights=LUMINANCE_WEIGHTS):
     """Luminance-weighted irradiance on the level surface; lx where radiance is in cd/m2. float."""
-    return float(luminance(level_irradiance(panorama)))
+    return float(luminance(level_irradiance(panorama), weights))

@@ -33,6 +33,9 @@ class Repairs(NamedTuple):
     negative: int
 
 
+NO_PLACES = np.empty((0, 3), dtype=np.int32)
+
+
 def repair_pixels(pixels):
     """Mends a panorama (H, W, 3) float32 of radiance.
 
@@ -40,6 +43,7 @@ def repair_pixels(pixels):
     -------
     pixels : the same array when nothing was wrong, else a mended copy.
     repairs : Repairs.
+    places : (n, 3) int32, row, column and kind (`NAN`, `INF` or `NEGATIVE`) of each mended pixel.
 
     Raises
     ------
@@ -47,20 +51,27 @@ def repair_pixels(pixels):
     """
     bits = pixels.view(np.uint32)
     if bits.max(initial=0) <= LARGEST_VALID:
-        return pixels, Repairs(0, 0, 0)
+        return pixels, Repairs(0, 0, 0), NO_PLACES
     faults = np.empty(pixels.shape, dtype=np.uint8)
     counts = np.empty((pixels.shape[0], 3), dtype=np.int64)
     _find_faults(bits, faults, counts)
     repairs = Repairs(*(int(n) for n in counts.sum(axis=0)))
     if sum(repairs) == 0:
-        return pixels, repairs
+        return pixels, repairs, NO_PLACES
     lost = [name for name, bad in zip("RGB", (faults != GOOD).all(axis=(0, 1)), strict=True) if bad]
     if lost:
         raise ValueError(f"every value of {', '.join(lost)} is NaN, infinite or negative")
+    places = _places(faults)
     mended = pixels.copy()
     for channel in range(3):
         _close_holes(mended, faults, channel)
-    return mended, repairs
+    return mended, repairs, places
+
+
+def _places(faults):
+    worst = np.where(faults == GOOD, WAITING, faults).min(axis=2)
+    rows, columns = np.nonzero(worst < WAITING)
+    return np.stack([rows, columns, worst[rows, columns]], axis=1).astype(np.int32)
 
 
 @parallel

@@ -32,7 +32,7 @@ from skykiln.light.bright_regions import (
     pixel_centres,
 )
 from skykiln.light.directions import panorama_row_solid_angles
-from skykiln.light.facing import irradiance_facing, pixel_vectors
+from skykiln.light.facing import disc_pixels, irradiance_facing, pixel_vectors
 from skykiln.light.photometry import LUMINANCE_WEIGHTS
 
 _PLACES = 32  # bright places looked at
@@ -86,9 +86,23 @@ def separate_sun(panorama, weights=LUMINANCE_WEIGHTS):
 
 
 def restored_sun(sun, lux, weights=LUMINANCE_WEIGHTS):
-    """The sun with `lux` more of illuminance on a surface facing it, in the colour that it has."""
+    """The sun with `lux` more of illuminance on a surface facing it, in the colour that it has.
+
+    What clipping took off had come from the sun's own disc, so the second moments of both are added.
+    """
     found = float(sun.irradiance @ weights)
-    return sun._replace(irradiance=sun.irradiance * (1 + lux / found))
+    moment = (found * sun.angular_radius**2 + lux * SUN_RADIUS**2) / (found + lux)
+    return sun._replace(irradiance=sun.irradiance * (1 + lux / found), angular_radius=float(np.sqrt(moment)))
+
+
+def with_restored_sun(panorama, sun, lux, weights=LUMINANCE_WEIGHTS):
+    """The panorama with `lux` more of illuminance facing its sun, from the sun's disc and in its colour."""
+    height, width, _ = panorama.shape
+    rows, columns = disc_pixels(width, height, sun.direction, SUN_RADIUS)
+    more = np.zeros(panorama.shape)
+    share = lux / len(rows) / panorama_row_solid_angles(width, height)[rows]
+    np.add.at(more, (rows, columns), share[:, None] * sun.irradiance / float(sun.irradiance @ weights))
+    return (panorama + more).astype(np.float32)
 
 
 def _stands_out(sun):

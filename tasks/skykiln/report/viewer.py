@@ -15,7 +15,7 @@ from skykiln.errors import FileError, SkykilnError
 from skykiln.formats.ktx2 import read_ktx2
 from skykiln.formats.ktx2_copy import plain_copy
 from skykiln.formats.texture_files import file_bytes
-from skykiln.light.colour import WORKING_SPACES, rgb_to_rgb, weights_of
+from skykiln.light.colour import SPACES, rgb_to_rgb, weights_of
 from skykiln.light.quay_scene import DISTANCE, FIELD_OF_VIEW, QUAY_SCENE, TARGET
 from skykiln.report.false_colour import COLOURS, MIDDLE_GREY, STOPS
 from skykiln.report.inspection import ABOUT_KEY
@@ -99,7 +99,7 @@ def _whole_copy(path):
 
 def _facts(record, specular, texture, left_out):
     """What the scripts need beside the files themselves."""
-    space = WORKING_SPACES.get(texture.primaries, WORKING_SPACES["rec709"])
+    space = SPACES.get(texture.primaries, SPACES["rec709"])
     faces = texture.levels[min(2, len(texture.levels) - 1)]  # small, and near to what is seen
     return {
         "name": record["name"],
@@ -111,7 +111,7 @@ def _facts(record, specular, texture, left_out):
         "sun": record["sun"] is not None,
         "exposure": exposure_for(faces.astype("f8") * 2.0 ** record["storage_ev"]),
         "luminance_weights": weights_of(space).tolist(),
-        "to_rec709": rgb_to_rgb(space, WORKING_SPACES["rec709"]).tolist(),
+        "to_rec709": rgb_to_rgb(space, SPACES["rec709"]).tolist(),
         "ramp": linear_ramp(COLOURS).tolist(),
         "stops": STOPS,
         "middle_grey": MIDDLE_GREY,

@@ -64,12 +64,13 @@ def _sizes(record):
 
 def _illuminance(before, after):
     """On the level surface, from the sky; with its sun where that became a light of its own."""
-    values = [_horizontal(record) for record in (before, after)]
+    values = [whole_illuminance(record) for record in (before, after)]
     ratio = values[1] / values[0] if values[0] > 0 else None
     return {"before": values[0], "after": values[1], "ratio": ratio}
 
 
-def _horizontal(record):
+def whole_illuminance(record):
+    """Of the level surface, from the sky in a probe's files and from the sun beside it."""
     sun = record["sun"]
     beam = sun["illuminance"] * max(sun["direction"][1], 0.0) if sun else 0.0
     return record["energy"]["horizontal_illuminance"] + beam

@@ -9,7 +9,7 @@ from ..formats.texture_files import read_texture
 from ..light.brdf import brdf_table
 from ..light.brute_lighting import lit_by_source
 from ..light.chain_change import brightest_spot
-from ..light.colour import WORKING_SPACES, weights_of
+from ..light.colour import SPACES, weights_of
 from ..light.cube_axes import from_cube_space
 from ..light.quay_scene import first_hits, scene_eye, view_rays
 from ..light.split_sum import ProbeLight, lit_by_probe
@@ -37,7 +37,7 @@ def small_files(levels) -> dict:
 
 def looks_of(levels, working) -> dict:
     """Where the probe is brightest."""
-    direction, luminance = brightest_spot(levels[0], weights_of(WORKING_SPACES[working]))
+    direction, luminance = brightest_spot(levels[0], weights_of(SPACES[working]))
     return {"brightest": {"direction": direction.tolist(), "luminance": luminance}}
 
 
@@ -53,7 +53,7 @@ def light_of(specular, irradiance, axes, roughness, stops) -> ProbeLight:
 
 def sky_files(panorama, yaw, levels, cube, light, working) -> tuple[dict, dict]:
     """The further pictures of a sky, and numbers about them."""
-    weights = weights_of(WORKING_SPACES[working])
+    weights = weights_of(SPACES[working])
     small = reduced_panorama(panorama)
     small = np.roll(small, -round(yaw / (2 * np.pi) * small.shape[1]), axis=1)  # as the world has it
     limits = luminance_range(small, weights)

@@ -6,7 +6,13 @@ tells so, and `PublishProbe` waits. Gates of the night are judged when it ends, 
 asked for, and hold nothing.
 """
 
+import math
+import statistics
+
 from ..quantities import bytes_in_words, percent
+from .change import whole_illuminance
+
+FEWEST_TO_COMPARE = 3  # of two, none can be told to be the odd one
 
 
 def heavy_on_the_gpu(record, limit):
@@ -40,14 +46,52 @@ def changed_much(record, limit):
     return f"the pixels changed by {percent(change['mean'])}, {_limit(limit)}"
 
 
+def out_of_range(record, limit):
+    """`gates.horizontal_lux`: the illuminance of a level surface, sky and sun, of a probe in cd/m2."""
+    if record["units"] != "cd/m2":
+        return None
+    found, (least, most) = whole_illuminance(record), limit
+    if least <= found <= most:
+        return None
+    return f"{found:.5g} lux on a level surface, the limits are {least:g} to {most:g}"
+
+
+def unlike_its_recipe(record, limit):
+    """`gates.brightness.stops`: mean luminance against the median of a recipe's probes of the same units."""
+    groups = {}
+    for probe in record["probes"]:
+        light = probe["light"]
+        if light:
+            beam = light["sun"]["illuminance"] if light["sun"] else 0.0
+            found = groups.setdefault((probe["recipe"], light["units"]), {})
+            found[probe["name"]] = light["mean_luminance"] + beam / (4 * math.pi)
+    told = [each for (recipe, _), found in groups.items() for each in _far_from_median(recipe, found, limit)]
+    return "; ".join(told) or None
+
+
+def _far_from_median(recipe, luminances, limit):
+    """Sentences on the probes that stand further from the median than a limit in stops."""
+    median = statistics.median(luminances.values())
+    if len(luminances) < FEWEST_TO_COMPARE or not median > 0:
+        return
+    for name, found in luminances.items():
+        stops = math.log2(found / median) if found > 0 else -math.inf
+        if abs(stops) > limit:
+            where = f"{abs(stops):.3g} stops {'above' if stops > 0 else 'below'}"
+            told = f"{name} stands {where} the median of recipe '{recipe}', {median:.4g}"
+            yield f"{told}; the limit is {limit:g}"
+
+
 # function(probe.json's values and, as `change`, how they differ from what is published, limit)
 PROBE_GATES = {
     "bytes.probe_gpu": heavy_on_the_gpu,
     "audit": failed_audit,
+    "horizontal_lux": out_of_range,
     "change.same_source": changed_by_itself,
     "change.mean": changed_much,
 }
-NIGHT_GATES = {"bytes.night_disk": heavy_on_disk}  # function(night.json's values, limit)
+# function(night.json's values, limit)
+NIGHT_GATES = {"bytes.night_disk": heavy_on_disk, "brightness.stops": unlike_its_recipe}
 
 
 def broken_gates(gates, record, limits) -> list:

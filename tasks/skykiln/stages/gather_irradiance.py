@@ -26,6 +26,7 @@ class GatherIrradiance(ProbeStage):
             "sh_order": probe.irradiance_sh_order,
             "tolerance": probe.tolerance,
             "yaw_deg": probe.yaw_deg,
+            "working": probe.working,
         }
 
     def make(self, inputs):
@@ -34,19 +35,22 @@ class GatherIrradiance(ProbeStage):
         probe, pixels = self.probe, inputs["pixels"]
         pyramid = pyramid_of(pixels, probe.yaw_deg)
         cube = irradiance_cube(pyramid, probe.irradiance_face_size, probe.tolerance)
-        return {"irradiance": cube, "totals": _totals(pixels.array(), math.radians(probe.yaw_deg))}
+        return {"irradiance": cube, "totals": _totals(pixels.array(), probe)}
 
 
-def _totals(panorama, yaw):
-    from ..light import harmonics, photometry
+def _totals(panorama, probe):
+    from ..light import colour, harmonics, photometry
 
-    coefficients = harmonics.irradiance_coefficients(panorama, yaw)
+    weights = colour.weights_of(colour.SPACES[probe.working])
+    mean = photometry.mean_radiance(panorama)
+    coefficients = harmonics.irradiance_coefficients(panorama, math.radians(probe.yaw_deg))
     windowed, strength = harmonics.weakest_window(coefficients)
     return {
         "sh": coefficients.tolist(),
         "sh_smallest": harmonics.smallest_irradiance(coefficients),
         "sh_window": {"strength": float(strength), "sh": windowed.tolist()},
-        "mean_radiance": photometry.mean_radiance(panorama).tolist(),
+        "mean_radiance": mean.tolist(),
+        "mean_luminance": float(mean @ weights),
         "level_irradiance": photometry.level_irradiance(panorama).tolist(),
-        "horizontal_illuminance": float(photometry.horizontal_illuminance(panorama)),
+        "horizontal_illuminance": photometry.horizontal_illuminance(panorama, weights),
     }

@@ -11,11 +11,13 @@ from .decode_source import DecodeSource
 from .draw_probe import DrawProbe
 from .gates import PROBE_GATES, broken_gates
 from .gather_irradiance import GatherIrradiance
-from .pack_probe import PackProbe, packed_names, units_of
+from .pack_probe import PackProbe, packed_names
 from .probe_record import probe_record
 from .probe_stage import ProbeStage
 from .separate_sun import SeparateSun
 from .sky_panorama import is_sun_apart
+
+ORIENTATION = ("flip", "up", "yaw_deg", "pitch_deg", "roll_deg")
 
 
 class JudgeProbe(ProbeStage):
@@ -34,6 +36,7 @@ class JudgeProbe(ProbeStage):
         sun = {"sun": self.of_same(SeparateSun)} if is_sun_apart(self.probe) else {}
         return {
             "facts": self.of_same(DecodeSource),
+            "light": self.of_same(DecodeSource),
             **sun,
             "totals": self.of_same(GatherIrradiance),
             "looks": self.of_same(DrawProbe),
@@ -55,11 +58,11 @@ class JudgeProbe(ProbeStage):
         return {
             "name": probe.name,
             "file": probe.file,
+            "faces": list(probe.faces),
             "recipe": probe.recipe,
             "extra": json.loads(probe.extra),
             "cube_axes": self.pinned.cube_axes,
-            "units": units_of(probe),
-            "yaw_deg": probe.yaw_deg,
+            "orientation": {name: getattr(probe, name) for name in ORIENTATION},
             "roughness": list(probe.roughness),
             "packs": [vars(entry) for entry in packs],
             "gates": json.loads(self.pinned.gates),

@@ -52,6 +52,7 @@ def _light(record):
         energy, seams = record["energy"], [level["seam"] for level in record["specular"]["levels"][1:]]
         return {
             "units": record["units"],
+            "mean_luminance": energy["mean_luminance"],
             "horizontal_illuminance": energy["horizontal_illuminance"],
             "mean_radiance": energy["mean_radiance"],
             "brightest": energy["brightest"],

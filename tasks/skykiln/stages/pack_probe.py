@@ -2,6 +2,7 @@
 
 import luigi
 
+from .decode_source import DecodeSource
 from .extract_faces import ExtractFaces
 from .filter_level import FilterLevel
 from .gather_irradiance import GatherIrradiance
@@ -15,7 +16,7 @@ class PackProbe(ProbeStage):
     them by name.
     """
 
-    version = 3
+    version = 4
     pack = luigi.Parameter()
 
     @property
@@ -25,6 +26,7 @@ class PackProbe(ProbeStage):
     def requires(self):
         levels = range(1, len(self.probe.roughness))
         return {
+            "light": self.of_same(DecodeSource),
             "faces": self.of_same(ExtractFaces),
             **{f"level_{level}": self.of_same(FilterLevel, level=level) for level in levels},
             "irradiance": self.of_same(GatherIrradiance),
@@ -44,16 +46,17 @@ class PackProbe(ProbeStage):
             "compress": entry.compress,
             "cube_axes": entry.cube_axes,
             "roughness": list(probe.roughness),
-            "units": units_of(probe),
+            "primaries": probe.working,
         }
 
     def make(self, inputs):
         from .packing import share_lost, shared_storage_ev
 
-        *chain, cube = [source.array() for source in inputs.values()]
+        units = inputs["light"].json()["units"]
+        *chain, cube = [source.array() for role, source in inputs.items() if role != "light"]
         stops = shared_storage_ev([*chain, cube])
         names = packed_names(self.probe)[self.pack]
-        packed = {name: self._packed(name, chain, cube, stops) for name in names}
+        packed = {name: self._packed(name, chain, cube, stops, units) for name in names}
         facts = {
             "storage_ev": stops,
             "face_sizes": [level.shape[1] for level in chain],
@@ -63,7 +66,7 @@ class PackProbe(ProbeStage):
         }
         return {**{name: data for name, (data, _) in packed.items()}, f"{self.pack}.json": facts}
 
-    def _packed(self, name, chain, cube, stops):
+    def _packed(self, name, chain, cube, stops, units):
         """(bytes, facts) of one file."""
         from .packing import pack_images, packed_facts, stored_images
 
@@ -75,23 +78,24 @@ class PackProbe(ProbeStage):
         images = stored_images(levels, entry.cube_axes, stops)
         # Not the release: files would change with every one of them.
         writer = f"skykiln PackProbe {self.version}"
-        about = self._about(content, stops)
-        data = pack_images(images, entry.container, pixels, compress, about, writer)
+        about = self._about(content, stops, units)
+        primaries = self.probe.working
+        data = pack_images(images, entry.container, pixels, compress, about, writer, primaries)
         return data, packed_facts(data, name, images)
 
-    def _about(self, content, stops):
+    def _about(self, content, stops, units):
         """What a loader must know of a file, for the file itself to tell."""
-        told = ("name", "cube_axes", "units") + (("roughness",) if content == "specular" else ())
+        told = ("name", "cube_axes", "primaries") + (("roughness",) if content == "specular" else ())
         settings = self.settings()
-        return {"content": content, "storage_ev": stops, **{key: settings[key] for key in told}}
+        return {
+            "content": content,
+            "storage_ev": stops,
+            "units": units,
+            **{key: settings[key] for key in told},
+        }
 
     def _entry(self):
         return next(entry for entry in self.probe.packs if entry.name == self.pack)
-
-
-def units_of(probe) -> str:
-    """Of radiance in the probe's files: a calibrated source is absolute."""
-    return "relative" if probe.horizontal_lux is None else "cd/m2"
 
 
 def packed_names(probe) -> dict:

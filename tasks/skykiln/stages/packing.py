@@ -8,6 +8,7 @@ from ..formats.exr_levels import ExrLevels, write_exr_levels
 from ..formats.ktx2 import Ktx2Texture, write_ktx2
 from ..formats.texture_files import read_texture
 from ..light.coding_error import flux_error, log2_rms
+from ..light.colour import SPACES
 from ..light.cube_axes import to_cube_space
 from ..light.directions import cube_texel_solid_angles
 from ..light.seams import seam
@@ -26,26 +27,29 @@ def darkened(cube, stops):
     return cube * np.float32(2.0**-stops)
 
 
-def pack_images(images, container, pixels, compress, about, writer) -> bytes:
+def pack_images(images, container, pixels, compress, about, writer, primaries) -> bytes:
     """The file of a cube map.
 
     Parameters: images : arrays (6, n, n, 3) of cube space, the largest first
                 about : the values of ABOUT_KEY; writer : what packs, and which version of it
+                primaries : a key of `light.colour.SPACES` that `formats.dfd` knows too
     """
     texts = {ABOUT_KEY: canonical_json(about)}
-    return _WRITERS[container](pixels, images, compress, texts, writer)
+    return _WRITERS[container](pixels, images, compress, texts, writer, primaries)
 
 
-def _ktx2(pixels, images, compress, texts, writer):
-    return write_ktx2(Ktx2Texture(pixels, images, {**texts, "KTXwriter": writer}), compress)
+def _ktx2(pixels, images, compress, texts, writer, primaries):
+    return write_ktx2(Ktx2Texture(pixels, images, {**texts, "KTXwriter": writer}, primaries), compress)
 
 
-def _dds(pixels, images, compress, texts, writer):
+def _dds(pixels, images, compress, texts, writer, primaries):
     return write_dds(DdsTexture(pixels, images))  # which has no place for texts
 
 
-def _exr(pixels, images, compress, texts, writer):
-    return write_exr_levels(ExrLevels(pixels, images, {**texts, "software": writer}))
+def _exr(pixels, images, compress, texts, writer, primaries):
+    space = SPACES[primaries]
+    chromaticities = None if primaries == "rec709" else tuple(x for pair in space for x in pair)
+    return write_exr_levels(ExrLevels(pixels, images, {**texts, "software": writer}, chromaticities))
 
 
 _WRITERS = {"ktx2": _ktx2, "dds": _dds, "exr": _exr}

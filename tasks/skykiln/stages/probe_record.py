@@ -1,5 +1,9 @@
 """The values of probe.json, from the settings of JudgeProbe and the facts of the stages before it."""
 
+from ..light.calibration import CAUTION
+
+TOTALS = ("mean_radiance", "mean_luminance", "level_irradiance", "horizontal_illuminance")
+
 
 def probe_record(settings, packed_names, inputs) -> dict:
     """What probe.json holds.
@@ -8,6 +12,9 @@ def probe_record(settings, packed_names, inputs) -> dict:
                 inputs : role -> Input
     """
     facts, totals = inputs["facts"].json(), inputs["totals"].json()
+    units = inputs["light"].json()["units"]
+    # What a limit took: from the sky that is left where the sun was taken out, else from the whole.
+    sun = inputs["sun"].json() if "sun" in inputs else {"sun": None, "limited": facts["limited"]}
     packs = {name: inputs[f"{name}.json"].json() for name in packed_names}
     shared = next(iter(packs.values()))
     files = {name: facts for pack in packs.values() for name, facts in pack["files"].items()}
@@ -20,7 +27,9 @@ def probe_record(settings, packed_names, inputs) -> dict:
         "recipe": settings["recipe"],
         "extra": settings["extra"],
         "cube_axes": settings["cube_axes"],
-        "units": settings["units"],
+        "units": units,
+        "primaries": facts["colour"]["working"],
+        "caution": CAUTION if units == "cd/m2" else None,
         "storage_ev": shared["storage_ev"],
         "specular": {
             "levels": _levels(settings["roughness"], shared["face_sizes"], [files[name] for name in packs]),
@@ -31,10 +40,11 @@ def probe_record(settings, packed_names, inputs) -> dict:
             "files": listed["irradiance"],
             **{key: totals[key] for key in ("sh", "sh_smallest", "sh_window")},
         },
-        "sun": inputs["sun"].json()["sun"] if "sun" in inputs else None,
+        "sun": sun["sun"],
         "energy": {
-            **{key: totals[key] for key in ("mean_radiance", "level_irradiance", "horizontal_illuminance")},
+            **{key: totals[key] for key in TOTALS},
             "brightest": inputs["looks"].json()["brightest"],
+            "limited": sun["limited"],
             "lost_to_clamping": max(pack["lost_to_clamping"] for pack in packs.values()),
         },
         "bytes": _bytes(settings["packs"], listed),
@@ -43,7 +53,8 @@ def probe_record(settings, packed_names, inputs) -> dict:
 
 
 def _source(settings, facts):
-    return {"file": settings["file"], **facts, "yaw_deg": settings["yaw_deg"]}
+    told = {key: value for key, value in facts.items() if key != "limited"}
+    return {"file": settings["file"], "faces": settings["faces"], **told, **settings["orientation"]}
 
 
 def _levels(roughness, face_sizes, files):

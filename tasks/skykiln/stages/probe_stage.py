@@ -18,11 +18,12 @@ from ..engine.stage import Stage
 
 @dataclasses.dataclass(frozen=True)
 class PinnedProbe:
-    """A probe, the digest of its source, and the folders of its pipeline.
+    """A probe, the digest of its source's bytes, and the folders of its pipeline.
 
     source_bytes : size of the source's file when it was pinned; 0 where it can't be read
     root, build_dir : absolute paths; cube_axes : the pipeline's, which packs may override
     gates : canonical JSON of the limits that a probe is judged by, by their dotted keys
+    max_pixels : the largest source picture; None: the readers' own limit
     """
 
     probe: Probe
@@ -32,6 +33,7 @@ class PinnedProbe:
     build_dir: str
     cube_axes: str
     gates: str
+    max_pixels: int | None
 
     def __post_init__(self):
         if ".." in PurePath(self.probe.name).parts or PurePath(self.probe.name).is_absolute():
@@ -54,7 +56,13 @@ class PinnedProbe:
 
     @property
     def source_path(self) -> str:
-        return f"{self.root}/{self.probe.file}" if self.probe.file[:1] != "/" else self.probe.file
+        """The source's file; of six, the first."""
+        return self.source_paths[0]
+
+    @property
+    def source_paths(self) -> tuple[str, ...]:
+        files = self.probe.files
+        return tuple(f"{self.root}/{file}" if file[:1] != "/" else file for file in files)
 
     @property
     def work(self) -> str:

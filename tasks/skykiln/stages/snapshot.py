@@ -5,7 +5,7 @@ import fnmatch
 
 from ..config import Pipeline, canonical_json
 from ..engine.night import now
-from ..engine.pins import Pins
+from ..engine.pins import Pins, joint_pin
 from ..engine.shards import Shard
 from ..errors import PipelineError
 from .gates import PROBE_GATES
@@ -68,13 +68,17 @@ class Snapshot:
         root = self.pipeline.root
         return PinnedProbe(
             probe=probe,
-            pin=self.pins.pin(root / probe.file) if pin is None else pin,
-            source_bytes=_size(root / probe.file),
+            pin=self._pin(probe) if pin is None else pin,
+            source_bytes=sum(_size(root / file) for file in probe.files),
             root=str(root),
             build_dir=str(self.pipeline.build_dir),
             cube_axes=self.pipeline.cube_axes,
             gates=self._gates,
+            max_pixels=self.pipeline.max_pixels,
         )
+
+    def _pin(self, probe):
+        return joint_pin(self.pins.pin(self.pipeline.root / file) for file in probe.files)
 
 
 def _size(path):
