@@ -19,6 +19,7 @@ from functools import cached_property
 
 import luigi
 
+from .budget import resources_of
 from .running import run_stage
 from .staleness import staleness
 
@@ -30,9 +31,7 @@ class Stage(luigi.Task):
     version = 1
     published = False  # whether others than stages read the outputs
     sketched = False
-    # A stage that is a Luigi task of its own is large: its kernels take all cores, and memory is for one
-    # such. Luigi takes the limit of a resource that its configuration does not name as 1.
-    resources = {"skykiln_machine": 1}  # noqa: RUF012, Luigi's own way to declare it
+    expected_bytes = 0  # of memory, while it runs
 
     # Which night it runs in, for its stamp alone: not what it makes, so not significant.
     night = luigi.Parameter(default="", significant=False)
@@ -64,6 +63,11 @@ class Stage(luigi.Task):
         """Another stage, sketched if this one is."""
         make = other.sketch if self.sketched else other
         return make(night=self.night, **parameters)
+
+    @property
+    def resources(self) -> dict:
+        """A stage that is a Luigi task of its own is large: its kernels take all cores."""
+        return resources_of(cores=1, memory=self.expected_bytes)
 
     @property
     def label(self) -> str:

@@ -40,16 +40,7 @@ def build_wave(tasks, workers: int, verbose: bool):
     What came of it is told by the stamps alone: Luigi's own verdict is about its last look, not
     about what is complete.
     """
-    if not verbose:
-        logging.getLogger("luigi-interface").setLevel(logging.CRITICAL)
-    luigi.build(
-        tasks,
-        worker_scheduler_factory=_Sound(),
-        local_scheduler=True,
-        workers=workers,
-        no_lock=True,
-        log_level="INFO" if verbose else "CRITICAL",
-    )
+    _build(tasks, workers, verbose, local_scheduler=True)
 
 
 def build_on(address: str, tasks, workers: int, verbose: bool):
@@ -58,20 +49,10 @@ def build_on(address: str, tasks, workers: int, verbose: bool):
     Parameters: address : 'host:port' of the scheduler; workers : processes here, 0 to leave all to others
     Raises:     SkykilnError if no scheduler answers
     """
-    if not verbose:
-        logging.getLogger("luigi-interface").setLevel(logging.CRITICAL)
-        logging.getLogger("luigi-rpc").setLevel(logging.CRITICAL)
-    url, level = f"http://{address}", "INFO" if verbose else "CRITICAL"
+    url = f"http://{address}"
 
     def build(some):
-        luigi.build(
-            some,
-            worker_scheduler_factory=_Sound(),
-            scheduler_url=url,
-            workers=workers,
-            no_lock=True,
-            log_level=level,
-        )
+        _build(some, workers, verbose, scheduler_url=url)
 
     with _told_as_no_scheduler(address):
         build(tasks)
@@ -93,8 +74,7 @@ def work_for(address: str, workers: int, verbose: bool):
 
     Raises: SkykilnError if no scheduler answers
     """
-    if not verbose:
-        logging.getLogger("luigi-interface").setLevel(logging.CRITICAL)
+    _let_luigi_log(verbose)
     scheduler = RemoteScheduler(f"http://{address}")
     with _told_as_no_scheduler(address):
         scheduler.ping(worker="")
@@ -107,6 +87,20 @@ def work_for(address: str, workers: int, verbose: bool):
             wait_jitter=0.5,
         ) as worker:
             worker.run()
+
+
+def _build(tasks, workers, verbose, **scheduler):
+    _let_luigi_log(verbose)
+    level = "INFO" if verbose else "CRITICAL"
+    luigi.build(
+        tasks, worker_scheduler_factory=_Sound(), workers=workers, no_lock=True, log_level=level, **scheduler
+    )
+
+
+def _let_luigi_log(verbose):
+    if not verbose:
+        for name in ("luigi-interface", "luigi-rpc"):
+            logging.getLogger(name).setLevel(logging.CRITICAL)
 
 
 @contextmanager

@@ -6,11 +6,13 @@ from pathlib import Path
 
 import luigi
 
+from ..engine.budget import resources_of
 from ..engine.chains import chain_of, glance_at
 from ..engine.lots import bake_lot
 from ..engine.night import failure_of
 from ..engine.release import code_digest
 from ..errors import SkykilnError
+from .kernels import available_cores
 from .probe_stage import PinnedProbe
 from .publish_probe import PublishProbe
 
@@ -20,6 +22,7 @@ class BakeLot(luigi.Task):
 
     manifest : JSON file, a list of pinned probes; on a farm relative to the build folder
     night : as of stages; code : on a farm, digest of the code that scheduled it
+    megabytes : of memory that its largest probe is expected to take
     threads : of each kernel; None to leave them as they are. Of the process, not of the task
     folders : of a process on a farm, where the pipeline lies there: {"root": ..., "build_dir": ...}
     """
@@ -28,8 +31,15 @@ class BakeLot(luigi.Task):
     manifest = luigi.Parameter()
     night = luigi.Parameter()
     code = luigi.Parameter(default="")
+    megabytes = luigi.IntParameter(default=0, significant=False)
     threads = None
     folders = None
+
+    @property
+    def resources(self):
+        if self.code:  # on a farm, whose scheduler knows of no machine's limits
+            return {}
+        return resources_of(cores=(self.threads or 1) / available_cores(), memory=self.megabytes << 20)
 
     def complete(self):
         return not any(glance_at(target).stale for target in self._targets)

@@ -14,6 +14,7 @@ import luigi
 
 from ..config import Probe, canonical_json
 from ..engine.stage import Stage
+from .memory import expected_bytes
 
 
 @dataclasses.dataclass(frozen=True)
@@ -107,6 +108,10 @@ class ProbeStage(Stage):
     @property
     def seal_path(self):
         return self.work_file("probe.json.seal")
+
+    @property
+    def expected_bytes(self):
+        return expected_bytes(self.pinned)
 
     @property
     def priority(self):

@@ -11,6 +11,7 @@ from ..engine.lots import form_lots
 from ..engine.release import code_digest
 from .bake_lot import BakeLot
 from .extract_faces import auto_face_size
+from .memory import PACKED_PIXEL, expected_bytes, source_bytes
 from .publish_probe import PublishProbe
 from .snapshot import Snapshot
 
@@ -56,12 +57,9 @@ def _is_small(target):
 
 def expected_seconds(pinned) -> float:
     """A guess at what a probe takes on two cores: by texels of its chain and bytes of its source."""
-    try:
-        size = Path(pinned.source_path).stat().st_size
-    except OSError:
-        size = 0
-    # An auto face size follows from the width: about 1.5 bytes a pixel of a packed half-float file.
-    face = pinned.probe.face_size or auto_face_size(int(math.sqrt(2 * size / 1.5)))
+    size = source_bytes(pinned)
+    # An auto face size follows from the width.
+    face = pinned.probe.face_size or auto_face_size(int(math.sqrt(2 * size / PACKED_PIXEL)))
     return 0.01 + 8 * face * face * 2e-7 + size * 2e-8
 
 
@@ -80,4 +78,5 @@ def _lot(targets, snapshot, farm=False):
     write_atomically(path, [manifest], synced=False)
     if farm:
         return BakeLot(manifest=name, night=snapshot.night, code=code_digest())
-    return BakeLot(manifest=str(path), night=snapshot.night)
+    largest = max(expected_bytes(target.pinned) for target in targets)
+    return BakeLot(manifest=str(path), night=snapshot.night, megabytes=largest >> 20)
