@@ -4,8 +4,10 @@ import numpy as np
 import pytest
 from reference import panorama_points
 
-from skykiln.light import pyramid as p
+from skykiln.light import node_record as p
+from skykiln.light.cells import cell_moments
 from skykiln.light.directions import panorama_row_solid_angles
+from skykiln.light.pyramid import build_pyramid
 
 WIDTH = 32
 
@@ -59,7 +61,7 @@ def assert_moments(node, d, flux, mean_radiance):
 @pytest.mark.parametrize("yaw", [0.0, 0.7])
 def test_moments_are_those_of_the_pixels(sky, place, yaw):
     level, j, i = place
-    tree = p.build_pyramid(sky, yaw)
+    tree = build_pyramid(sky, yaw)
     side = tree.tree[6] << (level - 1)
     here = np.zeros_like(sky)
     block = np.s_[j * side : (j + 1) * side, i * side : (i + 1) * side]
@@ -71,12 +73,12 @@ def test_moments_are_those_of_the_pixels(sky, place, yaw):
 
 @pytest.mark.parametrize(("level", "j", "i"), [(0, 3, 9), (0, 13, 30), (-1, 12, 45), (-3, 60, 200)])
 def test_single_pixels_and_their_parts_are_patches_of_constant_radiance(sky, level, j, i):
-    tree = p.build_pyramid(sky)
+    tree = build_pyramid(sky)
     parts = 1 << -level
     node = np.zeros(p.RECORD, np.float32)
     across = (WIDTH // 2) * parts
     cell = (i // across) * across**2 + z_order(j, i % across)
-    p.cell_moments(tree.tree, level, cell, node)
+    cell_moments(tree.tree, level, cell, node)
     fine = np.zeros((*np.array(sky.shape[:2]) * parts, 3), np.float32)
     fine[j, i] = sky[j // parts, i // parts]
     d, flux = panorama_points(fine, 1, 6)
@@ -86,16 +88,30 @@ def test_single_pixels_and_their_parts_are_patches_of_constant_radiance(sky, lev
 @pytest.mark.parametrize("shape", [(1, 2), (3, 6), (16, 32), (100, 200)])
 def test_whole_flux_reaches_the_top(shape):
     sky = np.random.default_rng(1).random((*shape, 3)).astype(np.float32)
-    tree = p.build_pyramid(sky)
+    tree = build_pyramid(sky)
     flux = np.einsum("jic,j->c", sky.astype(float), panorama_row_solid_angles(shape[1], shape[0]))
     above = flux - 4 * np.pi * sky.min(axis=(0, 1))
     np.testing.assert_allclose(tree.tree[4][-2:, p.FLUX : p.FLUX + 3].sum(0), above, rtol=1e-5)
     np.testing.assert_allclose(tree.mean * 4 * np.pi, flux, rtol=1e-6)
 
 
+@pytest.mark.parametrize("width", [128, 100])
+def test_blocks_made_many_at_a_time_equal_blocks_made_alone(width):
+    sky = (np.random.default_rng(3).random((width // 2, width, 3)) ** 6).astype(np.float32)
+    sky[5:9, 3:30] = 0
+    tree = build_pyramid(sky, 0.3).tree
+    alone = np.zeros((int(tree[5][2]), p.RECORD), np.float32)
+    for cell, node in enumerate(alone):
+        cell_moments(tree, 1, cell, node)
+    stored = tree[4][: len(alone)]
+    scale = np.abs(alone).max(axis=0)
+    assert scale.min() > 0
+    np.testing.assert_array_less(np.abs(stored - alone).max(axis=0) / scale, 3e-5)
+
+
 def test_black_nodes_carry_nothing():
     sky = np.zeros((8, 16, 3), np.float32)
     sky[2, 1] = 1.0
-    nodes = p.build_pyramid(sky).tree[4]
+    nodes = build_pyramid(sky).tree[4]
     assert np.count_nonzero(nodes[:, p.FLUX]) == 3
     assert np.all(np.isfinite(nodes))

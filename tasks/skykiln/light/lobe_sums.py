@@ -21,7 +21,7 @@ import math
 import numpy as np
 
 from skykiln.jit import formula
-from skykiln.light.pyramid import COLOUR_SHIFT, COVARIANCE, FLUX, FOURTH, MEAN, SPREAD
+from skykiln.light.node_record import COLOUR_SHIFT, COVARIANCE, FLUX, FOURTH, MEAN, SPREAD
 
 ENTRY = 25  # mean 3, spread, covariance 6, h, flux 3, flux times colour shift 9, g, r
 _H, _FLUX, _SHIFT, _G, _R = 10, 11, 14, 23, 24

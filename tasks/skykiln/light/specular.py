@@ -22,7 +22,7 @@ from skykiln.light.directions import FACE_AXES
 from skykiln.light.ggx import ggx_norm
 from skykiln.light.lobe_grid import KINK_ERROR, interpolated, lobe_grid, texel_grid
 from skykiln.light.lobe_sums import ENTRY, append, sum_above, sum_across, sum_coloured
-from skykiln.light.pyramid import FLUX, RADIUS, RECORD, SPREAD
+from skykiln.light.node_record import FLUX, RADIUS, RECORD, SPREAD
 from skykiln.light.walk import (
     ACROSS,
     BATCH,

@@ -14,7 +14,8 @@ import math
 import numpy as np
 
 from skykiln.jit import formula
-from skykiln.light.pyramid import (
+from skykiln.light.cells import cell_moments
+from skykiln.light.node_record import (
     FLUX,
     FOURTH,
     KINK,
@@ -26,7 +27,6 @@ from skykiln.light.pyramid import (
     SPREAD,
     SPREAD_GAP,
     THIRD,
-    cell_moments,
 )
 
 OPEN, TAKE, COLOURED, DROP = 0, 1, 2, 3

@@ -66,6 +66,7 @@ def _run_every_kernel():
     nodes = pyramid.build_pyramid(sky)
     level = specular.filter_level(nodes, 4, alpha_from_roughness(0.5), 0.1)
     _run_every_estimator(sky, level)
+    specular.filter_level(nodes, 64, alpha_from_roughness(0.4), 0.9)  # on a sparse grid
     irradiance.irradiance_cube(nodes, 4, 0.1)
     harmonics.irradiance_coefficients(sky)
     photometry.horizontal_illuminance(sky)
