@@ -84,13 +84,23 @@ def world_faces(probe, file):
     return tuple(scale * from_cube_space(level.astype(float), about["cube_axes"]) for level in texture.levels)
 
 
+def open_page(browser, path):
+    """Show the page so wide that its picture has WIDTH pixels, and wait until it is drawn."""
+    browser.open(path, 352)
+    wait_until_drawn(browser)
+
+
+def wait_until_drawn(browser):
+    browser.value("new Promise((drawn) => requestAnimationFrame(() => requestAnimationFrame(drawn)))")
+
+
 def set_controls(browser, view="sky", **values):
     """Move sliders as a hand does, and wait until it is drawn."""
     browser.value(f"document.querySelector('input[value={view}]').click()")
     for key, value in values.items():
         browser.value(f"byId('{key}').value = {value}")
         browser.value(f"byId('{key}').dispatchEvent(new Event('input', {{bubbles: true}}))")
-    browser.value("new Promise((drawn) => requestAnimationFrame(() => requestAnimationFrame(drawn)))")
+    wait_until_drawn(browser)
 
 
 def radiance_read(browser):
@@ -124,7 +134,7 @@ def is_close(seen, expected, beside, corner_error):
 
 @pytest.mark.parametrize("name", PACKS)
 def test_sky_is_what_the_file_holds_in_every_direction_and_between_levels(browser, probe, page_of, name):
-    browser.open(page_of(name), 352)
+    open_page(browser, page_of(name))
     assert browser.value("byId('trouble').hidden"), browser.value("byId('trouble').textContent")
     assert browser.value("[byId('picture').width, byId('picture').height]") == [WIDTH, HEIGHT]
     levels = world_faces(probe, f"specular.{name}.ktx2")
@@ -159,7 +169,7 @@ def on_an_edge(yaw_deg, pitch_deg):
 
 @pytest.mark.parametrize("name", ["rgb9e5", "bc6h", "rgba16f_direct", "rgba16f_negate_z"])
 def test_scene_is_lit_by_the_packed_files_alone(browser, probe, page_of, name):
-    browser.open(page_of(name), 352)
+    open_page(browser, page_of(name))
     levels = world_faces(probe, f"specular.{name}.ktx2")
     beside = {
         entry["cube_axes"]: entry["file"] for entry in probe.probe_record("ferry_noon")["irradiance"]["files"]
@@ -187,7 +197,7 @@ def picture_shown(browser):
 
 
 def test_screen_shows_tone_mapped_radiance_or_false_colours_at_the_exposure(browser, probe, page_of):
-    browser.open(page_of("rgba16f"), 352)
+    open_page(browser, page_of("rgba16f"))
     set_controls(browser, exposure=1.5, yaw=40)
     automatic = browser.value("page.facts.exposure")
     expected = seen_sky(world_faces(probe, "specular.rgba16f.ktx2"), 40, 5, 0)
@@ -209,7 +219,7 @@ def picture_corner(browser):
 
 
 def test_pointer_reads_linear_radiance_and_where_it_points(browser, probe, page_of):
-    browser.open(page_of("rgba16f_negate_z"), 352)
+    open_page(browser, page_of("rgba16f_negate_z"))
     set_controls(browser, yaw=100, pitch=-20)
     expected = seen_sky(world_faces(probe, "specular.rgba16f_negate_z.ktx2"), 100, -20, 0)
     left, top = picture_corner(browser)
@@ -224,7 +234,7 @@ def test_pointer_reads_linear_radiance_and_where_it_points(browser, probe, page_
 
 
 def test_keys_and_drags_turn_the_picture(browser, page_of):
-    browser.open(page_of("rgba16f"), 352)
+    open_page(browser, page_of("rgba16f"))
     browser.value("byId('picture').focus()")
     for key in ("ArrowLeft", "ArrowUp", "PageUp", "+", "f"):
         browser.press(key)
@@ -249,18 +259,18 @@ def test_page_says_what_the_browser_lacks(probe, page_of, tmp_path):
         "return name === 'EXT_texture_compression_bptc' ? null : get.call(this, name); };"
     with Chromium(tmp_path / "bptc") as browser:
         browser.run_first(without)
-        browser.open(page_of("bc6h"), 352)
+        open_page(browser, page_of("bc6h"))
         said = browser.value("byId('trouble').innerText")
         assert "EXT_texture_compression_bptc is missing" in said and "specular.rgb9e5.ktx2" in said
         assert browser.value("byId('stage').offsetHeight") == 0
     with Chromium(tmp_path / "webgl", "--disable-3d-apis") as browser:
-        browser.open(page_of("rgb9e5"), 352)
+        open_page(browser, page_of("rgb9e5"))
         said = browser.value("byId('trouble').innerText")
         assert "shows no WebGL2" in said and "specular" not in said
 
 
 def test_page_asks_for_nothing(browser, page_of):
-    browser.open(page_of("rgba16f"), 352)
+    open_page(browser, page_of("rgba16f"))
     set_controls(browser, "scene")
     assert {address.partition(":")[0] for address in browser.requests} == {"file"}
     assert all(address.endswith(".html") for address in browser.requests)
