@@ -32,16 +32,21 @@ from skykiln.config import load_pipeline
 from skykiln.engine import atomic, lots
 from skykiln.engine.chains import chain_of, glance_at
 from skykiln.engine.content import chunks_of
+from skykiln.stages.audit_probe import AuditProbe
 from skykiln.stages.decode_source import DecodeSource
+from skykiln.stages.draw_probe import DrawProbe
 from skykiln.stages.extract_faces import ExtractFaces
 from skykiln.stages.filter_level import FilterLevel
 from skykiln.stages.gather_irradiance import GatherIrradiance
 from skykiln.stages.nights import bake
 from skykiln.stages.pack_probe import PackProbe
+from skykiln.stages.separate_sun import SeparateSun
 from skykiln.stages.snapshot import Snapshot
 from tiny_pipeline import nothing_shown, sky_pixels, write_sky
 
-NUMERIC = (DecodeSource, ExtractFaces, FilterLevel, GatherIrradiance, PackProbe)
+NUMERIC = (
+    AuditProbe, DecodeSource, DrawProbe, ExtractFaces, FilterLevel, GatherIrradiance, PackProbe, SeparateSun
+)  # fmt: skip
 PIPELINE = """\
 skykiln: 1
 recipes:
