@@ -84,6 +84,11 @@ def _in_blocks(layers, columns):
     """Sums of layers (h, w) over square blocks, about so many across."""
     height, width = layers[0].shape
     step = max(1, math.ceil(width / columns))
+    if step == 1:
+        return layers
+    if height % step == 0 == width % step:  # every step-th column at a time: many times quicker
+        down = (layer.reshape(height // step, step, width).sum(1) for layer in layers)
+        return [sum(layer[:, first::step] for first in range(step)) for layer in down]
     rows, columns = np.arange(0, height, step), np.arange(0, width, step)
     return [np.add.reduceat(np.add.reduceat(layer, rows, axis=0), columns, axis=1) for layer in layers]
 

@@ -26,8 +26,9 @@ def level_change(before, after):
     weights = cube_texel_solid_angles(before.shape[1])[None, :, :, None]
     mean = float((before * weights).sum() / (3 * 4 * np.pi))
     difference = np.abs(after - before)
-    if mean == 0:
-        return LevelChange(*(2 * (float(bool(difference.any())),)))
+    if mean == 0:  # there is nothing to relate a change to: all of it, or none
+        lit = float(difference.any())
+        return LevelChange(lit, lit)
     largest = (difference / np.maximum(np.abs(before), FLOOR * mean)).max()
     return LevelChange(float(largest), float((difference * weights).sum() / (3 * 4 * np.pi) / mean))
 

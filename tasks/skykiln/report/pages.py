@@ -56,7 +56,6 @@ def probe_page(record, entry, probe, looks) -> bytes:
                 probe : values of the probe.json that the pictures show, {} if there is none
                 looks : numbers about its pictures
     """
-    audited = bool(probe and probe.get("audit"))
     return _page(
         "probe.html",
         **{key: entry[key] for key in ("name", "state", "failure", "gates", "accepted", "change", "stages")},
@@ -66,7 +65,6 @@ def probe_page(record, entry, probe, looks) -> bytes:
         panorama=probe and "panorama_size" in looks and _panorama(probe, looks),
         numbers=_numbers(probe) if probe else [],
         levels=probe["specular"]["levels"] if probe else [],
-        audited=audited,
         scene=probe and "scene_difference" in looks and _scene(probe, looks),
         files=[file for kind in ("specular", "irradiance") for file in probe[kind]["files"]] if probe else [],
     )
@@ -171,6 +169,13 @@ def _numbers(probe):
     yield "Pixels repaired", amount(_repaired(source["repaired"]))
     yield "Light lost to clamping", percent(energy["lost_to_clamping"])
     yield "Harmonics, smallest", amount(probe["irradiance"]["sh_smallest"])
+
+
+    audit = probe.get("audit")
+    if audit:
+        worst, share = audit["worst"], percent(audit["share_passed"])
+        told = f"worst {percent(abs(worst['deviation']))} at {worst['map']}, z {abs(worst['z']):.1f}"
+        yield "Audit", f"{audit['why'] or 'passed'}; {share} of {audit['texels']} texels within; {told}"
 
 
 def _repaired(counts):

@@ -19,8 +19,12 @@ def tone_mapped(radiance, exposure):
     """(..., 3) linear radiance -> (..., 3) uint8 sRGB (IEC 61966-2-1), by x/(1 + x) on the luminance
     (Reinhard et al. 2002)."""
     x = np.maximum(radiance, 0.0) * exposure
-    luminance = (x @ np.array([0.2126, 0.7152, 0.0722]))[..., None]
-    x = np.minimum(x / (1.0 + luminance) * 1.25, 1.0)
+    luminance = (x @ np.array([0.2126, 0.7152, 0.0722], x.dtype))[..., None]  # float32 stays so: quicker
+    return srgb_bytes(np.minimum(x / (1.0 + luminance) * 1.25, 1.0))
+
+
+def srgb_bytes(x):
+    """Linear light 0..1, of any shape, as uint8 sRGB (IEC 61966-2-1)."""
     encoded = np.where(x <= 0.0031308, 12.92 * x, 1.055 * np.maximum(x, 1e-9) ** (1 / 2.4) - 0.055)
     return np.rint(encoded * 255).astype(np.uint8)
 

@@ -9,6 +9,8 @@ import functools
 
 import numpy as np
 
+from skykiln.report.pictures import srgb_bytes
+
 DARK, LIGHT = (0.22, 0.0, -0.10), (0.94, -0.02, 0.15)  # OKLab: lightness, green to red, blue to yellow
 STEPS = 256
 
@@ -34,9 +36,7 @@ def linear_ramp(steps):
 @functools.cache
 def ramp():
     """(256, 3) uint8 sRGB, dark to light."""
-    linear = linear_ramp(STEPS)
-    srgb = np.where(linear <= 0.0031308, 12.92 * linear, 1.055 * linear ** (1 / 2.4) - 0.055)
-    return np.rint(srgb * 255).astype(np.uint8)
+    return srgb_bytes(linear_ramp(STEPS))
 
 
 def coloured(share):

@@ -17,7 +17,7 @@ class DrawProbe(ProbeStage):
     """`thumbnails`: at most 32^2 texels of every level. `looks`: numbers about the pictures.
     `small`: one picture. For a sky also those of SKY_PICTURES; the scene is lit by the first pack."""
 
-    version = 1
+    version = 2
     title = "pictures"
 
     def requires(self):

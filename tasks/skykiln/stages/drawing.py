@@ -24,7 +24,7 @@ from ..report.probe_pictures import (
     small_picture,
 )
 
-SCENE_SIZE = 72, 128  # rows, columns
+SCENE_SIZE = 63, 112  # rows, columns
 SCENE_YAW, SCENE_PITCH, SCENE_VIEW = (math.radians(degrees) for degrees in (25.0, -14.0, 23.0))
 TABLE_SIZE = 64  # of the BRDF table: plenty for so small a picture
 

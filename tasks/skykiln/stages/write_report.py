@@ -64,9 +64,17 @@ def _write_pages(folder, record, before, targets):
             paged.add(target.owner)
     others = [standing_entry(target) for target in targets if target.owner not in entries]
     pictured = {target.owner for target in targets if (Path(target.pinned.pictures) / "small.png").exists()}
+    _remove_pages_but(folder / "probes", paged)
     for name in STATIC:
         _write(folder / name, static_file(name))
     _write(folder / "index.html", index_page(record, before, others, pictured, paged))
+
+
+def _remove_pages_but(folder, names):
+    """Remove the pages of probes that are no longer asked for; their pictures are prune's."""
+    for page in folder.rglob("index.html"):
+        if str(page.parent.relative_to(folder)) not in names:
+            remove(page)
 
 
 def _write_page(page, record, entry, target):
