@@ -34,4 +34,4 @@ def test_flux_that_is_off_everywhere_is_seen_where_no_texel_is():
 def test_nothing_is_allowed_where_nothing_is_rounded():
     none = np.zeros_like(LEVEL)
     assert agreement(LEVEL, LEVEL, none).used == 0
-    assert agreement(LEVEL, LEVEL + np.float32(1e-6), none).used == np.inf
+    assert agreement(LEVEL, LEVEL + np.float32(1e-6), none).used > 1e20

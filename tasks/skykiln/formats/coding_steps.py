@@ -32,7 +32,8 @@ def _half(level):
 
 def _shared_exponent(level):
     """Mantissas of 9 bits, of which the largest channel's is at least 256; the smallest step is 2^-24."""
-    largest = level.max(axis=-1, keepdims=True)
+    red, green, blue = np.moveaxis(level, -1, 0)  # far quicker than a reduction of three
+    largest = np.maximum(np.maximum(red, green), blue)[..., None]
     return np.broadcast_to(np.maximum(largest * np.float32(2.0**-9), np.float32(2.0**-25)), level.shape)
 
 

@@ -30,7 +30,7 @@ from skykiln.light.verdict import allowance_used, mean_used, score_limit, square
 FALSE_ALARM = 1e-5  # of one probe: below 1 % for a night of 1,000
 DARK = 1e-3  # errors count against at least this share of the brightest channel's mean
 BLACK = 1e-30  # radiance that stands in for none
-PRECISION = 1.0  # standard error wanted, as a share of the tolerance; it is 2 to 3 times the true one
+PRECISION = 1.25  # standard error wanted, as a share of the tolerance; it is 2 to 3 times the true one
 FLAT_PRECISION = 0.2  # the same for footprint means, which cost less
 PER_FACE = 2  # texels drawn evenly on each face of each map; as many go where the light is
 MOST_STRATA = 8000  # of one texel
@@ -42,11 +42,12 @@ class Chart(NamedTuple):
     """One cube map to be audited."""
 
     name: str
-    faces: np.ndarray  # (6, n, n, 3) float32, radiance, world axes; of irradiance E/pi
+    faces: np.ndarray  # (6, n, n, 3) float32 or six (n, n, 3), world axes, radiance; of irradiance E/pi
     alpha: float  # 0: footprint means, 1: also irradiance
     tolerance: float  # relative
     lobe: str = "ggx"  # one of `stratum_kernels.LOBES`
-    rounding: np.ndarray | float = 0.0  # what the pixel coding may have moved each value by, as faces
+    rounding: np.ndarray | None = None  # what the pixel coding may have moved each value by, as faces
+    unit: float = 1.0  # radiance of a value 1 in the faces and the rounding
 
 
 class Findings(NamedTuple):
@@ -98,7 +99,7 @@ def look(panorama, charts, seed, yaw=0.0, per_face=PER_FACE, precision=1.0):
     """Draws texels and estimates what they should hold. Returns Findings."""
     random = np.random.Generator(np.random.Philox(key=seed))
     tree = source_tree(panorama)
-    sizes = [chart.faces.shape[1] for chart in charts]
+    sizes = [len(chart.faces[0]) for chart in charts]
     alphas = np.array([chart.alpha for chart in charts])
     texels = draw_texels(tree, sizes, alphas, per_face, yaw, random)
     mean = float(tree.flux[-1, :3].max()) / (4.0 * math.pi)
@@ -114,8 +115,9 @@ def look(panorama, charts, seed, yaw=0.0, per_face=PER_FACE, precision=1.0):
         precision * tolerance * np.where(alphas[texels.chart] == 0, FLAT_PRECISION, PRECISION),
     )
     estimates, errors, strata = _estimate(panorama, tree, sizes, inputs, floor, random)
-    baked = _values_at([chart.faces for chart in charts], texels)
-    rounding = _values_at([np.broadcast_to(c.rounding, c.faces.shape) for c in charts], texels)
+    units = np.array([chart.unit for chart in charts])[texels.chart, None]
+    baked = units * _values_at([chart.faces for chart in charts], texels)
+    rounding = units * _values_at([chart.rounding for chart in charts], texels)
     baked = np.nan_to_num(baked, nan=NOT_FINITE, posinf=NOT_FINITE, neginf=NOT_FINITE)
     scale = np.maximum(estimates, floor)
     return Findings(
@@ -136,9 +138,13 @@ def together(several):
 
 
 def _values_at(cubes, texels):
-    """(T, 3) float64."""
+    """(T, 3) float64; 0 where there is no cube."""
     places = zip(*texels, strict=True)
-    return np.array([cubes[k][face, row, column] for k, face, row, column in places], dtype=np.float64)
+    none = np.zeros(3)
+    return np.array(
+        [none if cubes[k] is None else cubes[k][face][row, column] for k, face, row, column in places],
+        dtype=np.float64,
+    )
 
 
 def _estimate(panorama, tree, sizes, inputs, floor, random):

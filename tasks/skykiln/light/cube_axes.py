@@ -30,11 +30,15 @@ def to_cube_space(faces, cube_axes):
     `cube_axes` is 'negate_x' (the renderer samples with (-x, y, z)), 'negate_z' (with (x, y, -z)) or
     'direct' (with (x, y, z)).
     """
-    images = [
+    return np.ascontiguousarray(np.stack(images_of(faces, cube_axes)))
+
+
+def images_of(faces, cube_axes):
+    """The same as six views (n, n, c), without a copy."""
+    return [
         faces[face, :: -1 if flip_rows else 1, :: -1 if flip_columns else 1]
         for face, flip_columns, flip_rows in _SOURCES[cube_axes]
     ]
-    return np.ascontiguousarray(np.stack(images))
 
 
 def from_cube_space(images, cube_axes):

@@ -56,7 +56,7 @@ def _map(charts, row):
 def _texel(charts, found):
     """A texel's finding; irradiance as it is stored, not over pi."""
     factor = math.pi if found["chart"] == "irradiance" else 1.0
-    size = next(chart for chart in charts if chart.name == found["chart"]).faces.shape[1]
+    size = next(chart for chart in charts if chart.name == found["chart"]).faces[0].shape[0]
     return {
         "map": found["chart"],
         "direction": _direction(size, found["face"], found["row"], found["column"]),

@@ -16,23 +16,25 @@ from ..formats.coding_steps import FINEST_FIRST, largest_rounding
 from ..formats.texture_files import read_texture
 from ..light.agreement import agreement
 from ..light.audit import PER_FACE, Chart, judge, look, together
-from ..light.cube_axes import from_cube_space
+from ..light.cube_axes import from_cube_space, images_of, to_cube_space
 from ..light.directions import alpha_from_roughness
 from .audit_record import UNCODED, audit_record
 from .pack_probe import packed_names
+from .packing import darkened
 
 
 class Cube(NamedTuple):
     """A packed file, read back.
 
-    levels : (6, n, n, 3) float32 each, world axes, radiance; of irradiance over pi
+    levels : the images of each, (6, n, n, 3) float32, as stored
     roundings : what its coding may have moved each value by
     """
 
     file: str
     pixels: str
-    levels: list
-    roundings: list
+    cube_axes: str
+    levels: tuple
+    roundings: tuple
 
 
 class ProbeAudit:
@@ -43,12 +45,13 @@ class ProbeAudit:
     """
 
     def __init__(self, probe, panorama, files, stops, encoded=()):
-        self.probe, self.panorama = probe, panorama
-        cubes = [_cube(name, files[name], axes, stops) for name, axes in _axes_of_files(probe).items()]
+        self.probe, self.panorama, self._unit = probe, panorama, 2.0**stops
+        cubes = [_cube(name, files[name], axes) for name, axes in _axes_of_files(probe).items()]
         self._specular, self._irradiance = (_finest_first(cubes, kind) for kind in ("specular", "irradiance"))
         if encoded:
-            self._specular.insert(0, Cube(UNCODED, "float", encoded, [np.float32(0)] * len(encoded)))
-        self.charts = [*self._specular_charts(), *self._irradiance_charts()]
+            levels = tuple(darkened(level, stops) for level in encoded)
+            self._specular.insert(0, Cube(UNCODED, "float", "direct", levels, _roundings("float", levels)))
+        self.charts = [*self._specular_charts(), self._irradiance_chart()]
 
     def look(self, seed, per_face=PER_FACE):
         """Findings at texels that follow from the seed."""
@@ -60,17 +63,19 @@ class ProbeAudit:
         return audit_record(self.charts, judge(self.charts, together(looks)), chains)
 
     def _specular_charts(self):
-        finest, tolerance = self._specular[0], self.probe.tolerance
-        rows = zip(finest.levels, finest.roundings, self.probe.roughness, strict=True)
-        return [
-            Chart(f"level {k}", level, alpha_from_roughness(roughness), tolerance, rounding=rounding)
-            for k, (level, rounding, roughness) in enumerate(rows)
-        ]
+        finest = self._specular[0]
+        levels = range(len(finest.levels))
+        for level, roughness in zip(levels, self.probe.roughness, strict=True):
+            alpha = alpha_from_roughness(roughness)
+            yield self._chart(f"level {level}", finest, level, alpha, self._unit)
 
-    def _irradiance_charts(self):
-        finest = self._irradiance[0]
-        (level,), (rounding,) = finest.levels, finest.roundings
-        return [Chart("irradiance", level, 1.0, self.probe.tolerance, rounding=rounding)]
+    def _irradiance_chart(self):
+        return self._chart("irradiance", self._irradiance[0], 0, 1.0, self._unit / math.pi)
+
+    def _chart(self, name, cube, level, alpha, unit):
+        """A level of a cube in world axes."""
+        images, rounding = (images_of(each[level], cube.cube_axes) for each in (cube.levels, cube.roundings))
+        return Chart(name, images, alpha, self.probe.tolerance, rounding=rounding, unit=unit)
 
 
 def _axes_of_files(probe):
@@ -80,13 +85,13 @@ def _axes_of_files(probe):
     return {name: entries[pack].cube_axes for pack, names in named for name in names}
 
 
-def _cube(name, data, cube_axes, stops):
+def _cube(name, data, cube_axes):
     texture = read_texture(data, name)
-    factor = np.float32(2.0**stops / (math.pi if name.startswith("irradiance.") else 1.0))
-    levels = [from_cube_space(level, cube_axes) * factor for level in texture.levels]
-    roundings = [largest_rounding(texture.pixels, level) for level in texture.levels]
-    roundings = [from_cube_space(rounding, cube_axes) * factor for rounding in roundings]
-    return Cube(name, texture.pixels, levels, roundings)
+    return Cube(name, texture.pixels, cube_axes, texture.levels, _roundings(texture.pixels, texture.levels))
+
+
+def _roundings(pixels, levels):
+    return tuple(largest_rounding(pixels, level) for level in levels)
 
 
 def _finest_first(cubes, kind):
@@ -96,10 +101,22 @@ def _finest_first(cubes, kind):
 
 def _agreements(chain):
     """(file, share used, share of texels) of all cubes but the first, beside the first."""
-    finest, *others = chain
+    first, *others = chain
     for other in others:
-        pairs = zip(finest.levels, other.levels, finest.roundings, other.roundings, strict=True)
-        found = [agreement(a, b, np.broadcast_to(p + q, b.shape)) for a, b, p, q in pairs]
+        levels, roundings = _with_axes_of(other, first)
+        pairs = zip(levels, other.levels, roundings, other.roundings, strict=True)
+        found = [agreement(a, b, p + q) for a, b, p, q in pairs]
         texels = [level[..., 0].size for level in other.levels]
         share = np.average([level.share for level in found], weights=texels)
         yield other.file, max(level.used for level in found), float(share)
+
+
+def _with_axes_of(other, cube):
+    """Levels and roundings of a cube as the images of another file."""
+    if other.cube_axes == cube.cube_axes:
+        return cube.levels, cube.roundings
+    for_other = (
+        [to_cube_space(from_cube_space(image, cube.cube_axes), other.cube_axes) for image in images]
+        for images in (cube.levels, cube.roundings)
+    )
+    return tuple(for_other)
