@@ -42,10 +42,15 @@ def filtered(points, normals, alpha):
     The normaliser is integrated here, not taken from the code under test.
     """
     directions, fluxes = points
-    norm, _ = integrate.quad(
+    return _sums(np.ascontiguousarray(normals), directions, fluxes, alpha) / kernel_integral(alpha)
+
+
+def kernel_integral(alpha):
+    """The kernel's integral over the sphere, by adaptive quadrature."""
+    integral, _ = integrate.quad(
         lambda u: 2 * np.pi * _kernel(1 - np.exp(u), alpha) * np.exp(u), -50, 0, limit=500
     )
-    return _sums(np.ascontiguousarray(normals), directions, fluxes, alpha) / norm
+    return integral
 
 
 def _kernel(c, alpha):
