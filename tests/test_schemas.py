@@ -152,6 +152,7 @@ LIGHT = {
     "brightest": {"direction": [0.0, 0.6, 0.8], "luminance": 8e8},
     "sun": None,
     "lost_to_clamping": 0.0,
+    "warnings": [],
     "repaired": 0,
     "sh_smallest": -0.1,
     "seam": 1.1,

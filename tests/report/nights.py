@@ -17,6 +17,7 @@ LIGHT = {
     "brightest": {"direction": [0.0, 0.6, 0.8], "luminance": 8.0e8},
     "sun": None,
     "lost_to_clamping": 0.0,
+    "warnings": [],
     "repaired": 0,
     "sh_smallest": 0.5,
     "seam": 1.1,
@@ -63,6 +64,7 @@ def troubled_night():
     gate = {"gate": "change.mean", "why": "the pixels changed by 2 %, the limit is 1 %"}
     failure = {"file": "pier.exr", "stage": "panorama of pier", "cause": "pier.exr: the file ends early"}
     worn = {**LIGHT, "lost_to_clamping": 0.25, "repaired": 3, "sh_smallest": -0.5}
+    worn["warnings"] = ["its sun is clipped"]
     return night(
         entry("pier", state="failed", failure=failure, audit=None),
         entry("quay", state="held", gates=[gate], change=CHANGE),

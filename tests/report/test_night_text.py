@@ -18,6 +18,7 @@ def test_findings_name_their_probes_and_the_urgent_ones_come_first():
         "Failed",
         "Held by a gate",
         "Audit out of tolerance",
+        "Warnings about the source",
         "Light lost",
         "Pixels repaired",
         "Harmonics below zero",
@@ -25,6 +26,7 @@ def test_findings_name_their_probes_and_the_urgent_ones_come_first():
     assert found["Failed"].cases == [("pier", "pier.exr: the file ends early")]
     assert found["Held by a gate"].cases[0][0] == "quay"
     assert found["Audit out of tolerance"].cases == [("hall", "level 1 is 9 % off")]
+    assert found["Warnings about the source"].cases == [("lamp", "its sun is clipped")]
     assert found["Light lost"].cases == [("lamp", "25 % of the flux")]
     assert found["Pixels repaired"].cases == [("lamp", "3 pixels")]
     urgency = [finding.urgent for finding in found.values()]

@@ -53,6 +53,12 @@ def findings(record) -> list:
             _broken(p for p in probes if p["accepted"]),
         ),
         Finding(
+            "Warnings about the source",
+            "It was baked as it is; whoever uses the probe should know.",
+            False,
+            [(p["name"], text) for p in probes for text in (p["light"] or {}).get("warnings", ())],
+        ),
+        Finding(
             "Light lost",
             "Values did not fit the coding even after storage_ev.",
             False,

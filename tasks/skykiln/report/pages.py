@@ -161,7 +161,8 @@ def _numbers(probe):
         radius = f"radius {sun['angular_radius_deg']:.3g} degrees"
         yield "Sun, facing it", f"{amount(sun['illuminance'])}{lux}, {radius}"
     yield "Source", f"{source['file']}, {source['width']} x {source['height']}"
-    yield "Scaled by", amount(source["scale"])
+    by = ", ".join(source.get("calibrated_by", ()))
+    yield "Scaled by", f"{amount(source['scale'])}{f', from {by}' if by else ''}"
     yield "Recipe", probe["recipe"]
     yield "storage_ev", str(probe["storage_ev"])
     sizes = (bytes_in_words(probe["bytes"][kind]) for kind in ("disk", "gpu"))
@@ -171,6 +172,8 @@ def _numbers(probe):
     yield "Harmonics, smallest", amount(probe["irradiance"]["sh_smallest"])
 
 
+    if source.get("warnings"):
+        yield "Warnings", "; ".join(source["warnings"])
     audit = probe.get("audit")
     if audit:
         worst, share = audit["worst"], percent(audit["share_passed"])

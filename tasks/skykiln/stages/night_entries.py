@@ -58,6 +58,7 @@ def _light(record):
             "brightest": energy["brightest"],
             "sun": record["sun"] and {key: record["sun"][key] for key in ("direction", "illuminance")},
             "lost_to_clamping": energy["lost_to_clamping"],
+            "warnings": record["source"]["warnings"],
             "repaired": sum(n for n in record["source"]["repaired"].values() if type(n) is int),
             "sh_smallest": record["irradiance"]["sh_smallest"],
             "seam": max((seam for seam in seams if seam is not None), default=None),
