@@ -27,11 +27,11 @@ def night_sentence(record) -> str:
     totals = record["totals"]
     count = totals["probes"]
     states = ("rebuilt", "unchanged", "failed", "held")
-    told = [f"{totals[state]} {state}" for state in states if totals[state]]
+    told = [f"{totals[state]:,} {state}" for state in states if totals[state]]
     parts = ", ".join(told) if told else "none asked for"
     held = " by gates" if totals["held"] else ""
     length = seconds_in_words(record["seconds"])
-    return f"{count} probe{'' if count == 1 else 's'}: {parts}{held}. It took {length}."
+    return f"{count:,} probe{'' if count == 1 else 's'}: {parts}{held}. It took {length}."
 
 
 def when(record) -> str:
