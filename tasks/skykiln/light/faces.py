@@ -143,20 +143,23 @@ def _add_line(panorama, from_pole, grid, major, moving, other, fixed, below, out
     nx, ny = py * moving[2] - pz * moving[1], pz * moving[0] - px * moving[2]
     nz = px * moving[1] - py * moving[0]
     a, b = -nz / ny, -nx / ny
+    row = len(grid[1]) // 2
     for i in range(size * parts):
         u0, u1 = 2.0 * i / (size * parts) - 1.0, 2.0 * (i + 1) / (size * parts) - 1.0
         x0, z0 = px + moving[0] * u0, pz + moving[2] * u0
         x1, z1 = px + moving[0] * u1, pz + moving[2] * u1
+        texel = out[i // parts]
         if x0 * z1 - z0 * x1 > 0.0:  # t falls from the first end to the second
-            _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, 1.0, below, out[i // parts])
+            row = _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, row, 1.0, below, texel)
         else:
-            _add_edge(panorama, from_pole, grid, a, b, x1, z1, x0, z0, -1.0, below, out[i // parts])
+            row = _add_edge(panorama, from_pole, grid, a, b, x1, z1, x0, z0, row, -1.0, below, texel)
 
 
 @formula
-def _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, sign, below, out):
+def _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, near, sign, below, out):
     """Adds the integral of G along a great circle, between two points given by the horizontal parts of
-    their directions, t falling, the height rising or falling throughout."""
+    their directions, t falling, the height rising or falling throughout. Returns the row of its last
+    point; `near` is a row from which the first point's is looked for."""
     heights, tangents, cos_columns, sin_columns = grid
     width = panorama.shape[1]
     length0, length1 = math.sqrt(x0 * x0 + z0 * z0), math.sqrt(x1 * x1 + z1 * z1)
@@ -164,9 +167,9 @@ def _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, sign, below, out)
     cos_end, sin_end = z1 / length1, x1 / length1
     tangent, tangent_end = a * cos_t + b * sin_t, a * cos_end + b * sin_end
     step = 1 if tangent_end < tangent else -1
-    row = _row_of(tangent, tangents, step)
+    row = _row_of(tangent, tangents, step, near)
     start = (math.pi - math.atan2(sin_t, cos_t)) * (width / (2.0 * math.pi))
-    span = math.atan2(sin_t * cos_end - cos_t * sin_end, cos_t * cos_end + sin_t * sin_end)
+    span = _arc(sin_t * cos_end - cos_t * sin_end, cos_t * cos_end + sin_t * sin_end)
     last = start + span * (width / (2.0 * math.pi))
     column = math.floor(start)
     radius2 = a * a + b * b
@@ -194,16 +197,16 @@ def _add_edge(panorama, from_pole, grid, a, b, x0, z0, x1, z1, sign, below, out)
             panorama, from_pole, heights, a, b, cos_t, sin_t, cos_next, sin_next, row, i, sign, below, out
         )
         if at_end:
-            return
+            return row
         cos_t, sin_t = cos_next, sin_next
         column += 1
 
 
 @formula
-def _row_of(tangent, tangents, step):
-    """The row that holds a latitude, or that an edge which starts there enters (step 1: downwards)."""
+def _row_of(tangent, tangents, step, row):
+    """The row that holds a latitude, or that an edge which starts there enters (step 1: downwards); looked
+    for from another row, which a line's neighbouring edges make a near one."""
     rows = tangents.shape[0] - 1
-    row = min(rows - 1, max(0, int(math.atan2(1.0, tangent) * rows / math.pi)))
     while row > 0 and (tangent > tangents[row] or (step < 0 and tangent == tangents[row])):
         row -= 1
     while row < rows - 1 and (tangent < tangents[row + 1] or (step > 0 and tangent == tangents[row + 1])):
