@@ -32,7 +32,7 @@ from skykiln.light.node_record import (
 OPEN, TAKE, COLOURED, DROP = 0, 1, 2, 3
 ACROSS = 4  # added to a verdict: the node may stand across a horizon
 BATCH = 64  # nodes of one level that are judged together
-STACK = 4096  # bounds a depth-first walk in batches: 3 BATCH entries a level
+STACK = 4096  # a depth-first walk in batches needs 3 BATCH entries a level
 # Colours that drift across the sky shift all nodes the same way: these errors add up, where others
 # cancel.
 COHERENT = np.float32(20.0)
@@ -58,6 +58,12 @@ def push_roots(tree, stack_level, stack_node):
     for half in range(2):
         stack_level[half], stack_node[half] = tree[5].shape[0] - 2, half
     return 2
+
+
+@formula
+def has_room(top):
+    """Whether a node may still be opened. Else it is taken as it is, some ten levels below a pixel."""
+    return top + 4 <= STACK
 
 
 @formula
@@ -128,10 +134,11 @@ def _left_out(third, fourth, spread, cosine, r):
 
 
 @formula
-def lower_bounds(tree, probes, centre, radius, b, a2, rough, sums):
-    """A rough lower estimate, per channel, of the sums at some directions of a group.
+def rough_sums(tree, probes, centre, radius, b, a2, rough, sums):
+    """A rough estimate, per channel, of the sums at some directions of a group; on the low side, since nodes
+    across the horizon are left out.
 
-    probes (3, p) float32; sums (3, p) float32, zero on entry. Nodes across the horizon are left out.
+    probes (3, p) float32; sums (3, p) float32, zero on entry; rough, the relative error.
     """
     half, one, zero = _f(0.5), _f(1.0), _f(0.0)
     half_b, b_, a2_ = _f(0.5 * b), _f(b), _f(a2)
@@ -153,7 +160,9 @@ def lower_bounds(tree, probes, centre, radius, b, a2, rough, sums):
             near = max(0.0, math.sqrt(dx * dx + dy * dy + dz * dz) - radius)
             r2 = half_b / (half_b * near * near + a2_)
             across = height < reach
-            if node[FOURTH] * r2 * r2 * 35.0 > rough or (across and node[RADIUS] > 0.3):
+            # 35 = (4+3)!/(4! 3!), of the fourth derivative; 0.3 rad across a horizon is no node to leave out.
+            coarse = node[FOURTH] * r2 * r2 * 35.0 > rough or (across and node[RADIUS] > 0.3)
+            if coarse and has_room(top):
                 top = push_quarters(stack_level, stack_node, top, level, batch[e])
             elif not across:
                 red, green, blue = node[FLUX], node[FLUX + 1], node[FLUX + 2]

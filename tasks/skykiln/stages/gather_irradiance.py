@@ -10,7 +10,7 @@ from .sky_panorama import sky_of
 class GatherIrradiance(ProbeStage):
     """`irradiance`: (6, m, m, 3) float32, irradiance E, not E/pi. `totals`: harmonics and totals as JSON."""
 
-    version = 4
+    version = 5
     title = "irradiance"
 
     def requires(self):
