@@ -115,6 +115,15 @@ def test_sun_is_marked_where_it_stands():
     assert "the sun" in mark["title"]
 
 
+def test_audit_of_a_level_stands_beside_it():
+    worst = {"map": "level 1", "deviation": -0.004, "z": 2.5}
+    audit = {"why": "", "texels": 200, "share_passed": 1.0, "worst": worst, "maps": []}
+    audit["maps"] = [{"map": "all", "deviation": 0.1}, {"map": "level 1", "deviation": -0.0012}]
+    page = _probe(entry("quay"), probe={**PROBE, "audit": audit})
+    assert "audit: -0.12 % in the mean" in page.text
+    assert "passed; 100 % of 200 texels within; worst 0.4 % at level 1, z 2.5" in page.text
+
+
 def test_failed_probe_that_was_never_baked_has_a_page_with_its_cause():
     failure = {"file": "pier.exr", "stage": "panorama of pier", "cause": "pier.exr: the file ends early"}
     page = _probe(entry("pier", state="failed", failure=failure, audit=None), probe={}, looks={})

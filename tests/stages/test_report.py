@@ -167,6 +167,14 @@ def test_skies_are_drawn_closely_with_the_scene_that_their_files_light(tmp_path)
     assert 'class="mark"' in _page(pipeline, f"{SKY}/index.html")
 
 
+def test_pictures_of_a_sky_go_when_it_is_none_any_more(pipeline):
+    folder = pipeline.build / "report" / SKY
+    (folder / "scene.png").write_bytes(b"of a larger recipe")
+    _brighten(pipeline)
+    pipeline.bake()
+    assert not (folder / "scene.png").exists()
+
+
 def test_what_is_a_sky_follows_from_the_recipe_or_from_the_source_s_size(pipeline):
     pinned = pipeline.snapshot().probes[0].pinned
     assert not is_sky(pinned)

@@ -64,7 +64,7 @@ def probe_page(record, entry, probe, looks) -> bytes:
         probe=probe,
         panorama=probe and "panorama_size" in looks and _panorama(probe, looks),
         numbers=_numbers(probe) if probe else [],
-        levels=probe["specular"]["levels"] if probe else [],
+        levels=list(_levels(probe)) if probe else [],
         scene=probe and "scene_difference" in looks and _scene(probe, looks),
         files=[file for kind in ("specular", "irradiance") for file in probe[kind]["files"]] if probe else [],
     )
@@ -138,6 +138,14 @@ def _panorama(probe, looks):
             "y": round(100 * (0.5 - height / math.pi), 2),
         },
     }
+
+
+def _levels(probe):
+    """Levels, each with how far its audit found it off in the mean, None where it was not audited alone."""
+    maps = (probe.get("audit") or {}).get("maps", ())
+    off = {row["map"]: row["deviation"] for row in maps}
+    for level in probe["specular"]["levels"]:
+        yield {**level, "off": off.get(f"level {level['level']}")}
 
 
 def _heading(longitude, height):

@@ -1,6 +1,7 @@
 """DrawProbe: what people see of a probe, and the small copy of its chain that tells what changed."""
 
 import math
+from pathlib import Path
 
 from .extract_faces import ExtractFaces, auto_face_size
 from .filter_level import FilterLevel
@@ -41,6 +42,11 @@ class DrawProbe(ProbeStage):
             "looks": self.work_file("looks.json"),
             **{name: f"{self.pinned.pictures}/{name}.png" for name in pictures},
         }
+
+    def superseded(self):
+        """Pictures of a sky that is none any more."""
+        lost = [name for name in SKY_PICTURES if name not in self.files()]
+        return [path for name in lost if (path := Path(self.pinned.pictures, f"{name}.png")).exists()]
 
     def settings(self):
         probe = self.probe
