@@ -43,7 +43,8 @@ def test_text_tells_the_greatest_change_first_in_percent_stops_and_degrees():
     changed = lines[lines.index("Changed: 2") + 1 :]
     told = "  ferry: pixels 40 % on average, 50 % at most; illuminance +100 % (+1.00 EV)"
     assert changed[0].startswith(told)
-    assert changed[1].startswith("  quay: ")
+    assert changed[1] == "    3.2 degrees; its source did not change"
+    assert changed[2].startswith("  quay: ")
 
 
 def test_text_of_the_worst_night_fits_a_screen():

@@ -12,14 +12,14 @@ _NAMED = 3  # cases of each finding that are told by name
 
 def night_lines(record) -> list:
     """What a night did, what needs a person, what changed."""
-    lines = [f"The night of {when(record)}", *_wrapped(night_sentence(record))]
-    lines += _finding_lines(findings(record))
+    lines = [f"The night of {when(record)}", night_sentence(record), *_finding_lines(findings(record))]
     changed = sorted(_changed(record), key=lambda probe: -probe["change"]["mean"])
     told = [f"  {probe['name']}: {change_words(probe['change'])}" for probe in changed]
     lines += [f"Changed: {len(changed)}", *told] if changed else ["No pixel of what is published changed."]
+    lines = [part for line in lines for part in _wrapped(line)]
     if len(lines) > SCREENFUL:
         lines[SCREENFUL - 1 :] = [f"... and {len(lines) - SCREENFUL + 1} lines more: see report/index.html"]
-    return [_cut(line) for line in lines]
+    return lines
 
 
 def night_sentence(record) -> str:
@@ -70,10 +70,7 @@ def _changed(record):
     return [probe for probe in record["probes"] if probe.get("change")]
 
 
-def _cut(line):
-    line = line.replace("\n", " ")
-    return line if len(line) <= LONGEST_LINE else f"{line[: LONGEST_LINE - 3]}..."
-
-
-def _wrapped(sentence):
-    return textwrap.wrap(sentence, LONGEST_LINE)
+def _wrapped(line):
+    """A line as two at most."""
+    further = "    " if line[:1] == " " else ""
+    return textwrap.wrap(line, LONGEST_LINE, subsequent_indent=further, max_lines=2, placeholder=" ...")
