@@ -6,11 +6,12 @@ import numpy as np
 import pytest
 
 from skykiln.errors import FileError
-from skykiln.formats.cube_textures import ABOUT_KEY, read_cube_texture
+from skykiln.formats.cube_textures import ABOUT_KEY, AXES, read_cube_texture
 from skykiln.formats.dfd import PRIMARIES
 from skykiln.formats.image import ReadOptions
 from skykiln.formats.ktx2 import Ktx2Texture, write_ktx2
 from skykiln.light.colour import SPACES
+from skykiln.light.cube_axes import CUBE_AXES
 from skykiln.stages import packing
 
 RNG = np.random.default_rng(1)
@@ -64,6 +65,7 @@ def test_primaries_of_the_descriptor_are_handed_on(tmp_path, primaries):
 
 def test_key_is_the_one_that_is_written():
     assert ABOUT_KEY == packing.ABOUT_KEY
+    assert set(AXES) == set(CUBE_AXES)
 
 
 def test_irradiance_is_refused(tmp_path):
@@ -77,7 +79,7 @@ def test_table_is_refused(tmp_path):
 
 @pytest.mark.parametrize("about", [
     "{", "[1]", "null", b"\xff\xfe", "[" * 100000, '{"storage_ev": 1e9}', '{"storage_ev": -1}',
-    '{"storage_ev": 500}', '{"storage_ev": "3"}',
+    '{"storage_ev": 500}', '{"storage_ev": "3"}', '{"cube_axes": "up"}', '{"cube_axes": [1]}',
 ])  # fmt: skip
 def test_damaged_metadata_is_an_error(tmp_path, about):
     assert "bake it again" in message(ktx2(tmp_path / "cube.ktx2", about))

@@ -30,7 +30,8 @@ def test_malformed_sources_are_told_and_leave_nothing_while_the_sound_one_is_bak
         assert failures[name]["cause"].startswith(f"{file}: ")
     assert all(failure.traceback == "" for _, failure in pipeline.night.failures)
 
-    left = [path for path in pipeline.build.rglob("*") if path.is_file() and "hostile" in str(path)]
-    assert [path for path in left if path.suffix != ".failure"] == []
+    folders = [pipeline.build / folder for folder in ("work", "probes")]
+    left = [path for folder in folders for path in folder.rglob("*") if path.is_file()]
+    assert [path for path in left if "hostile" in str(path) and path.suffix != ".failure"] == []
     probes = {name.split("/")[1] for name in published(pipeline.build) if name.startswith("probes/")}
     assert probes == {"ferry_noon"}

@@ -16,6 +16,7 @@ from skykiln.formats.ktx2 import Ktx2Texture, read_ktx2
 from skykiln.formats.ktx2_layout import HEADER_BYTES, read_header
 
 ABOUT_KEY = "skykiln"  # of the metadata: what a loader must know, as JSON
+AXES = ("negate_x", "negate_z", "direct")  # what cube_axes may be
 _MOST_STOPS = 128  # a half or a shared exponent brightened by more leaves the floats
 # CIE xy of the spaces that a descriptor can name (ITU-R BT.2020-2, table 3; Academy S-2014-004 and
 # SMPTE ST 2065-1; SMPTE EG 432-1 with the white of D65; numbers from memory).
@@ -48,7 +49,7 @@ def read_cube_texture(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
     about = _about(name, texture)
     if about.get("content") == "irradiance":
         raise FileError(f"{name}: holds irradiance, not radiance; name the probe's specular file")
-    stops, axes = _stops(name, about), about.get("cube_axes")
+    stops, axes = _stops(name, about), _axes(name, about)
     with np.errstate(over="ignore", invalid="ignore"):
         pixels = np.ascontiguousarray(faces[..., :3] * np.float32(2.0**stops), np.float32)
     space = _PRIMARIES.get(texture.primaries)
@@ -75,7 +76,16 @@ def _stops(name: str, about: dict) -> int:
     return stops
 
 
-def _facts(texture: Ktx2Texture, stops: int, axes, about: dict, space: Chromaticities | None) -> dict:
+def _axes(name: str, about: dict) -> str | None:
+    axes = about.get("cube_axes")
+    if axes is not None and axes not in AXES:
+        raise FileError(f"{name}: its cube_axes are {str(axes)[:20]}, none of {AXES}; bake it again")
+    return axes
+
+
+def _facts(
+    texture: Ktx2Texture, stops: int, axes: str | None, about: dict, space: Chromaticities | None
+) -> dict:
     size = texture.levels[0].shape[1]
     return {
         "format": "ktx2",
@@ -83,7 +93,7 @@ def _facts(texture: Ktx2Texture, stops: int, axes, about: dict, space: Chromatic
         "height": size,
         "faces": 6,
         "pixel_type": texture.pixels,
-        "cube_axes": axes if isinstance(axes, str) else None,
+        "cube_axes": axes,
         "storage_ev": stops,
         "units": about["units"] if isinstance(about.get("units"), str) else None,
         "chromaticities": space and [number for pair in space for number in pair],
