@@ -45,6 +45,7 @@ _UNVEILED_EV = 10.0
 _LOWEST = -0.02  # sine of elevation: refraction, the dip from a height, and a capture a degree off level
 _FLAT = 1e-3
 _FLAT_PIXELS = 3
+_FLAT_SHARE = 1 / 6  # of the region with its rim, where a turn has resampled the top's own rim too
 
 
 class Sun(NamedTuple):
@@ -161,7 +162,7 @@ def _angular_radius(region, excess, direction, width, height):
 def _is_clipped(source, rows, contrast_ev, width, height):
     flat = (source >= (1 - _FLAT) * source.max(0)).any(1)
     angles = panorama_row_solid_angles(width, height)[rows]
-    if flat.sum() < _FLAT_PIXELS or 4 * angles[flat].sum() < angles.sum():
+    if flat.sum() < _FLAT_PIXELS or angles[flat].sum() < _FLAT_SHARE * angles.sum():
         return False
     disc = cap_solid_angle(SUN_RADIUS + np.hypot(np.pi / height, 2 * np.pi / width) / 2)
     return bool(angles[flat].sum() > disc or contrast_ev < _UNVEILED_EV)
