@@ -1,19 +1,15 @@
-"""Draws one sample sky in every source layout, small, for the README's table."""
+"""Draws one sample sky in every source layout, small, for the README's table: run with tests/light in PYTHONPATH."""
 
-import sys
 from pathlib import Path
 
 import numpy as np
-from PIL import Image
-
-ROOT = Path(__file__).parents[1]
-sys.path.insert(0, str(ROOT / "tests" / "light"))
-
 from layout_pictures import PROJECTIONS, photographed
+from PIL import Image
 
 from skykiln.formats.source_files import read_source
 from skykiln.report.pictures import exposure_for, tone_mapped
 
+ROOT = Path(__file__).parents[1]
 EDGE = 32  # texels of a face; a disc is twice as wide
 
 

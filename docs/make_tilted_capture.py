@@ -1,6 +1,7 @@
-"""A capture as it comes from a roof: tilted, in no unit, its sun clipped. And what the meters showed beside it.
+"""A capture as it comes from a roof: tilted, in no unit, its sun clipped. And what meters showed beside it.
 
-Made from the sample sky of a clear noon, so that the truth is known: `python docs/make_tilted_capture.py FOLDER`
+Made from the sample sky of a clear noon, so that the truth is known:
+`python docs/make_tilted_capture.py FOLDER`
 """
 
 import sys
