@@ -1,4 +1,4 @@
-"""Draws one sample sky in every source layout, small, for the README's table: run with tests/light in PYTHONPATH."""
+"""Draws one sample sky in every source layout, small, for the README: with tests/light in PYTHONPATH."""
 
 from pathlib import Path
 
