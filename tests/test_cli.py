@@ -164,7 +164,7 @@ def test_why_tells_what_failed_last_time(pipeline, capsys):
     (pipeline.folder / "quay_night.exr").write_text("not a picture")
     _run(capsys, "bake")
     _, out, _ = _run(capsys, "why", "quay*")
-    assert "    failed last time: quay_night.exr: is neither OpenEXR nor " in out
+    assert "    failed last time: quay_night.exr: is none of OpenEXR, " in out
     assert "panorama of quay_night: no finished run on record" in out
 
 

@@ -12,6 +12,11 @@ from skykiln.light.pyramid import build_pyramid
 WIDTH = 32
 
 
+@pytest.fixture(autouse=True)
+def pixels_stay_whole(monkeypatch):
+    monkeypatch.setattr("skykiln.light.pyramid._SMALL", 0)
+
+
 def z_order(j, i):
     return sum((((i >> k) & 1) << (2 * k)) | (((j >> k) & 1) << (2 * k + 1)) for k in range(12))
 
@@ -115,3 +120,13 @@ def test_black_nodes_carry_nothing():
     nodes = build_pyramid(sky).tree[4]
     assert np.count_nonzero(nodes[:, p.FLUX]) == 3
     assert np.all(np.isfinite(nodes))
+
+
+def test_small_pixels_are_cut_in_four_of_the_same_sky(monkeypatch, sky):
+    whole = build_pyramid(sky)
+    monkeypatch.undo()
+    cut = build_pyramid(sky)
+    assert cut.tree[0].shape == (WIDTH, 2 * WIDTH, 3)
+    np.testing.assert_allclose(cut.mean, whole.mean, rtol=1e-6)
+    top = np.s_[-2:, : p.THIRD]  # the two halves of the sphere
+    np.testing.assert_allclose(cut.tree[4][top], whole.tree[4][top], rtol=0.03, atol=1e-3)

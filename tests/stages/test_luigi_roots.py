@@ -82,7 +82,7 @@ def test_luigi_s_own_log_names_every_bad_source_with_its_cause(pipeline):
     causes = [line for line in log.splitlines() if line.startswith("skykiln.errors.SkykilnError: ")]
     told = "; ".join(causes)
     for name in ("ferry_noon", "quay_night"):
-        assert f"{name}: {name}.exr: is neither OpenEXR nor Radiance .hdr" in told
+        assert f"{name}: {name}.exr: is none of OpenEXR, Radiance .hdr" in told
 
 
 @pytest.mark.parametrize("workers", ["1", "2"])

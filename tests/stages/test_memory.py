@@ -42,6 +42,7 @@ def test_missing_source_takes_what_any_process_takes(snapshot, tmp_path):
 def test_lot_asks_for_the_memory_of_its_largest_probe_and_for_one_core(snapshot, monkeypatch):
     monkeypatch.setattr(shares, "BIG_SECONDS", 1e9)
     monkeypatch.setattr("skykiln.stages.bake_lot.available_cores", lambda: 4)
+    monkeypatch.setattr("skykiln.stages.bake_lot.BakeLot.threads", None)  # as in a process of its own
     ((lot,), big) = luigi_tasks(_standings(snapshot), snapshot, workers=1)
     assert big == []
     assert lot.resources == {"skykiln_cores": 0.25, "skykiln_memory": pytest.approx(0.5, abs=1e-5)}

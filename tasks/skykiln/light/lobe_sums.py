@@ -8,12 +8,13 @@ w = u x and s = mean |d|^2, to sixth order,
     mean of K = (c + u [2 + 3 c x + h (w (4 + 5 c x) - k s x c (3 + 4 c x))
                         + g w (w (6 + 7 c x) - k' s x c (5 + 6 c x))]) / (B q + 2 a^2)^2,
 
-the Taylor series of K in c. The fourth moment of c is taken as h v^2 with one h for all directions,
-h = 3 mean |d|^4 / ((tr C)^2 + 2 tr C^2) (3 for a normal distribution of any shape, 2.1 for an evenly
-filled square, 1.8 for a line), the sixth as g v^3, g in proportion to h^3 and right for a square; the
-third and fifth as those that come of the sphere's bending, k and k' those of a square. The skewness of a
-node's own content is left out and bounded (`walk`). Where colours are apart, each channel's own mean
-direction, m + o, adds K'(c) n.o, K' = (1 + 2 c x)/(B q + 2 a^2)^2.
+the Taylor series of K in c. The fourth moment of c is taken as h v^2 with one h for all directions, h = 3
+mean |d|^4 / ((tr C)^2 + 2 tr C^2) (3 for a normal distribution of any shape, 2.1 for an evenly filled
+square, 1.8 for a line), the sixth as g v^3, g in proportion to h^3 and right for a square, to h^2 above it,
+where a bright core in a dim field would make it far too large; the third and fifth as those that come of
+the sphere's bending, k and k' those of a square. The skewness of a node's own content is left out and
+bounded (`walk`). Where colours are apart, each channel's own mean direction, m + o, adds K'(c) n.o, K' = (1
++ 2 c x)/(B q + 2 a^2)^2.
 """
 
 import math
@@ -30,6 +31,7 @@ _MEAN, _SPREAD, _COVARIANCE, _H, _FLUX, _SHIFT, _G, _R, ENTRY = 0, 3, 4, 10, 11,
 _BEND_3 = np.float32(2.0 / 7.0)  # k: 3/2 (5.6/2 - 2)/(2 h)
 _BEND_5 = np.float32(0.592)  # k': 5/2 (3/8 18.51 - 2 h)/(2 g)
 _SIXTH = np.float32(0.6247)  # g/h^3
+_SQUARE = np.float32(2.1)  # its h
 _HALF, _ONE, _TWO, _THREE, _FOUR, _FIVE, _SIX, _SEVEN = (np.float32(n) for n in (0.5, 1, 2, 3, 4, 5, 6, 7))
 _ZERO = np.float32(0.0)
 
@@ -51,7 +53,7 @@ def append(entries, filled, node, coloured):
     even = spread * spread + _TWO * squares + _FOUR * crossed
     h = _THREE * node[FOURTH] / max(even, np.float32(1e-36))
     entries[_H, filled] = h
-    entries[_G, filled] = _SIXTH * h * h * h
+    entries[_G, filled] = _SIXTH * h * h * min(h, _SQUARE)
     entries[_R, filled] = np.float32(0.25) * max(node[FOURTH] - spread * spread, _ZERO)
     if coloured:
         for c in range(3):

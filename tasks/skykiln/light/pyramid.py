@@ -36,6 +36,7 @@ from skykiln.light.node_record import (
 from skykiln.light.pixel_blocks import gather_blocks
 from skykiln.light.pixel_geometry import SOLID_ANGLE, column_geometry, row_geometry
 
+_SMALL = 1024  # pixels across, below which pixels are cut in four
 _BLOCKS_ACROSS = 1024  # a wide panorama's stored blocks are this many, and the memory with them
 
 
@@ -62,7 +63,7 @@ def build_pyramid(panorama, yaw=0.0):
     panorama : (H, 2 H, 3) float32, radiance, finite and not negative.
     yaw : rad; positive turns what lay at +z towards +x.
     """
-    panorama = np.ascontiguousarray(panorama, dtype=np.float32)
+    panorama = _cut_finely(np.asarray(panorama, dtype=np.float32))
     height, width, _ = panorama.shape
     block = max(2, 1 << (max(1, width // _BLOCKS_ACROSS) - 1).bit_length())
     across = 1 << (-(-max(height, -(-width // 2)) // block) - 1).bit_length()
@@ -79,6 +80,14 @@ def build_pyramid(panorama, yaw=0.0):
     for level in range(2, levels + 1):
         _gather_level(nodes, offsets[level - 1], offsets[level], offsets[level + 1], weights)
     return Pyramid(tree, base, base + flux / (4 * np.pi))
+
+
+def _cut_finely(panorama):
+    """The same sky in smaller pixels, where it is small: stored nodes cost less than parts of pixels, which
+    are made anew for each texel that comes as near."""
+    if panorama.shape[1] < _SMALL:
+        panorama = panorama.repeat(2, axis=0).repeat(2, axis=1)
+    return np.ascontiguousarray(panorama)
 
 
 @parallel

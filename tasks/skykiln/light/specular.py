@@ -21,7 +21,7 @@ from skykiln.light.lobe_grid import KINK_ERROR, interpolated, lobe_grid, texel_g
 
 _ERRORS_PER_TEXEL = 2.0  # how many of the largest errors add up, as calibrated by the error tests
 _SPARSE_TILE = 8  # points along an edge of a tile of a sparse grid
-_KINK_PARTS = 0.4  # allowed for interpolating kinks
+_KINK_SHARE = 0.2  # of the tolerance, for interpolating kinks
 _DARK = 1e-3  # errors count against at least this share of the mean radiance
 
 
@@ -43,7 +43,7 @@ def filter_level(pyramid, face_size, alpha, tolerance):
     norm = ggx_norm(alpha)
     grid = lobe_grid(face_size, alpha, tolerance, _SPARSE_TILE)
     sums, kinks = _sums(pyramid, grid, alpha, tolerance, norm)
-    if grid.sparse and kinks * KINK_ERROR * grid.step <= _KINK_PARTS:
+    if grid.sparse and kinks * KINK_ERROR * grid.step <= _KINK_SHARE * tolerance:
         sums = interpolated(sums, grid, face_size)
     elif grid.sparse:
         sums, _ = _sums(pyramid, texel_grid(face_size), alpha, tolerance, norm)
@@ -51,16 +51,22 @@ def filter_level(pyramid, face_size, alpha, tolerance):
 
 
 def _sums(pyramid, grid, alpha, tolerance, norm):
-    """The sums over all nodes at a grid's points, (6, n, n, 3) float32, and how strong a kink they hold, in
-    parts per radian: what the lights that cross one horizon weigh."""
+    """The sums over all nodes at a grid's points, (6, n, n, 3) float32, and how strong a kink they hold: what
+    the lights that cross one horizon weigh, as a part of the smallest sum, per radian."""
     count = len(grid.at)
     tile = _SPARSE_TILE if grid.sparse else _tile_edge(count, grid.step, alpha)
     group = _group_edge(count, grid.step, tile, alpha)
     sums, kinks = _sum_groups(
-        pyramid.tree, FACE_AXES, grid.at, grid.step, tile, group, float(alpha), tolerance / _ERRORS_PER_TEXEL,
+        pyramid.tree, FACE_AXES, grid.at, grid.step, tile, group, float(alpha), _part(tolerance),
         norm * pyramid.base, norm * _DARK * pyramid.mean.max(),
     )  # fmt: skip
-    return sums, kinks.max()
+    return sums, kinks.max() * _part(tolerance)
+
+
+def _part(tolerance):
+    """The error allowed for one node. On smooth skies the smaller nodes are, the more alike are their errors,
+    and add up."""
+    return tolerance / _ERRORS_PER_TEXEL * min(1.0, (tolerance / 0.01) ** 0.45)
 
 
 def _tile_edge(count, step, alpha):

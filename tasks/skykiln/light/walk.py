@@ -128,8 +128,8 @@ def judge(records, rows, count, centre, radius, b, a2, per_part, verdicts):
 @formula
 def _left_out(third, fourth, spread, cosine, r):
     """Third moment, a share of the fourth (uneven between directions) and the sixth, as a part of the
-    flux and of 1/(B q + 2 a^2)^2; r = 1/s."""
-    fourth *= (_f(4.0) + _f(60.0) * spread * r * r) * r
+    flux and of 1/(B q + 2 a^2)^2; r = 1/s. The sixth moment is at least fourth^2/spread (Lyapunov)."""
+    fourth *= (_f(4.0) + _f(43.0) * fourth / max(spread, _f(1e-30)) * r * r) * r
     return (cosine * (_f(20.0) * third + fourth) * r + _f(10.0) * third + _f(0.6) * fourth) * r * r
 
 

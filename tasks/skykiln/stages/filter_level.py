@@ -15,7 +15,7 @@ class FilterLevel(ProbeStage):
     From the panorama, not the faces: what it resolves more finely than a texel counts too.
     """
 
-    version = 5
+    version = 6
     level = luigi.IntParameter()
 
     @property

@@ -10,7 +10,7 @@ from .sky_panorama import sky_of
 class GatherIrradiance(ProbeStage):
     """`irradiance`: (6, m, m, 3) float32, irradiance E, not E/pi. `totals`: harmonics and totals as JSON."""
 
-    version = 5
+    version = 6
     title = "irradiance"
 
     def requires(self):
