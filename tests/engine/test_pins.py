@@ -84,6 +84,18 @@ def test_spoiled_cache_is_started_anew(tmp_path, source, text):
     assert Pins(tmp_path / "pins.json").pin(source) == digest_file(source)
 
 
+def test_a_file_larger_than_any_picture_is_not_read(tmp_path, source, read):
+    pins = Pins(tmp_path / "pins.json")
+    with source.open("r+b") as file:
+        file.truncate(1 << 40)
+    _age(source, OLD)
+    told = "unreadable: 1099511627776 bytes, more than the limit of 1000"
+    assert pins.pin(source, largest=1000) == told
+    assert read == []
+    source.write_bytes(bytes(1000))
+    assert pins.pin(source, largest=1000) == digest_chunks([bytes(1000)])
+
+
 def test_what_can_t_be_read_gets_a_pin_that_tells_why(tmp_path):
     pins = Pins(tmp_path / "pins.json")
     assert pins.pin(tmp_path / "gone.exr") == "unreadable: No such file or directory"

@@ -103,12 +103,16 @@ def test_path_through_a_file_is_refused(tmp_path):
     assert_refused(tmp_path / "sky.exr" / "more.exr", "Not a directory")
 
 
-def test_file_too_large_for_the_limit_is_refused_before_it_is_read(tmp_path):
+@pytest.mark.parametrize(("size", "words"), [
+    (1 << 40, "sky.hdr: 1099511627776 bytes, more than the 1112576 that 1000 pixels may take;"),
+    ((1 << 20) + 8001, "larger than any picture of 1000 pixels"),  # eight bytes a pixel at most
+])  # fmt: skip
+def test_file_too_large_for_the_limit_is_refused_before_it_is_read(tmp_path, size, words):
     path = tmp_path / "sky.hdr"
     with path.open("wb") as file:
         file.write(ONE_PIXEL)
-        file.truncate(1 << 33)  # sparse: takes no room
-    with pytest.raises(FileError, match="larger than any picture"):
+        file.truncate(size)  # sparse: takes no room
+    with pytest.raises(FileError, match=words):
         read_source(path, ReadOptions(max_pixels=1000))
 
 

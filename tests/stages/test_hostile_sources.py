@@ -8,13 +8,10 @@ from tiny_pipeline import TinyPipeline, published
 sys.path.append(str(Path(__file__).parents[1] / "formats"))
 from hostile_corpus import write_corpus
 
-# A source's bytes are digested before they are read: those of a sparse file of a TB would take the night.
-TOO_LONG = "sparse.hdr"
-
 
 def test_malformed_sources_are_told_and_leave_nothing_while_the_sound_one_is_baked(tmp_path):
     pipeline = TinyPipeline(tmp_path, probes=["ferry_noon"])
-    paths = [path for path in write_corpus(tmp_path / "corpus") if path.name != TOO_LONG]
+    paths = write_corpus(tmp_path / "corpus")  # one is sparse, of a TB: its bytes are never digested
     files = {f"hostile_{number:03}": f"corpus/{path.name}" for number, path in enumerate(paths)}
     pipeline.settings["sources"] |= {name: {"file": file, "recipe": "tiny"} for name, file in files.items()}
     pipeline.bake()

@@ -33,12 +33,17 @@ class Pins:
             self._entries |= _read(each)
         self._changed = False
 
-    def pin(self, path: Path) -> str:
-        """Digest of the file's bytes, or 'unreadable: <cause>', which no file's bytes ever have."""
+    def pin(self, path: Path, largest: int | None = None) -> str:
+        """Digest of the file's bytes, or 'unreadable: <cause>', which no file's bytes ever have.
+
+        Parameters: largest : the most bytes of a file that is worth reading
+        """
         try:
             status = path.stat()
             if not stat.S_ISREG(status.st_mode):
                 return f"{UNREADABLE}: not a file"
+            if largest is not None and status.st_size > largest:
+                return f"{UNREADABLE}: {status.st_size} bytes, more than the limit of {largest}"
             return self._digest(path, status)
         except OSError as error:
             return f"{UNREADABLE}: {error.strerror}"

@@ -15,9 +15,10 @@ import OpenEXR
 
 from skykiln.errors import FileError
 from skykiln.formats.half import nearest_half
-from skykiln.formats.image import MAX_PIXELS, check_size
+from skykiln.formats.image import check_size
 from skykiln.formats.mip_levels import check_chain, level_size
 from skykiln.formats.openexr_package import open_openexr
+from skykiln.limits import MAX_PIXELS
 
 
 def _nearest_float(values) -> np.ndarray:

@@ -5,9 +5,7 @@ from typing import NamedTuple
 import numpy as np
 
 from skykiln.errors import FileError
-
-# 16384 x 8192: four times the pixels of the largest panoramas in use, and 1.6 GB once decoded.
-MAX_PIXELS = 1 << 27
+from skykiln.limits import MAX_PIXELS
 
 
 class ReadOptions(NamedTuple):

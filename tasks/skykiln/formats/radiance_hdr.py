@@ -13,9 +13,10 @@ half out give values that are up to 0.4 % of the largest channel smaller.
 import numpy as np
 
 from skykiln.errors import FileError
-from skykiln.formats.image import MAX_PIXELS, Image, check_size
+from skykiln.formats.image import Image, check_size
 from skykiln.formats.radiance_header import Header, read_header
 from skykiln.jit import exact
+from skykiln.limits import MAX_PIXELS
 
 # What `_decode` found wrong; 0 is nothing.
 _CUT, _WIDTH, _OVERRUN, _EMPTY_RUN, _NO_PREVIOUS = 1, 2, 3, 4, 5

@@ -11,6 +11,7 @@ from skykiln.formats.pfm import read_pfm
 from skykiln.formats.radiance_hdr import read_radiance_hdr
 from skykiln.formats.screen_pictures import read_jpeg, read_png
 from skykiln.formats.tiff import read_tiff
+from skykiln.limits import largest_file
 
 
 def _read_radiance(path: Path, options: ReadOptions) -> Image:
@@ -55,7 +56,7 @@ def read_source(path: Path, options: ReadOptions = AS_IT_IS) -> Image:
 
     Raises: FileError naming the file, what is wrong with it and what to do.
     """
-    _check_kind(path)
+    _check_kind(path, options.max_pixels)
     try:
         with path.open("rb") as file:
             start = file.read(16)
@@ -74,7 +75,7 @@ def _check_choices(path: Path, reader, options: ReadOptions) -> None:
         raise FileError(f"{path}: a file of its format has no {choice}s; remove {choice}:")
 
 
-def _check_kind(path: Path) -> None:
+def _check_kind(path: Path, max_pixels: int) -> None:
     """Stat before opening: opening a FIFO would wait for ever."""
     try:
         status = path.stat()
@@ -88,6 +89,12 @@ def _check_kind(path: Path) -> None:
         raise FileError(f"{path}: a pipe, socket or device, not a file; copy the picture into a file")
     if status.st_size == 0:
         raise FileError(f"{path}: the file is empty; export it again")
+    most = largest_file(max_pixels)
+    if status.st_size > most:
+        raise FileError(
+            f"{path}: {status.st_size} bytes, more than the {most} that {max_pixels} pixels may take; "
+            "export the sky alone, raise limits.max_pixels, or check whether the file is damaged"
+        )
 
 
 def _reader(path: Path, start: bytes):

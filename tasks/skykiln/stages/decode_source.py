@@ -21,7 +21,7 @@ class DecodeSource(ProbeStage):
     The outputs have digests of their own, so that a new header over the same pixels stays here.
     """
 
-    version = 2
+    version = 3
     title = "panorama"
 
     def files(self):
@@ -59,13 +59,12 @@ class DecodeSource(ProbeStage):
         return {"pixels": taken.panorama, "facts": facts, "light": light, "repairs": taken.places}
 
     def _read(self):
-        from ..formats.image import MAX_PIXELS, ReadOptions
+        from ..formats.image import ReadOptions
         from ..formats.source_files import read_source
         from .intake import joined
 
         probe, paths = self.probe, [Path(path) for path in self.pinned.source_paths]
-        most = self.pinned.max_pixels or MAX_PIXELS
-        options = ReadOptions(probe.part, probe.layer, probe.allow_ldr, most // len(paths))
+        options = ReadOptions(probe.part, probe.layer, probe.allow_ldr, self.pinned.file_pixels)
         images = [read_source(path, options) for path in paths]
         self._check_pin(paths)
         return joined(paths, images) if probe.faces else images[0]

@@ -24,7 +24,7 @@ class PinnedProbe:
     source_bytes : size of the source's file when it was pinned; 0 where it can't be read
     root, build_dir : absolute paths; cube_axes : the pipeline's, which packs may override
     gates : canonical JSON of the limits that a probe is judged by, by their dotted keys
-    max_pixels : the largest source picture; None: the readers' own limit
+    max_pixels : the largest source picture; of a cube the six faces together
     """
 
     probe: Probe
@@ -34,7 +34,7 @@ class PinnedProbe:
     build_dir: str
     cube_axes: str
     gates: str
-    max_pixels: int | None
+    max_pixels: int
 
     def __post_init__(self):
         if ".." in PurePath(self.probe.name).parts or PurePath(self.probe.name).is_absolute():
@@ -54,6 +54,11 @@ class PinnedProbe:
         folders = ("root", "build_dir")
         said = {name: value for name, value in vars(self).items() if name not in (*folders, "probe")}
         return f"{canonical_json(said)} {self.probe.to_json()}"
+
+    @property
+    def file_pixels(self) -> int:
+        """The largest picture that one of the source's files may hold."""
+        return self.max_pixels // len(self.probe.files)
 
     @property
     def source_path(self) -> str:

@@ -8,6 +8,7 @@ from ..engine.night import now
 from ..engine.pins import Pins, joint_pin
 from ..engine.shards import Shard
 from ..errors import PipelineError
+from ..limits import MAX_PIXELS, largest_file
 from .gates import PROBE_GATES
 from .kernels import EXTRAS, is_installed
 from .probe_stage import PinnedProbe
@@ -74,11 +75,16 @@ class Snapshot:
             build_dir=str(self.pipeline.build_dir),
             cube_axes=self.pipeline.cube_axes,
             gates=self._gates,
-            max_pixels=self.pipeline.max_pixels,
+            max_pixels=self._max_pixels,
         )
 
     def _pin(self, probe):
-        return joint_pin(self.pins.pin(self.pipeline.root / file) for file in probe.files)
+        largest = largest_file(self._max_pixels // len(probe.files))
+        return joint_pin(self.pins.pin(self.pipeline.root / file, largest) for file in probe.files)
+
+    @property
+    def _max_pixels(self):
+        return self.pipeline.max_pixels or MAX_PIXELS
 
 
 def _size(path):
