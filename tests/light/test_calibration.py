@@ -67,6 +67,26 @@ def test_two_measurements_give_factor_and_lost_light():
     assert result.lost_lux == pytest.approx(80000)
 
 
+def test_leverage_is_how_much_a_meter_s_error_moves_the_factor():
+    result = clipped_calibration(level(50000, 10), facing(84000, 4), 0.5)
+    assert result.leverage == pytest.approx(50000 / 8000)
+    step = 1e-7
+    higher = clipped_calibration(level(50000 * (1 + step), 10), facing(84000, 4), 0.5)
+    assert (higher.scale / result.scale - 1) / step == pytest.approx(result.leverage, rel=1e-4)
+    brighter = clipped_calibration(level(50000, 10), facing(84000 * (1 + step), 4), 0.5)
+    assert (1 - brighter.scale / result.scale) / step == pytest.approx(result.leverage - 1, rel=1e-4)
+
+
+def test_a_sun_under_the_horizon_gives_no_leverage():
+    assert clipped_calibration(level(1000, 10), facing(1200, 4), -0.01).leverage < 1
+
+
+def test_one_meter_or_a_patch_hangs_on_no_difference():
+    known = (level(50000, 10), facing(84000, 4), 0.5, patch(3000, 3))
+    assert clipped_calibration(*known).leverage is None
+    assert clipped_calibration(known[0], None, 0.5).leverage is None
+
+
 @pytest.mark.parametrize(("known", "seen"), [
     ({"level": level(50000, 10)}, 80000), ({"facing": facing(84000, 4)}, 80000),
     ({"level": level(50000, 10), "facing": facing(84000, 4)}, 80000), ({}, 0),
@@ -78,7 +98,7 @@ def test_where_the_factor_is_known_either_measurement_gives_the_lost_light(known
 
 
 def test_one_measurement_alone_scales_and_restores_nothing():
-    assert clipped_calibration(level(50000, 10), None, 0.5) == (pytest.approx(5000), 0.0)
+    assert clipped_calibration(level(50000, 10), None, 0.5) == (pytest.approx(5000), 0.0, None)
 
 
 def test_measurements_that_leave_the_sky_no_light_contradict():

@@ -1,6 +1,7 @@
 """From files of every kind to probe.json: layouts, colour, calibration, the sun, and what is told of them."""
 
 import json
+import re
 
 import numpy as np
 import pytest
@@ -216,6 +217,31 @@ def test_a_clipped_sun_gets_back_what_meters_say_it_lost(pipeline, action):
     assert 0.5 * facing < record["source"]["restored_lux"] < facing
     assert (sun is not None) == (action == "separate")
     assert sun is None or sun["clipped"]
+
+
+def test_two_meters_under_a_clipped_high_sun_are_told_to_be_worth_little(pipeline):
+    true, clipped = sun_skies.clear_noon(256), sun_skies.clipped_noon(256)
+    facing = 3000 * float(irradiance_facing(true, sun_skies.NOON) @ LUMINANCE_WEIGHTS)
+    meters = {"horizontal_lux": 3000 * horizontal_illuminance(true), "sun_lux": facing}
+    record = baked(pipeline, clipped, **meters)
+    (told,) = record["source"]["warnings"]
+    words = r"the sun is clipped: 1 % of horizontal_lux moves the scale by (\S+) %, of sun_lux by (\S+) %; "
+    shares = [float(share) for share in re.fullmatch(words + "measure a patch", told).groups()]
+    assert pipeline.night_record()["probes"][0]["light"]["warnings"] == [told]
+    moved = baked(pipeline, **{**meters, "horizontal_lux": meters["horizontal_lux"] * 1.001})
+    found = 1000 * (moved["source"]["scale"] / record["source"]["scale"] - 1)
+    assert shares == pytest.approx([found, found - 1], abs=0.1)
+    patch = {"direction": [0, 0, -1], "size_deg": 12, "cd_m2": 0.9 * 3000}
+    assert baked(pipeline, patch=patch)["source"]["warnings"] == []
+
+
+@pytest.mark.parametrize("meter", ["horizontal_lux", "sun_lux"])
+def test_one_meter_alone_under_a_clipped_sun_is_told_to_make_the_sky_too_bright(pipeline, meter):
+    record = baked(separating(pipeline), sun_skies.clipped_noon(256), **{meter: 5e4})
+    told = f"the sun is clipped, and {meter} alone makes its sky too bright for that; measure a patch too"
+    assert record["source"]["warnings"] == [told]
+    patch = {"direction": [0, 0, -1], "size_deg": 12, "cd_m2": 2000}
+    assert baked(pipeline, patch=patch)["source"]["warnings"] == []
 
 
 def test_a_sky_without_a_sun_keeps_all_its_light(pipeline):

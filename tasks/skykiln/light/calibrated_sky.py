@@ -52,6 +52,7 @@ class CalibratedSky(NamedTuple):
     scale : factor of the whole picture; gains : (3,) that balanced white before
     lost_lux : illuminance facing the sun that clipping had taken, which `pixels` still lack
     sun : Sun as `pixels` show it, if it was looked for and found
+    leverage : as of `Calibration`
     """
 
     pixels: np.ndarray
@@ -59,6 +60,7 @@ class CalibratedSky(NamedTuple):
     gains: np.ndarray
     lost_lux: float = 0.0
     sun: Sun | None = None
+    leverage: float | None = None
 
 
 def calibrated_sky(panorama, measured, weights):
@@ -80,9 +82,9 @@ def calibrated_sky(panorama, measured, weights):
         scale = agreed_scale([*([level] if level else ()), *known])
         return CalibratedSky(scaled(panorama, scale), scale, gains)
     _, sun = separate_sun(panorama, weights)
-    scale, lost = _by_the_sun(panorama, sun, measured, level, known, weights)
+    scale, lost, leverage = _by_the_sun(panorama, sun, measured, level, known, weights)
     sun = sun and sun._replace(irradiance=scale * sun.irradiance)
-    return CalibratedSky(scaled(panorama, scale), scale, gains, float(lost), sun)
+    return CalibratedSky(scaled(panorama, scale), scale, gains, float(lost), sun, leverage)
 
 
 def _gains(panorama, patch, weights):

@@ -15,6 +15,13 @@ factor k, the sine s of the sun's elevation and E as found,
     k E_level + s F = horizontal_lux,   k E_facing + F = sun_lux.
 
 Both together give k and F; either gives F where k is known, from a patch or from a calibrated file.
+
+What both together say of k is worth little under a high clear sun, where the sky is a small difference of
+large numbers: from k = (horizontal_lux - s sun_lux) / (E_level - s E_facing),
+
+    d ln k / d ln horizontal_lux = horizontal_lux / (horizontal_lux - s sun_lux),
+
+and for sun_lux one less, with the other sign.
 """
 
 import math
@@ -46,10 +53,15 @@ class Measurement(NamedTuple):
 
 
 class Calibration(NamedTuple):
-    """The factor of the whole picture, and the illuminance facing the sun that clipping had taken."""
+    """The factor of the whole picture, and the illuminance facing the sun that clipping had taken.
+
+    leverage : relative change of the factor over that of horizontal_lux, where it hangs on sun_lux too; less
+               one, over that of sun_lux. None where the measurements don't share light out
+    """
 
     scale: float
     lost_lux: float
+    leverage: float | None = None
 
 
 def card_luminance(reflectance, lux):
@@ -111,10 +123,10 @@ def _of_two(level, facing, sine):
             f"{level.name} {level.measured:g} and {facing.name} {facing.measured:g} contradict each other: "
             f"a light of {facing.measured:g} alone gives {sine * facing.measured:.4g} on the level surface"
         )
-    lost = facing.measured - measured / found * facing.found
+    lost, leverage = facing.measured - measured / found * facing.found, level.measured / measured
     if lost < 0:
-        return Calibration(agreed_scale([level, facing]), 0.0)
-    return Calibration(measured / found, lost)
+        return Calibration(agreed_scale([level, facing]), 0.0, leverage)
+    return Calibration(measured / found, lost, leverage)
 
 
 def _lost(level, facing, sine, scale):

@@ -19,6 +19,10 @@ from ..light.calibration import card_luminance
 from ..light.luminance_limit import limited
 from ..light.repair import repair_pixels
 from ..light.separate_sun import with_restored_sun
+from ..quantities import percent
+
+METER_ERROR = 0.01  # less than any meter's (DIN 5032-7, class L: 3 %; from memory)
+DOUBTFUL = 0.05  # shift of the scale by that error which users are told of
 
 
 class Intake(NamedTuple):
@@ -56,7 +60,7 @@ def taken_in(name, image: Image, probe) -> Intake:
     light_facts["limited"] = None
     if probe.max_luminance is not None and probe.sun_action == "keep":
         panorama, light_facts["limited"] = under_limit(panorama, probe.max_luminance, weights)
-    warnings = [*image.warnings, *layout_facts.pop("warnings")]
+    warnings = [*image.warnings, *layout_facts.pop("warnings"), *light_facts.pop("warnings")]
     facts = {"header": image.facts, **repair_facts, **colour_facts, **layout_facts, **light_facts}
     return Intake(panorama, places, units, {**facts, "warnings": warnings})
 
@@ -156,7 +160,7 @@ def _calibrated(name, panorama, white_luminance, probe, weights):
     measured = _measured(probe)
     if not measured.names and white_luminance is not None:
         measured = Measured(white_luminance=white_luminance * 2.0**probe.exposure_ev)
-    facts = {"calibrated_by": measured.names, "white_gains": [1.0] * 3, "restored_lux": 0.0}
+    facts = {"calibrated_by": measured.names, "white_gains": [1.0] * 3, "restored_lux": 0.0, "warnings": []}
     if not measured.names:
         scale = 2.0**probe.exposure_ev
         with told_of(name, "; lower exposure_ev"):
@@ -164,9 +168,19 @@ def _calibrated(name, panorama, white_luminance, probe, weights):
     with told_of(name):
         sky = calibrated_sky(panorama, measured, weights)
     facts |= {"scale": sky.scale, "white_gains": sky.gains.tolist(), "restored_lux": sky.lost_lux}
+    facts["warnings"] = _doubts(sky.leverage)
     if sky.lost_lux > 0 and probe.sun_action == "keep":  # else the light that it becomes is given more
         return with_restored_sun(sky.pixels, sky.sun, sky.lost_lux, weights), "cd/m2", facts
     return sky.pixels, "cd/m2", facts
+
+
+def _doubts(leverage):
+    """Where meters as good as they come leave the factor open."""
+    if leverage is None or leverage * METER_ERROR <= DOUBTFUL:
+        return []
+    error, *moved = (percent(METER_ERROR * share) for share in (1, leverage, leverage - 1))
+    told = "the sun is clipped: {} of horizontal_lux moves the scale by {}, of sun_lux by {}; measure a patch"
+    return [told.format(error, *moved)]
 
 
 def _measured(probe) -> Measured:

@@ -28,7 +28,7 @@ class JudgeProbe(ProbeStage):
     The limits are in neither output, so that others publish nothing anew as long as all gates hold.
     """
 
-    version = 2
+    version = 3
     title = "judgement"
 
     def requires(self):

@@ -23,7 +23,7 @@ def probe_record(settings, packed_names, inputs) -> dict:
     return {
         "schema": 1,
         "name": settings["name"],
-        "source": _source(settings, facts),
+        "source": _source(settings, facts, sun["sun"]),
         "recipe": settings["recipe"],
         "extra": settings["extra"],
         "cube_axes": settings["cube_axes"],
@@ -52,9 +52,17 @@ def probe_record(settings, packed_names, inputs) -> dict:
     }
 
 
-def _source(settings, facts):
+def _source(settings, facts, sun):
     told = {key: value for key, value in facts.items() if key != "limited"}
+    told["warnings"] = [*facts["warnings"], *_scaled_by_a_clipped_sun(facts, sun)]
     return {"file": settings["file"], "faces": settings["faces"], **told, **settings["orientation"]}
+
+
+def _scaled_by_a_clipped_sun(facts, sun):
+    """Of one meter alone, all that clipping took is taken for a darker picture."""
+    if sun and sun["clipped"] and facts["calibrated_by"] in (["horizontal_lux"], ["sun_lux"]):
+        (meter,) = facts["calibrated_by"]
+        yield f"the sun is clipped, and {meter} alone makes its sky too bright for that; measure a patch too"
 
 
 def _levels(roughness, face_sizes, files):
