@@ -9,7 +9,7 @@ from pathlib import Path
 
 import pytest
 
-from skykiln.config import load_pipeline
+from skykiln.config import load_pipeline, pipeline_schema
 from skykiln.engine.staleness import staleness
 from tiny_pipeline import TinyPipeline, write_sky
 
@@ -41,6 +41,23 @@ def test_readme_s_least_pipeline_is_valid(tmp_path):
     write_sky(tmp_path / "captures" / "rooms" / "lobby.exr")
     names = [probe.name for probe in load_pipeline(tmp_path / "pipeline.yaml").probes()]
     assert names == ["roof_noon", "rooms/lobby"]
+
+
+def test_pipeline_file_shows_every_key_and_what_it_shows_is_valid(tmp_path):
+    text = (ROOT / "pipeline.yaml").read_text()
+    assert [key for key in keys_of(pipeline_schema()) if f"{key}:" not in text] == []
+    (tmp_path / "sample_assets").symlink_to(ROOT / "sample_assets")
+    (tmp_path / "pipeline.yaml").write_text(re.sub(r"^  # (?= *\w+:)", "  ", text, flags=re.MULTILINE))
+    names = [probe.name for probe in load_pipeline(tmp_path / "pipeline.yaml").probes()]
+    assert {"roof_noon", "grey_card"} < set(names)
+
+
+def keys_of(schema):
+    """The names of all properties, at any depth."""
+    if isinstance(schema, dict):
+        yield from schema["properties"] if isinstance(schema.get("properties"), dict) else ()
+    for value in schema.values() if isinstance(schema, dict) else schema if isinstance(schema, list) else ():
+        yield from keys_of(value)
 
 
 def test_developers_example_of_a_stage_runs_and_reruns_only_when_it_must(tmp_path):
