@@ -33,23 +33,45 @@ class ReducedSource(NamedTuple):
 def reduced_sources(panorama, yaw):
     """A panorama (H, W, 3) in blocks, turned by `yaw` radians: a ReducedSource for each of COLUMNS."""
     height, width, _ = panorama.shape
-    row_angles = panorama_row_solid_angles(width, height).astype(np.float32)
     latitude = np.pi / 2 - np.pi * (np.arange(height) + 0.5) / height
     longitude = np.pi - 2 * np.pi * (np.arange(width) + 0.5) / width + yaw
-    flux = np.moveaxis(panorama * row_angles[:, None, None], 2, 0)
-    bright = flux.sum(0) + np.float32(1e-12) * row_angles[:, None]  # black has a middle too
-    level = bright * np.cos(latitude).astype(np.float32)[:, None]
-    moments = (
-        level * np.sin(longitude).astype(np.float32),
-        bright * np.sin(latitude).astype(np.float32)[:, None],
-        level * np.cos(longitude).astype(np.float32),
+    rows = np.stack([panorama_row_solid_angles(width, height), np.sin(latitude), np.cos(latitude)], axis=1)
+    columns = np.stack([np.sin(longitude), np.cos(longitude)], axis=1)
+    step = max(1, math.ceil(width / COLUMNS[0][0]))
+    layers = _pixels_in_blocks(
+        np.ascontiguousarray(panorama, np.float32), rows.astype(np.float32), columns.astype(np.float32), step
     )
-    angles = np.broadcast_to(row_angles[:, None], (height, width))
-    layers, sources = (*moments, *flux, angles), []
-    for columns, _ in COLUMNS:
+    sources = [_source_of(layers)]
+    for columns, _ in COLUMNS[1:]:
         layers = _in_blocks(layers, columns)
         sources.append(_source_of(layers))
     return sources
+
+
+@parallel
+def _pixels_in_blocks(panorama, rows, columns, step):
+    """Sums over blocks of step x step pixels: first moments of the brightness (3), flux (3), solid angle.
+
+    rows : (H, 3), solid angle of a pixel, sine and cosine of latitude; columns : (W, 2), of longitude
+    """
+    height, width, _ = panorama.shape
+    down, across = (height + step - 1) // step, (width + step - 1) // step
+    layers = np.zeros((7, down, across), np.float32)
+    for j in prange(down):
+        for y in range(j * step, min(height, j * step + step)):
+            angle, up, level = rows[y, 0], rows[y, 1], rows[y, 2]
+            for x in range(width):
+                i = x // step
+                red, green, blue = panorama[y, x, 0], panorama[y, x, 1], panorama[y, x, 2]
+                bright = (red + green + blue + np.float32(1e-12)) * angle  # black has a middle too
+                layers[0, j, i] += bright * level * columns[x, 0]
+                layers[1, j, i] += bright * up
+                layers[2, j, i] += bright * level * columns[x, 1]
+                layers[3, j, i] += red * angle
+                layers[4, j, i] += green * angle
+                layers[5, j, i] += blue * angle
+                layers[6, j, i] += angle
+    return layers
 
 
 def lit_by_source(panorama, yaw, table, n, v, albedo, f0, roughness):
@@ -86,9 +108,6 @@ def _in_blocks(layers, columns):
     step = max(1, math.ceil(width / columns))
     if step == 1:
         return layers
-    if height % step == 0 == width % step:  # every step-th column at a time: many times quicker
-        down = (layer.reshape(height // step, step, width).sum(1) for layer in layers)
-        return [sum(layer[:, first::step] for first in range(step)) for layer in down]
     rows, columns = np.arange(0, height, step), np.arange(0, width, step)
     return [np.add.reduceat(np.add.reduceat(layer, rows, axis=0), columns, axis=1) for layer in layers]
 

@@ -18,7 +18,7 @@ class DrawProbe(ProbeStage):
     """`thumbnails`: at most 32^2 texels of every level. `looks`: numbers about the pictures.
     `small`: one picture. For a sky also those of SKY_PICTURES; the scene is lit by the first pack."""
 
-    version = 2
+    version = 3
     title = "pictures"
 
     def requires(self):

@@ -54,7 +54,7 @@ def bake(
         sweep(folder)
     night.sweep()
     if night.stale:
-        prepare(night, snapshot, workers)
+        prepare(night, snapshot)
         with shown(night.stale):
             if scheduler:
                 bake_on_farm(scheduler, night.stale, snapshot, workers, verbose)
@@ -87,13 +87,16 @@ def call_for_all(snapshot: Snapshot):
             void_stamp(verdict.stage.stamp_path, "was asked for again")
 
 
-def prepare(night: Night, snapshot: Snapshot, workers: int):
-    """Make ready for stages to run: keep the pins, compile kernels once for all workers."""
+def prepare(night: Night, snapshot: Snapshot, forks: bool = False):
+    """Make ready for stages to run: keep the pins, compile kernels once for all workers.
+
+    Parameters: forks : load the kernels too, for the processes that this one will fork
+    """
     work = snapshot.pipeline.build_dir / "work"
     with told_as_file_error(work):
         work.mkdir(parents=True, exist_ok=True)
     snapshot.pins.save()
-    warm_kernels(again=workers > 1)
+    warm_kernels(again=forks)
 
 
 def write_record(night: Night, snapshot: Snapshot) -> dict:
@@ -140,6 +143,8 @@ def _bake_lots(lots, workers, verbose):
         return
     processes = min(workers, len(lots))
     BakeLot.threads = available_cores() // processes
+    if processes > 1:
+        warm_kernels(again=True)
     build_wave(lots, processes, verbose)
     from ..jit import use_threads
 

@@ -81,7 +81,7 @@ class BakeAll(luigi.Task):
         if not self._night.stale:
             return []
         workers = available_cores()  # Luigi keeps to itself how many there are
-        prepare(self._night, self._snapshot, workers)
+        prepare(self._night, self._snapshot, forks=workers > 1)
         self._lots, big = luigi_tasks(self._night.stale, self._snapshot, workers)
         return [*self._lots, *(task for task, _ in big)]
 
