@@ -1,6 +1,10 @@
 """Imports run one way: the table of layers, held against the sources themselves."""
 
 import ast
+import configparser
+import re
+import sys
+from importlib.metadata import packages_distributions
 from pathlib import Path
 
 import pytest
@@ -68,3 +72,18 @@ def test_module_imports_only_from_rooms_below_its_own(path):
 
 def test_table_has_a_line_for_every_room():
     assert {_room(path) for path in MODULES} == set(ALLOWED)
+
+
+def test_every_library_imported_is_one_that_the_set_up_installs():
+    declared = configparser.ConfigParser()
+    declared.read(PACKAGE.parents[1] / "setup.cfg")
+    texts = declared["options"]["install_requires"] + declared["options.extras_require"]["bc6h"]
+    names = {re.split("[ <>=]", line)[0].lower() for line in texts.split("\n") if line}
+    names |= {"llvmlite", "pydantic-core"}  # numba's and pydantic's own
+    found = packages_distributions()
+    for path in MODULES:
+        for name in imported_names(path):
+            library = name.split(".")[0]
+            if library not in sys.stdlib_module_names | {"skykiln"}:
+                owners = {owner.lower().replace("_", "-") for owner in found[library]}
+                assert owners & {name.replace("_", "-") for name in names}, f"{path.name}: {library}"
