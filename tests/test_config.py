@@ -45,6 +45,7 @@ recipes:
       roughness: linear
       tolerance: 0.005
     irradiance: {face_size: 32, sh_order: 2, pixels: rgba16f}
+    sheen: {levels: 2, roughness: linear, face_size: 16}
     pack:
       - {container: ktx2, pixels: rgba16f}
   interior:
@@ -83,8 +84,9 @@ sources:
 gates: {}
 """
 PLAIN_PACK = Pack(
-    "specular.rgba16f.ktx2", "ktx2", "rgba16f", "negate_x", 0, "irradiance.rgba16f.ktx2", "rgba16f"
-)
+    "specular.rgba16f.ktx2", "ktx2", "rgba16f", "negate_x", 0, "irradiance.rgba16f.ktx2", "rgba16f",
+    "sheen.rgba16f.ktx2",
+)  # fmt: skip
 FILES = ["concourse/stair_02.exr", "concourse/upper/desk.exr", "concourse/upper/lounge.v2.exr"]
 
 
@@ -122,6 +124,8 @@ def test_every_key_of_the_pipeline_file_reaches_the_probe(load):
         irradiance_face_size=32,
         irradiance_sh_order=2,
         packs=(PLAIN_PACK,),
+        sheen_face_size=16,
+        sheen_roughness=(0.5, 1.0),
     )
 
 
@@ -152,8 +156,9 @@ def test_auto_face_size_listed_roughness_and_named_pack(load):
     assert probe.face_size == 0
     assert probe.roughness == (0.0, 0.25, 1.0)
     assert probe.packs[1] == Pack(
-        "specular.unflipped.ktx2", "ktx2", "rgba16f", "direct", 0, "irradiance.unflipped.ktx2", "rgba16f"
-    )
+        "specular.unflipped.ktx2", "ktx2", "rgba16f", "direct", 0, "irradiance.unflipped.ktx2", "rgba16f",
+        "sheen.unflipped.ktx2",
+    )  # fmt: skip
 
 
 PACKS = """

@@ -302,6 +302,13 @@ def test_schema_refuses_a_mistake(name, path, value):
     assert not checker(name).is_valid(example)
 
 
+def test_sheen_chain_may_stand_in_probe_json_with_files_of_its_name():
+    level = {"level": 0, "roughness": 0.5, "face_size": 16, "seam": 1.2}
+    sheen = {"levels": [level], "files": [{**PACKED, "file": "sheen.rgba16f.ktx2"}]}
+    assert checker("probe").is_valid({**EXAMPLES["probe"], "sheen": sheen})
+    assert not checker("probe").is_valid({**EXAMPLES["probe"], "sheen": {**sheen, "files": [PACKED]}})
+
+
 @pytest.mark.parametrize("name", ["probe", "brdf"])
 def test_every_key_of_what_a_bake_leaves_is_needed(name):
     for key in EXAMPLES[name]:

@@ -28,6 +28,7 @@ def golden_pipeline(folder):
     pixels[5, 11] = [0, 0, 300]
     pixels[6, 2], pixels[0, 0, 1] = np.nan, -3
     write_sky(folder / "ferry_noon.exr", pixels=pixels)
+    pipeline.recipe["sheen"] = {"levels": 2, "roughness": [0.4, 1], "face_size": 4}
     pipeline.settings["sources"]["ferry_noon"] |= {"yaw_deg": 30, "horizontal_lux": 5e4}
     pixels = sky_pixels(4)
     pixels[2, 6] = 3e4

@@ -84,6 +84,11 @@ def _probe_stages(asked, name, entry, source):
         label = f"specular level {level} of {name}"
         settings = (roughness, tolerance, recipe["face_size"], yaw)
         yield label, "FilterLevel", settings, [pixels], chain[-1:]
+    sheen, thin = [], recipe.get("sheen") or {"roughness": []}
+    for level, roughness in enumerate(thin["roughness"]):
+        sheen.append(f"{work}/sheen_{level}.npy")
+        settings = (roughness, tolerance, thin["face_size"] >> level, yaw)
+        yield f"sheen level {level} of {name}", "FilterSheen", settings, [pixels], sheen[-1:]
     gathered = (recipe["irradiance"]["face_size"], tolerance, yaw)
     yield f"irradiance of {name}", "GatherIrradiance", gathered, [pixels], [cube, totals]
     thumbnails, looks = f"{work}/thumbnails.npy", f"{work}/looks.json"
@@ -93,13 +98,15 @@ def _probe_stages(asked, name, entry, source):
     for pack in recipe["pack"]:
         own = PACKED[pack.get("name")]
         names = [f"specular.{own}.ktx2", f"irradiance.{own}.ktx2", f"specular.{own}.ktx2.json"]
-        packed += [f"{work}/packed/{file}" for file in names]
-        settings = (pack.get("cube_axes"), tuple(levels))
-        yield f"pack {names[0]} of {name}", "PackProbe", settings, [light, *chain, cube], packed[-3:]
+        names[2:2] = [f"sheen.{own}.ktx2"] if sheen else []
+        files = [f"{work}/packed/{file}" for file in names]
+        packed += files
+        settings = (pack.get("cube_axes"), tuple(levels), tuple(thin["roughness"]))
+        yield f"pack {names[0]} of {name}", "PackProbe", settings, [light, *chain, cube, *sheen], files
     audit, axes = [f"{work}/audit.json"], [pack.get("cube_axes") for pack in recipe["pack"]]
-    held = (tuple(levels), tolerance, yaw, tuple(axes))
+    held = (tuple(levels), tuple(thin["roughness"]), tolerance, yaw, tuple(axes))
     yield f"audit of {name}", "AuditProbe", held, [pixels, *packed], audit
-    said = (entry["recipe"], repr(entry["extra"]), tuple(levels), yaw, repr(recipe["pack"]))
+    said = (entry["recipe"], repr(entry["extra"]), tuple(levels), repr(thin), yaw, repr(recipe["pack"]))
     judged = [f"{work}/record.json", f"{work}/judgement.json"]
     compared = [f"{work}/comparison.json", f"{pictures}/change.png"]
     read = [facts, light, *sun, totals, looks, thumbnails, *packed, *audit]

@@ -30,6 +30,7 @@ from skykiln.stages.decode_source import DecodeSource
 from skykiln.stages.draw_probe import DrawProbe
 from skykiln.stages.extract_faces import ExtractFaces
 from skykiln.stages.filter_level import FilterLevel
+from skykiln.stages.filter_sheen import FilterSheen
 from skykiln.stages.gather_irradiance import GatherIrradiance
 from skykiln.stages.judge_probe import JudgeProbe
 from skykiln.stages.pack_probe import PackProbe
@@ -44,6 +45,7 @@ KINDS = [
     DrawProbe,
     ExtractFaces,
     FilterLevel,
+    FilterSheen,
     GatherIrradiance,
     JudgeProbe,
     PackProbe,
@@ -133,6 +135,11 @@ class AnyEdits(RuleBasedStateMachine):
     def edit_entry(self, name, change):
         if name in self.asked["sources"]:
             self.asked["sources"][name] |= change
+
+    @rule(recipe=recipes, roughness=st.sampled_from([[0.5], [0.6], [0.5, 1], None]))
+    def edit_sheen(self, recipe, roughness):
+        levels = roughness and {"levels": len(roughness), "roughness": roughness, "face_size": 2}
+        self.asked["recipes"][recipe]["sheen"] = levels
 
     @rule(recipe=recipes, roughness=st.sampled_from([[0, 0.5, 1], [0, 0.4, 1], [0, 0.5]]))
     def edit_roughness(self, recipe, roughness):

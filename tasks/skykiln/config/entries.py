@@ -4,7 +4,7 @@ import itertools
 
 from .expand import chain_length, pack_of
 from .judging import doubtful, judged
-from .model import CODINGS, Recipe
+from .model import CODINGS, SHEEN_FROM, Recipe
 from .problems import shown
 
 # What stands in for a value that was told to be wrong, where the entry can't be judged without one.
@@ -42,6 +42,8 @@ def _recipe_faults(recipe, wrong, cube_axes):
         yield from _roughness_faults(recipe.specular.roughness, chain_length(recipe) if known else None)
     if counted and sized:
         yield from _level_faults(recipe)
+    if recipe.sheen is not None and not doubtful(wrong, (), "sheen"):
+        yield from _sheen_faults(recipe.sheen, wrong)
     if not doubtful(wrong, (), "pack"):
         yield from _coding_faults(recipe.pack, wrong)
         yield from _pack_faults(recipe, wrong, cube_axes)
@@ -67,6 +69,24 @@ def _roughness_faults(numbers, levels):
     if not (numbers[0] == 0 and rising and numbers[-1] <= 1):
         found = ", ".join(f"{number:g}" for number in numbers)
         yield steps, f"found {found}; allowed: numbers that start with 0 and rise to at most 1"
+
+
+def _sheen_faults(sheen, wrong):
+    counted = not doubtful(wrong, ("sheen",), "levels")
+    if counted and not doubtful(wrong, ("sheen",), "face_size"):
+        most = sheen.face_size.bit_length()
+        if sheen.levels > most:
+            text = f"a face of {sheen.face_size} texels has at most {most} levels, down to 1 texel"
+            yield ("sheen", "levels"), f"found {sheen.levels}; {text}"
+    numbers, steps = sheen.roughness, ("sheen", "roughness")
+    if numbers == "linear" or doubtful(wrong, ("sheen",), "roughness"):
+        return
+    if counted and len(numbers) != sheen.levels:
+        yield steps, f"found {len(numbers)} numbers; allowed: one per level, {sheen.levels}"
+    rising = all(low < high for low, high in itertools.pairwise(numbers))
+    if not (numbers[0] >= SHEEN_FROM and rising and numbers[-1] <= 1):
+        found = ", ".join(f"{number:g}" for number in numbers)
+        yield steps, f"found {found}; allowed: numbers that rise from at least {SHEEN_FROM} to at most 1"
 
 
 def _coding_faults(entries, wrong):

@@ -46,6 +46,11 @@ def linear_roughness(levels):
     return tuple(level / (levels - 1) if level else 0.0 for level in range(levels))
 
 
+def linear_sheen_roughness(levels):
+    """Roughness (k+1)/n of level k of n: a sheen lobe of roughness 0 reflects nothing."""
+    return tuple((level + 1) / levels for level in range(levels))
+
+
 def _members(entry, source, root, build_dir, report):
     path = ("sources", entry)
     fault = name_fault(entry)
@@ -122,7 +127,16 @@ def _recipe_part(head, recipe: Recipe):
         "irradiance_face_size": irradiance.face_size,
         "irradiance_sh_order": irradiance.sh_order,
         "packs": tuple(pack_of(entry, irradiance.pixels, head.cube_axes) for entry in recipe.pack),
+        **_sheen_part(recipe.sheen),
     }
+
+
+def _sheen_part(sheen):
+    if sheen is None:
+        return {}
+    linear = sheen.roughness == "linear"
+    roughness = linear_sheen_roughness(sheen.levels) if linear else tuple(sheen.roughness)
+    return {"sheen_face_size": sheen.face_size, "sheen_roughness": roughness}
 
 
 def chain_length(recipe: Recipe):
@@ -136,14 +150,16 @@ def chain_length(recipe: Recipe):
 def pack_of(entry, irradiance_pixels, cube_axes):
     """The Pack of an entry: its own name stands in the names of files where the pixel coding would."""
     own = entry.pixels if entry.container == "exr" else irradiance_pixels
+    called = f"{entry.name or entry.pixels}.{entry.container}"
     return Pack(
-        name=f"specular.{entry.name or entry.pixels}.{entry.container}",
+        name=f"specular.{called}",
         container=entry.container,
         pixels=entry.pixels,
         cube_axes=entry.cube_axes or cube_axes,
         compress=entry.compress or 0,
         irradiance=f"irradiance.{entry.name or own}.{entry.container}",
         irradiance_pixels=own,
+        sheen=f"sheen.{called}",
     )
 
 

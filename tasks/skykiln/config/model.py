@@ -30,6 +30,14 @@ ROUGHNESS_SCHEMA = {
     ]
 }
 
+SHEEN_FROM = 0.1  # below, the sheen lobe is a ring thinner than a degree, and slow to filter
+SHEEN_ROUGHNESS_SCHEMA = {
+    "anyOf": [
+        {"const": "linear"},
+        {"type": "array", "items": {"type": "number", "minimum": SHEEN_FROM, "maximum": 1}, "minItems": 1},
+    ]
+}
+
 UNITS = {
     **{"B": 1, "kB": 1000, "MB": 1000**2, "GB": 1000**3, "TB": 1000**4},
     **{"KiB": 1024, "MiB": 1024**2, "GiB": 1024**3, "TiB": 1024**4},
@@ -81,6 +89,7 @@ def _rising(limits):
 
 LuxRange = Annotated[list[float], Field(min_length=2, max_length=2), AfterValidator(_rising)]
 Roughness = Annotated[Any, PlainValidator(_roughness), WithJsonSchema(ROUGHNESS_SCHEMA)]
+SheenRoughness = Annotated[Any, PlainValidator(_roughness), WithJsonSchema(SHEEN_ROUGHNESS_SCHEMA)]
 Size = Annotated[Any, PlainValidator(_size), WithJsonSchema(SIZE_SCHEMA)]
 
 
@@ -123,6 +132,22 @@ class Specular(Section):
         gt=0.0001,
         lt=0.5,
         description="Largest relative error of a texel against exact quadrature over the source.",
+    )
+
+
+class Sheen(Section):
+    """A second chain: the sky filtered by the Charlie sheen lobe of cloth, to specular.tolerance."""
+
+    levels: Annotated[int, Field(ge=1, le=9)] = Field(
+        5, description="Number of mip levels. None is a mirror: sheen of roughness 0 reflects nothing."
+    )
+    roughness: SheenRoughness = Field(
+        "linear",
+        description="Roughness of each level: linear (level k of n has (k + 1)/n), or a list with one "
+        f"number per level that rises from at least {SHEEN_FROM} to at most 1.",
+    )
+    face_size: Annotated[SmallFaceSize, BeforeValidator(_whole)] = Field(
+        64, description="Edge of a face of level 0 in texels, a power of two."
     )
 
 
@@ -178,6 +203,9 @@ class Recipe(Section):
     sun: Sun = Field(Sun(), description="What becomes of the sun.")
     specular: Specular = Field(Specular(), description="The chain of GGX-filtered mip levels.")
     irradiance: Irradiance = Field(Irradiance(), description="Diffuse light.")
+    sheen: Sheen | None = Field(
+        None, description="A second chain, filtered by the sheen lobe, in a file of its own; null: none."
+    )
     pack: list[PackEntry] = Field(
         [PackEntry(container="ktx2", pixels="rgba16f")],
         min_length=1,

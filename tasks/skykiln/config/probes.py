@@ -28,6 +28,7 @@ class Pack:
     compress: int  # 0: not
     irradiance: str  # the irradiance file's name
     irradiance_pixels: str
+    sheen: str  # the sheen file's name, where a probe has that chain
 
 
 @dataclasses.dataclass(frozen=True)
@@ -77,6 +78,8 @@ class Probe:
     irradiance_face_size: int
     irradiance_sh_order: int
     packs: tuple[Pack, ...]
+    sheen_face_size: int = 0
+    sheen_roughness: tuple[float, ...] = ()  # one per level; empty: no sheen chain
 
     @property
     def files(self) -> tuple[str, ...]:
@@ -92,7 +95,7 @@ class Probe:
     def from_json(cls, text: str) -> "Probe":
         """The probe that `to_json` wrote."""
         fields = json.loads(text)
-        for name in ("faces", "roughness"):
+        for name in ("faces", "roughness", "sheen_roughness"):
             fields[name] = tuple(fields[name])
         if fields["ground"]:
             kind, channels = fields["ground"]

@@ -122,8 +122,11 @@ def _broken_own_rules(texture):
     stops = about.get("storage_ev")
     if type(stops) is not int or stops < 0:
         yield f"key {ABOUT_KEY}: storage_ev is {stops!r}, no whole number from 0"
-    if about.get("content") == "specular" and not _rises(about.get("roughness"), len(texture.levels)):
+    content, roughness = about.get("content"), about.get("roughness")
+    if content == "specular" and not (_rises(roughness, len(texture.levels)) and roughness[0] == 0):
         yield f"key {ABOUT_KEY}: roughness is no list that rises from 0 to at most 1, one per level"
+    if content == "sheen" and not (_rises(roughness, len(texture.levels)) and roughness[0] > 0):
+        yield f"key {ABOUT_KEY}: roughness is no list that rises from above 0 to at most 1, one per level"
 
 
 def _rises(numbers, count):
@@ -131,7 +134,7 @@ def _rises(numbers, count):
         return False
     if not all(type(number) in (int, float) for number in numbers):
         return False
-    return numbers[0] == 0 and numbers[-1] <= 1 and bool((np.diff(numbers) > 0).all())
+    return numbers[-1] <= 1 and bool((np.diff(numbers) > 0).all())
 
 
 def _table(rows):

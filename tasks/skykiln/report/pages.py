@@ -66,8 +66,13 @@ def probe_page(record, entry, probe, looks) -> bytes:
         numbers=_numbers(probe) if probe else [],
         levels=list(_levels(probe)) if probe else [],
         scene=probe and "scene_difference" in looks and _scene(probe, looks),
-        files=[file for kind in ("specular", "irradiance") for file in probe[kind]["files"]] if probe else [],
+        files=_files(probe) if probe else [],
     )
+
+
+def _files(probe):
+    kinds = (probe[kind] for kind in ("specular", "irradiance", "sheen") if kind in probe)
+    return [file for kind in kinds for file in kind["files"]]
 
 
 def folder_url(name) -> str:

@@ -1,8 +1,8 @@
 """AuditProbe: what was packed, read back and held against the panorama that it was made from."""
 
 from ..engine.digests import digest_chunks
-from .extract_faces import ExtractFaces
-from .filter_level import FilterLevel
+from .filter_level import specular_chain
+from .filter_sheen import sheen_chain
 from .pack_probe import PackProbe, packed_names
 from .probe_stage import ProbeStage
 from .sky_panorama import sky_of
@@ -20,10 +20,12 @@ class AuditProbe(ProbeStage):
 
     def requires(self):
         packs = [self.of_same(PackProbe, pack=name) for name in packed_names(self.probe)]
+        encoded = self._encoded()
         return {
             "pixels": sky_of(self),
             **{role: pack for pack in packs for role in pack.files()},
-            **self._levels(),
+            **encoded.get("specular", {}),
+            **encoded.get("sheen", {}),
         }
 
     def files(self):
@@ -33,6 +35,7 @@ class AuditProbe(ProbeStage):
         probe = self.probe
         return {
             "roughness": list(probe.roughness),
+            "sheen_roughness": list(probe.sheen_roughness),
             "tolerance": probe.tolerance,
             "yaw_deg": probe.yaw_deg,
             "cube_axes": {pack.name: pack.cube_axes for pack in probe.packs},
@@ -53,16 +56,16 @@ class AuditProbe(ProbeStage):
 
         pack = next(iter(packed_names(self.probe)))
         stops = inputs[f"{pack}.json"].json()["storage_ev"]
-        levels = [inputs[role].array() for role in self._levels()]
-        return ProbeAudit(self.probe, inputs["pixels"].array(), files, stops, levels)
+        encoded = {
+            kind: [inputs[role].array() for role in chain] for kind, chain in self._encoded().items() if chain
+        }
+        return ProbeAudit(self.probe, inputs["pixels"].array(), files, stops, encoded)
 
-    def _levels(self):
-        """The stages of the levels as they were filtered, where no packed file's rounding is known."""
+    def _encoded(self):
+        """The stages of the chains as they were filtered, where no packed file's rounding is known."""
         if any(pack.pixels != "bc6h" for pack in self.probe.packs):
             return {}
-        levels = range(1, len(self.probe.roughness))
-        filtered = {f"level_{level}": self.of_same(FilterLevel, level=level) for level in levels}
-        return {"faces": self.of_same(ExtractFaces), **filtered}
+        return {"specular": specular_chain(self), "sheen": sheen_chain(self)}
 
 
 def seed_of(inputs) -> int:

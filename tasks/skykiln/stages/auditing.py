@@ -1,10 +1,10 @@
 """The audit of a probe's packed files: which cube maps are held against what.
 
-Of the specular chain, and of the irradiance cube, the file with the finest coding is held against the
-panorama, at drawn texels (`light/audit`). All others must agree with it but for their rounding, at every
-texel (`light/agreement`), so that they need no draws of their own. BC6H has no bound of rounding that
-an audit could allow for: where nothing finer is packed, the levels as they were encoded are audited in
-its place, and the file must agree with these.
+Of the specular chain, of the irradiance cube and of a sheen chain, the file with the finest coding is
+held against the panorama, at drawn texels (`light/audit`). All others must agree with it but for their
+rounding, at every texel (`light/agreement`), so that they need no draws of their own. BC6H has no bound of
+rounding that an audit could allow for: where nothing finer is packed, the levels as they were encoded are
+audited in its place, and the file must agree with these.
 """
 
 import math
@@ -41,17 +41,19 @@ class ProbeAudit:
     """The audit of one probe.
 
     probe : Probe; panorama : what it was made from; files : name of each packed file -> its bytes
-    stops : its storage_ev; encoded : the filtered levels, where no packed file's rounding is known
+    stops : its storage_ev; encoded : kind of chain -> its filtered levels, where no packed file's rounding
+    is known
     """
 
-    def __init__(self, probe, panorama, files, stops, encoded=()):
+    def __init__(self, probe, panorama, files, stops, encoded):
         self.probe, self.panorama, self._unit = probe, panorama, 2.0**stops
         cubes = [_cube(name, files[name], axes) for name, axes in _axes_of_files(probe).items()]
-        self._specular, self._irradiance = (_finest_first(cubes, kind) for kind in ("specular", "irradiance"))
-        if encoded:
-            levels = tuple(darkened(level, stops) for level in encoded)
-            self._specular.insert(0, Cube(UNCODED, "float", "direct", levels, _roundings("float", levels)))
-        self.charts = [*self._specular_charts(), self._irradiance_chart()]
+        self._chains = {kind: _finest_first(cubes, kind) for kind in ("specular", "irradiance", "sheen")}
+        for kind, filtered in encoded.items():
+            levels = tuple(darkened(level, stops) for level in filtered)
+            uncoded = Cube(UNCODED, "float", "direct", levels, _roundings("float", levels))
+            self._chains[kind].insert(0, uncoded)
+        self.charts = [*self._specular_charts(), self._irradiance_chart(), *self._sheen_charts()]
 
     def look(self, seed, per_face=PER_FACE):
         """Findings at texels that follow from the seed."""
@@ -59,23 +61,25 @@ class ProbeAudit:
 
     def record(self, looks) -> dict:
         """The verdict on some looks, as probe.json tells it."""
-        chains = [(chain[0].file, _agreements(chain)) for chain in (self._specular, self._irradiance)]
+        chains = [(chain[0].file, _agreements(chain)) for chain in self._chains.values() if chain]
         return audit_record(self.charts, judge(self.charts, together(looks)), chains)
 
     def _specular_charts(self):
-        finest = self._specular[0]
-        levels = range(len(finest.levels))
-        for level, roughness in zip(levels, self.probe.roughness, strict=True):
-            alpha = alpha_from_roughness(roughness)
-            yield self._chart(f"level {level}", finest, level, alpha, self._unit)
+        for level, roughness in enumerate(self.probe.roughness):
+            yield self._chart(f"level {level}", "specular", level, roughness)
 
     def _irradiance_chart(self):
-        return self._chart("irradiance", self._irradiance[0], 0, 1.0, self._unit / math.pi)
+        return self._chart("irradiance", "irradiance", 0, 1.0)._replace(unit=self._unit / math.pi)
 
-    def _chart(self, name, cube, level, alpha, unit):
-        """A level of a cube in world axes."""
+    def _sheen_charts(self):
+        for level, roughness in enumerate(self.probe.sheen_roughness):
+            yield self._chart(f"sheen level {level}", "sheen", level, roughness)._replace(lobe="sheen")
+
+    def _chart(self, name, kind, level, roughness):
+        """A level of the finest cube of a kind, in world axes."""
+        cube, alpha = self._chains[kind][0], alpha_from_roughness(roughness)
         images, rounding = (images_of(each[level], cube.cube_axes) for each in (cube.levels, cube.roundings))
-        return Chart(name, images, alpha, self.probe.tolerance, rounding=rounding, unit=unit)
+        return Chart(name, images, alpha, self.probe.tolerance, rounding=rounding, unit=self._unit)
 
 
 def _axes_of_files(probe):

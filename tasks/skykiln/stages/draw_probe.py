@@ -3,8 +3,8 @@
 import math
 from pathlib import Path
 
-from .extract_faces import ExtractFaces, auto_face_size
-from .filter_level import FilterLevel
+from .extract_faces import auto_face_size
+from .filter_level import specular_chain
 from .gather_irradiance import GatherIrradiance
 from .pack_probe import PackProbe, packed_names
 from .probe_stage import ProbeStage
@@ -22,18 +22,13 @@ class DrawProbe(ProbeStage):
     title = "pictures"
 
     def requires(self):
-        levels = range(1, len(self.probe.roughness))
         packed = self.of_same(PackProbe, pack=self._pack)
         seen = {
             "pixels": sky_of(self),
             "irradiance": self.of_same(GatherIrradiance),
             **dict.fromkeys(packed.files(), packed),
         }
-        return {
-            "faces": self.of_same(ExtractFaces),
-            **{f"level_{level}": self.of_same(FilterLevel, level=level) for level in levels},
-            **(seen if is_sky(self.pinned) else {}),
-        }
+        return {**specular_chain(self), **(seen if is_sky(self.pinned) else {})}
 
     def files(self):
         pictures = ("small", *SKY_PICTURES) if is_sky(self.pinned) else ("small",)
@@ -60,11 +55,12 @@ class DrawProbe(ProbeStage):
         from .drawing import light_of, looks_of, sky_files, small_files
 
         probe = self.probe
-        levels = [source.array() for role, source in inputs.items() if role.startswith(("faces", "level_"))]
+        levels = [inputs[role].array() for role in specular_chain(self)]
         made, looks = small_files(levels), looks_of(levels, probe.working)
         if not is_sky(self.pinned):
             return {**made, "looks": looks}
-        files = [inputs[name].bytes() for name in packed_names(probe)[self._pack]]
+        specular, irradiance, *_ = packed_names(probe)[self._pack]
+        files = [inputs[name].bytes() for name in (specular, irradiance)]
         stops = inputs[f"{self._pack}.json"].json()["storage_ev"]
         light = light_of(*files, self._axes, probe.roughness, stops)
         panorama, cube = inputs["pixels"].array(), inputs["irradiance"].array()

@@ -3,7 +3,7 @@
 import luigi
 
 from ..errors import FileError
-from .extract_faces import face_size_of
+from .extract_faces import ExtractFaces, face_size_of
 from .probe_stage import ProbeStage
 from .pyramids import pyramid_of
 from .sky_panorama import sky_of
@@ -54,3 +54,10 @@ class FilterLevel(ProbeStage):
                 f"but a face of {largest} texels has {most}; lower specular.levels or set face_size"
             )
         return largest >> self.level
+
+
+def specular_chain(stage) -> dict:
+    """The stages of all levels of the probe of a stage, by role, the largest first."""
+    levels = range(1, len(stage.probe.roughness))
+    filtered = {f"level_{level}": stage.of_same(FilterLevel, level=level) for level in levels}
+    return {"faces": stage.of_same(ExtractFaces), **filtered}

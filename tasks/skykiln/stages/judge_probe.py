@@ -64,6 +64,8 @@ class JudgeProbe(ProbeStage):
             "cube_axes": self.pinned.cube_axes,
             "orientation": {name: getattr(probe, name) for name in ORIENTATION},
             "roughness": list(probe.roughness),
+            "sheen_roughness": list(probe.sheen_roughness),
+            "sheen_face_size": probe.sheen_face_size,
             "packs": [vars(entry) for entry in packs],
             "gates": json.loads(self.pinned.gates),
             "accepted": _accepted_subject(self.pinned),

@@ -50,6 +50,7 @@ def _run_every_kernel():
         repair,
         sheen,
         specular,
+        zonal_filter,
     )
     from ..light.charts import PANORAMA
     from ..light.colour import converted
@@ -76,6 +77,7 @@ def _run_every_kernel():
     separate_sun(sky)
     brdf.brdf_table(4)
     sheen.sheen_albedo(4)
+    zonal_filter.filter_level_by(sheen.sheen_lobe(0.25), nodes, 4, 0.1)
     faces_with_a_sun = np.ones((6, 8, 8, 3), np.float32)
     faces_with_a_sun[0, 1, 2] = 60_000  # a block that BC6H has to fit anew
     _run_every_coding(faces_with_a_sun)

@@ -1,10 +1,10 @@
-"""PackProbe: the specular chain and the irradiance cube in one container and coding."""
+"""PackProbe: the specular chain, the irradiance cube and a sheen chain in one container and coding."""
 
 import luigi
 
 from .decode_source import DecodeSource
-from .extract_faces import ExtractFaces
-from .filter_level import FilterLevel
+from .filter_level import specular_chain
+from .filter_sheen import sheen_chain
 from .gather_irradiance import GatherIrradiance
 from .probe_stage import ProbeStage
 
@@ -24,12 +24,12 @@ class PackProbe(ProbeStage):
         return f"pack {self.pack}"
 
     def requires(self):
-        levels = range(1, len(self.probe.roughness))
+        chains = self._chains()
         return {
             "light": self.of_same(DecodeSource),
-            "faces": self.of_same(ExtractFaces),
-            **{f"level_{level}": self.of_same(FilterLevel, level=level) for level in levels},
-            "irradiance": self.of_same(GatherIrradiance),
+            **chains["specular"],
+            **chains["irradiance"],
+            **chains["sheen"],
         }
 
     def files(self):
@@ -47,35 +47,45 @@ class PackProbe(ProbeStage):
             "cube_axes": entry.cube_axes,
             "roughness": list(probe.roughness),
             "primaries": probe.working,
+            "sheen_roughness": list(probe.sheen_roughness),
         }
 
     def make(self, inputs):
         from .packing import share_lost, shared_storage_ev
 
         units = inputs["light"].json()["units"]
-        *chain, cube = [source.array() for role, source in inputs.items() if role != "light"]
-        stops = shared_storage_ev([*chain, cube])
+        cubes = {
+            content: [inputs[role].array() for role in chain] for content, chain in self._chains().items()
+        }
+        stops = shared_storage_ev([cube for content in cubes.values() for cube in content])
         names = packed_names(self.probe)[self.pack]
-        packed = {name: self._packed(name, chain, cube, stops, units) for name in names}
+        packed = {name: self._packed(name, cubes, stops, units) for name in names}
         facts = {
             "storage_ev": stops,
-            "face_sizes": [level.shape[1] for level in chain],
-            "irradiance_face_size": cube.shape[1],
-            "lost_to_clamping": share_lost(chain[0], stops),
+            "face_sizes": [level.shape[1] for level in cubes["specular"]],
+            "irradiance_face_size": cubes["irradiance"][0].shape[1],
+            "lost_to_clamping": share_lost(cubes["specular"][0], stops),
             "files": {name: facts for name, (_, facts) in packed.items()},
         }
         return {**{name: data for name, (data, _) in packed.items()}, f"{self.pack}.json": facts}
 
-    def _packed(self, name, chain, cube, stops, units):
+    def _chains(self):
+        """Content of a file -> the stages of its levels by role, the largest first."""
+        return {
+            "specular": specular_chain(self),
+            "irradiance": {"irradiance": self.of_same(GatherIrradiance)},
+            "sheen": sheen_chain(self),
+        }
+
+    def _packed(self, name, cubes, stops, units):
         """(bytes, facts) of one file."""
         from .packing import pack_images, packed_facts, stored_images
 
         entry, content = self._entry(), name.partition(".")[0]
-        levels, pixels, compress = {
-            "specular": (chain, entry.pixels, entry.compress),
-            "irradiance": ([cube], entry.irradiance_pixels, 0),
-        }[content]
-        images = stored_images(levels, entry.cube_axes, stops)
+        pixels, compress = entry.pixels, entry.compress
+        if content == "irradiance":
+            pixels, compress = entry.irradiance_pixels, 0
+        images = stored_images(cubes[content], entry.cube_axes, stops)
         # Not the release: files would change with every one of them.
         writer = f"skykiln PackProbe {self.version}"
         about = self._about(content, stops, units)
@@ -85,13 +95,14 @@ class PackProbe(ProbeStage):
 
     def _about(self, content, stops, units):
         """What a loader must know of a file, for the file itself to tell."""
-        told = ("name", "cube_axes", "primaries") + (("roughness",) if content == "specular" else ())
         settings = self.settings()
+        chains = {"specular": settings["roughness"], "sheen": settings["sheen_roughness"]}
         return {
             "content": content,
             "storage_ev": stops,
             "units": units,
-            **{key: settings[key] for key in told},
+            **{key: settings[key] for key in ("name", "cube_axes", "primaries")},
+            **({"roughness": chains[content]} if content in chains else {}),
         }
 
     def _entry(self):
@@ -99,9 +110,11 @@ class PackProbe(ProbeStage):
 
 
 def packed_names(probe) -> dict:
-    """Names of the files of each pack: name of the pack -> (specular[, irradiance])."""
+    """Names of the files of each pack: name of the pack -> (specular[, irradiance][, sheen])."""
     names, taken = {}, set()
     for entry in sorted(probe.packs, key=lambda entry: entry.name):
-        names[entry.name] = (entry.name,) if entry.irradiance in taken else (entry.name, entry.irradiance)
+        irradiance = () if entry.irradiance in taken else (entry.irradiance,)
+        sheen = (entry.sheen,) if probe.sheen_roughness else ()
+        names[entry.name] = (entry.name, *irradiance, *sheen)
         taken.add(entry.irradiance)
     return names

@@ -18,7 +18,7 @@ def probe_record(settings, packed_names, inputs) -> dict:
     packs = {name: inputs[f"{name}.json"].json() for name in packed_names}
     shared = next(iter(packs.values()))
     files = {name: facts for pack in packs.values() for name, facts in pack["files"].items()}
-    kinds = ("specular", "irradiance")
+    kinds = ("specular", "irradiance", *(["sheen"] if settings["sheen_roughness"] else []))
     listed = {kind: _files(settings, packed_names, inputs, files, kind) for kind in kinds}
     return {
         "schema": 1,
@@ -40,6 +40,7 @@ def probe_record(settings, packed_names, inputs) -> dict:
             "files": listed["irradiance"],
             **{key: totals[key] for key in ("sh", "sh_smallest", "sh_window")},
         },
+        **({"sheen": _sheen(settings, files, listed["sheen"])} if "sheen" in kinds else {}),
         "sun": sun["sun"],
         "energy": {
             **{key: totals[key] for key in TOTALS},
@@ -74,10 +75,17 @@ def _levels(roughness, face_sizes, files):
     ]
 
 
+def _sheen(settings, facts, listed):
+    roughness = settings["sheen_roughness"]
+    sizes = [settings["sheen_face_size"] >> level for level in range(len(roughness))]
+    return {"levels": _levels(roughness, sizes, [facts[entry["file"]] for entry in listed]), "files": listed}
+
+
 def _bytes(packs, listed):
     """What all files take on disk, and what the largest pack takes on the GPU: a renderer loads one."""
     entries = {entry["file"]: entry for kind in listed.values() for entry in kind}
-    gpu = (entries[pack["name"]]["gpu_bytes"] + entries[pack["irradiance"]]["gpu_bytes"] for pack in packs)
+    names = [(pack["name"], pack["irradiance"], pack["sheen"]) for pack in packs]
+    gpu = [sum(entries[name]["gpu_bytes"] for name in loaded if name in entries) for loaded in names]
     return {"disk": sum(entry["bytes"] for entry in entries.values()), "gpu": max(gpu)}
 
 
@@ -87,7 +95,7 @@ def _files(settings, packed_names, inputs, facts, kind):
     for pack in settings["packs"]:
         for name in packed_names[pack["name"]]:
             if name.startswith(f"{kind}."):
-                pixels = pack["pixels"] if kind == "specular" else pack["irradiance_pixels"]
+                pixels = pack["irradiance_pixels"] if kind == "irradiance" else pack["pixels"]
                 entries.append(
                     {
                         "file": name,

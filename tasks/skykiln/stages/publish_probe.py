@@ -57,7 +57,8 @@ class PublishProbe(ProbeStage):
 def _named_files(path):
     try:
         record = json.loads(path.read_bytes())
-        names = [entry["file"] for kind in ("specular", "irradiance") for entry in record[kind]["files"]]
+        kinds = [record[kind] for kind in ("specular", "irradiance", "sheen") if kind in record]
+        names = [entry["file"] for kind in kinds for entry in kind["files"]]
     except (OSError, ValueError, KeyError, TypeError):
         return []
     return [name for name in names if name == Path(name).name]
