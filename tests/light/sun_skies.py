@@ -57,20 +57,21 @@ NOON = toward(25.3, 58.2)
 LOW = toward(-43.7, 4.1)
 
 
-def clear_noon(height=HEIGHT):
-    sky = graded((0.3, 0.5, 1.0), (0.9, 1.0, 1.1), 0.3, height) + glow(NOON, 20, 4, height)
-    return with_disc(sky.astype(np.float32), NOON, np.array([1.0, 0.95, 0.85]) * 2e5)
+def clear_noon(height=HEIGHT, place=NOON):
+    sky = graded((0.3, 0.5, 1.0), (0.9, 1.0, 1.1), 0.3, height) + glow(place, 20, 4, height)
+    return with_disc(sky.astype(np.float32), place, np.array([1.0, 0.95, 0.85]) * 2e5)
 
 
-def hazy_evening():
-    sky = graded((0.3, 0.4, 0.7), (1.5, 1.2, 0.9), 0.2) + glow(LOW, 1, 6) * np.array([60, 40, 18])
+def hazy_evening(height=HEIGHT):
+    haze = glow(LOW, 1, 6, height) * np.array([60, 40, 18])
+    sky = graded((0.3, 0.4, 0.7), (1.5, 1.2, 0.9), 0.2, height) + haze
     return with_disc(sky.astype(np.float32), LOW, np.array([1.0, 0.55, 0.2]) * 4e3)
 
 
-def clipped_noon(height=HEIGHT):
-    """Veiling glare around the sun, and a sensor that ends at 60."""
-    sky = clear_noon(height) + glow(NOON, 3e3, 0.35, height)
-    return np.minimum(sky, 60).astype(np.float32)
+def clipped_noon(height=HEIGHT, place=NOON, glare=0.35, end=60):
+    """Veiling glare around the sun, falling by e within `glare` degrees, and where the sensor ends."""
+    sky = clear_noon(height, place) + glow(place, 3e3, glare, height)
+    return np.minimum(sky, end).astype(np.float32)
 
 
 def behind_thin_cloud():

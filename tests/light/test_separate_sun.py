@@ -12,6 +12,7 @@ from skykiln.formats.source_files import read_source
 from skykiln.light.bright_regions import SUN_RADIUS, compact_regions, filled_from_rim, rim_of
 from skykiln.light.directions import panorama_directions
 from skykiln.light.facing import irradiance_facing
+from skykiln.light.orientation import source_to_world, turned
 from skykiln.light.photometry import LUMINANCE_WEIGHTS, horizontal_illuminance
 from skykiln.light.separate_sun import restored_sun, separate_sun, with_restored_sun
 from skykiln.light.tangent_frames import around, tangent_frame
@@ -134,6 +135,45 @@ def test_nothing_of_the_sun_is_left_and_nothing_else_is_touched(name, separated)
 
 def test_only_the_clipped_sun_is_called_clipped(separated):
     assert {name for name in SUNNY if separated[name][2].clipped} == {"clipped_noon"}
+
+
+def levelled_capture(elevation, tilt, height, **clipping):
+    """A clipped picture of a camera that stood askew, levelled again; and where its sun stands then."""
+    place, turn = toward(25.3, elevation), source_to_world(*np.radians(tilt))
+    return turned(sun_skies.clipped_noon(height, turn.T @ place, **clipping), turn), place
+
+
+def assert_found_clipped(elevation, tilt, height, **clipping):
+    capture, place = levelled_capture(elevation, tilt, height, **clipping)
+    sun = separate_sun(capture)[1]
+    assert (sun.clipped, angle(sun.direction, place) < 0.2) == (True, True)
+
+
+@pytest.mark.parametrize("elevation", [8, 58])
+@pytest.mark.parametrize("tilt", [(1, 0.5), (4, -6), (15, 10)])
+def test_a_clipped_sun_is_called_so_after_levelling(elevation, tilt):
+    assert_found_clipped(elevation, tilt, 256)
+
+
+@pytest.mark.long
+@pytest.mark.parametrize("elevation", [8, 30, 58, 80])
+@pytest.mark.parametrize("tilt", [(1, 0.5), (4, -6), (15, 10)])
+@pytest.mark.parametrize(("glare", "end"), [(0.2, 60), (0.35, 60), (0.7, 1000)])
+def test_every_clipped_sun_whose_top_is_wide_is_called_so(elevation, tilt, glare, end):
+    assert_found_clipped(elevation, tilt, 512, glare=glare, end=end)
+
+
+@pytest.mark.parametrize("height", [128, 256])
+@pytest.mark.parametrize("rows_up", [0, 20, 32])  # corners of four pixels, and the pole
+def test_a_whole_sun_between_like_pixels_is_not_called_clipped(height, rows_up):
+    place = toward(0, rows_up * 180 / 64)
+    assert not separate_sun(sun_skies.clear_noon(height, place))[1].clipped
+
+
+@pytest.mark.long
+@pytest.mark.parametrize("height", [1024, 2048])
+def test_a_whole_sun_in_haze_is_not_called_clipped_where_pixels_resolve_its_disc(height):
+    assert not separate_sun(sun_skies.hazy_evening(height))[1].clipped
 
 
 @pytest.mark.parametrize("height", [64, 128, 1024])

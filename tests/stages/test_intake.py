@@ -238,7 +238,7 @@ def test_two_meters_under_a_clipped_high_sun_are_told_to_be_worth_little(pipelin
 @pytest.mark.parametrize("meter", ["horizontal_lux", "sun_lux"])
 def test_one_meter_alone_under_a_clipped_sun_is_told_to_make_the_sky_too_bright(pipeline, meter):
     record = baked(separating(pipeline), sun_skies.clipped_noon(256), **{meter: 5e4})
-    told = f"the sun is clipped, and {meter} alone makes its sky too bright for that; measure a patch too"
+    told = f"the sun is clipped: {meter} alone gives its lost light to the whole sky; measure a patch"
     assert record["source"]["warnings"] == [told]
     patch = {"direction": [0, 0, -1], "size_deg": 12, "cd_m2": 2000}
     assert baked(pipeline, patch=patch)["source"]["warnings"] == []

@@ -16,8 +16,9 @@ source. The flux-weighted mean direction makes the directional light's cosine ex
 region is above a surface's horizon. The angular radius is that of the uniform disc with the same second
 moment, r^2 = 2 <angle^2>, after taking off what the pixels' own extent adds.
 
-A clipped sun shows as a flat top that is wider than the sun's disc, or that stands too little above the sky
-beside it for the disc, which outshines its aureole a thousandfold when nothing veils it (common practice).
+A clipped sun shows as a flat top that is wider than the sun's disc. A whole one's is not, however even: the
+pixels that it fills lie inside it, and those that it fills in part are alike in two rows at most, those that
+meet in a corner.
 """
 
 from typing import NamedTuple
@@ -41,11 +42,9 @@ _LEAST_CLIPPED_EV = 1.0
 _LEAST_SHARE = 0.02
 _LEAST_CLIPPED_SHARE = 0.005
 _WIDEST = 3 * SUN_RADIUS
-_UNVEILED_EV = 10.0
 _LOWEST = -0.02  # sine of elevation: refraction, the dip from a height, and a capture a degree off level
 _FLAT = 1e-3
-_FLAT_PIXELS = 3
-_FLAT_SHARE = 1 / 6  # of the region with its rim, where a turn has resampled the top's own rim too
+_FLAT_ROWS = 3
 
 
 class Sun(NamedTuple):
@@ -146,7 +145,7 @@ def _light_of(panorama, region, weights):
     direction = irradiances @ weights
     direction /= np.linalg.norm(direction)
     radius = _angular_radius(region, excess @ weights, direction, width, height)
-    clipped = _is_clipped(source, rows, contrast_ev, width, height)
+    clipped = _is_clipped(source, rows, width, height)
     return fill, Sun(direction, radius, direction @ irradiances, contrast_ev, clipped)
 
 
@@ -159,10 +158,7 @@ def _angular_radius(region, excess, direction, width, height):
     return max(SUN_RADIUS, float(np.sqrt(max(0.0, 2 * (flux @ away / flux.sum() - of_pixels)))))
 
 
-def _is_clipped(source, rows, contrast_ev, width, height):
+def _is_clipped(source, rows, width, height):
     flat = (source >= (1 - _FLAT) * source.max(0)).any(1)
-    angles = panorama_row_solid_angles(width, height)[rows]
-    if flat.sum() < _FLAT_PIXELS or angles[flat].sum() < _FLAT_SHARE * angles.sum():
-        return False
-    disc = cap_solid_angle(SUN_RADIUS + np.hypot(np.pi / height, 2 * np.pi / width) / 2)
-    return bool(angles[flat].sum() > disc or contrast_ev < _UNVEILED_EV)
+    wide = panorama_row_solid_angles(width, height)[rows[flat]].sum() > cap_solid_angle(SUN_RADIUS)
+    return bool(wide and len(np.unique(rows[flat])) >= _FLAT_ROWS)

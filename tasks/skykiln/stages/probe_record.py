@@ -63,7 +63,7 @@ def _scaled_by_a_clipped_sun(facts, sun):
     """Of one meter alone, all that clipping took is taken for a darker picture."""
     if sun and sun["clipped"] and facts["calibrated_by"] in (["horizontal_lux"], ["sun_lux"]):
         (meter,) = facts["calibrated_by"]
-        yield f"the sun is clipped, and {meter} alone makes its sky too bright for that; measure a patch too"
+        yield f"the sun is clipped: {meter} alone gives its lost light to the whole sky; measure a patch"
 
 
 def _levels(roughness, face_sizes, files):

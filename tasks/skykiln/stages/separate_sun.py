@@ -10,7 +10,7 @@ class SeparateSun(ProbeStage):
     """`pixels`: (H, W, 3) float32, the sky that is left. `sun`: the light as JSON, its direction turned by
     the probe's yaw, None where none shines; and what the probe's `max_luminance` took from the sky."""
 
-    version = 1
+    version = 2
     title = "sky without its sun"
 
     def requires(self):
