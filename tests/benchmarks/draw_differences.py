@@ -80,6 +80,7 @@ def tell(what, level, parts):
 
 
 def main(folder):
+    folder.mkdir(parents=True, exist_ok=True)
     rows = []
     for level in (1, 2, 4):
         size = 128 >> level
