@@ -168,6 +168,13 @@ def test_why_tells_what_failed_last_time(pipeline, capsys):
     assert "panorama of quay_night: no finished run on record" in out
 
 
+def test_of_very_many_probes_the_end_alone_is_told(pipeline, capsys, monkeypatch):
+    monkeypatch.setattr("skykiln.engine.progress.CLOSELY", 0)
+    _, out, err = _run(capsys, "bake")
+    assert "quay_night: done\n" in out + err
+    assert "quay_night: 1 stage" not in out + err
+
+
 def test_schema_prints_a_schema_that_takes_the_pipeline(pipeline, capsys):
     schema = json.loads(_run(capsys, "schema")[1])
     jsonschema.Draft202012Validator.check_schema(schema)

@@ -84,8 +84,10 @@ class _Watched:
         return self.done == self.total
 
     def sentence(self):
+        if self.seconds is None:  # one of many: its stages weren't counted
+            return f"{self.owner}: done"
         stages = "1 stage" if self.total == 1 else f"{self.total} stages"
-        return f"{self.owner}: {stages}" + (f" in {self.seconds:.2f} s" if self.seconds is not None else "")
+        return f"{self.owner}: {stages} in {self.seconds:.2f} s"
 
 
 def _sign(path):
