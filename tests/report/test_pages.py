@@ -127,6 +127,7 @@ def test_audit_of_a_level_stands_beside_it():
 def test_failed_probe_that_was_never_baked_has_a_page_with_its_cause():
     failure = {"file": "pier.exr", "stage": "panorama of pier", "cause": "pier.exr: the file ends early"}
     page = _probe(entry("pier", state="failed", failure=failure, audit=None), probe={}, looks={})
+    assert "Nothing of it was ever published" in page.text and "earlier night" not in page.text
     assert "the file ends early" in page.text
     assert page.all("img") == []
 
